@@ -1,0 +1,19 @@
+// Promises of our own code, active in every build.
+#pragma once
+
+#include <source_location>
+#include <stdexcept>
+#include <string_view>
+
+namespace loadstair::base {
+
+/// Thrown when our own code broke a promise. Ends the owning scope; the sequencer answers it with the safe state.
+struct BrokenPromise : std::logic_error {
+  using std::logic_error::logic_error;
+};
+
+/// Throws BrokenPromise with the place of the call when `holds` is false. Never for what a peer or a user sent.
+void require(bool holds, std::string_view promise,
+             const std::source_location& where = std::source_location::current());
+
+}  // namespace loadstair::base
