@@ -1,0 +1,188 @@
+// setup: the files a person writes - hook-up (what is connected, and how), stair (what to do), profiles (how
+// an instrument speaks) - read into plain data, checked, explained. Not for talking to anything.
+#pragma once
+
+#include <map>
+#include <optional>
+#include <string>
+#include <string_view>
+#include <vector>
+
+#include "analysis/base/outcome.h"
+#include "drivers/instrument/profile.h"
+
+namespace loadstair::setup {
+
+/// How an instrument is reached. A folder is where a scope drops its CSV files.
+enum class LinkKind { serial, tcp, folder };
+struct LinkChoice {
+  LinkKind kind = LinkKind::serial;
+  std::string path;  ///< serial: device or pty; folder: the folder. Relative to the hook-up file's folder
+  int baud = 9600;
+  int data_bits = 8;
+  std::string parity = "none";  ///< none, even, odd
+  int stop_bits = 1;
+  std::string host;  ///< tcp
+  int port = 0;
+};
+
+/// Whether the instrument's own ground or its shield ties to earth.
+enum class Isolation { unknown, isolated, battery, earthed };
+
+struct Instrument {
+  std::string name;
+  std::string profile_name;
+  instrument::Profile profile;  ///< resolved: built in, or a file beside the hook-up file
+  LinkChoice link;
+  std::string identity;  ///< what the identity reply must begin with; empty: any
+  Isolation isolation = Isolation::unknown;
+  double poll_s = 1.0;
+  double update_s = 0.0;  ///< the meter's update period; 0: answers with a fresh conversion
+  double integration_s = 0.0;
+  double delay_s = 0.0;  ///< from the middle of the conversion to the reply, beyond half the integration
+  std::string serial_number;
+  std::string calibrated;  ///< ISO 8601 dates, for the report
+  std::string calibration_due;
+};
+
+/// Accuracy of one range, as the meter's book states it: +-(a % of reading + b % of range + c digits).
+struct RangeSpec {
+  double upto = 0.0;  ///< full scale, in the meter's own unit (before conversion)
+  double reading_percent = 0.0;
+  double range_percent = 0.0;
+  double digits = 0.0;
+  double resolution = 0.0;  ///< weight of the last digit
+  double impedance_ohm =
+      0.0;  ///< voltmeter: across its terminals; ammeter: burden with fuse. 0: not declared
+  std::optional<double> impedance_tolerance_percent;
+};
+
+enum class Quantity { voltage, current, power, apparent_power, power_factor, frequency, temperature };
+enum class Response { dc, true_rms_ac, true_rms_ac_dc, average_responding, wattmeter };
+
+struct Shunt {
+  double resistance_ohm = 0.0;
+  double tolerance_percent = 0.0;
+  double tempco_ppm_per_k = 0.0;
+  double rise_k_per_w = 0.0;  ///< self-heating
+};
+struct Thermocouple {
+  char letter = 'K';
+  int tolerance_class = 2;    ///< IEC 60584-1
+  std::string cold_junction;  ///< name of a temperature channel; empty: the reader compensates, value is degC
+};
+/// From what the meter says to the quantity: value * scale, then at most one of the two.
+struct Conversion {
+  double scale = 1.0;
+  double scale_tolerance_percent = 0.0;
+  std::optional<Shunt> shunt;
+  std::optional<Thermocouple> thermocouple;
+};
+
+struct Channel {
+  std::string name;
+  bool typed = false;
+  std::string instrument;  ///< linked channels: name of an instrument ...
+  std::string value;       ///< ... and which of its profile's values
+  Quantity quantity = Quantity::voltage;
+  std::string unit;  ///< of the quantity after conversion: V, A, W, VA, 1, Hz, degC
+  Response response = Response::dc;
+  Conversion conversion;
+  std::vector<RangeSpec> ranges;  ///< ascending; empty: accuracy not declared ("uncertainty not known")
+  std::optional<double> band_hz;  ///< upper end of the meter's declared band
+  std::optional<double> crest_limit;
+  std::optional<double> low, high;  ///< plausible values, for typed entries
+};
+
+enum class Direction { input, output };
+enum class PortKind { dc, ac };
+/// Where the voltmeter's wires are, seen from the ammeter.
+enum class VoltmeterSide { converter, outer };
+
+struct Port {
+  std::string name;
+  Direction direction = Direction::input;
+  PortKind kind = PortKind::dc;
+  bool counted = true;  ///< auxiliary supplies: counted in the efficiency or not
+  std::string voltage, current, power, power_factor;  ///< channel names; empty: none
+  std::optional<double> power_factor_low;             ///< declared as [low, 1]
+  VoltmeterSide voltmeter = VoltmeterSide::converter;
+  std::optional<bool>
+      sensed;  ///< voltage taken at the converter's terminals by separate wires; nullopt: not declared
+  std::optional<double> lead_resistance_ohm;  ///< inside the reference plane, both leads together
+  double lead_tolerance_percent = 30.0;
+  std::optional<double> ripple_current_rms_a;
+  std::optional<double> source_resistance_ohm;
+  bool live = false;  ///< at a dangerous voltage to earth (isolation is checked against it)
+};
+
+/// An instrument that sets something.
+struct Control {
+  std::string name;  ///< "source", "load", "converter"
+  std::string instrument;
+  std::string role;  ///< source, load, converter: decides the safe order
+  std::vector<std::pair<std::string, double>>
+      at_start;  ///< settings applied before switch-on (limits, voltage)
+};
+
+/// Lamps and resistors at hand.
+struct BankItem {
+  std::string name;
+  std::string kind;      ///< lamp, resistor
+  double power_w = 0.0;  ///< at rated voltage
+  double voltage_v = 0.0;
+  double cold_ratio = 1.0;  ///< cold over hot resistance
+  int count = 1;
+};
+
+/// Where a scope's captures come from, and what their columns are.
+struct CaptureSource {
+  std::string instrument;                      ///< with a folder link
+  std::string voltage_column, current_column;  ///< header name or number from 1
+  double voltage_scale = 1.0, current_scale = 1.0;
+  double voltage_gain_percent = 0.0, current_gain_percent = 0.0;  ///< tolerance; 0: not declared
+  double delay_tolerance_s = 0.0;                                 ///< between the two channels
+  std::string port;                                               ///< the port that these columns belong to
+};
+
+struct TemperaturePoint {
+  std::string channel;
+  std::string place;            ///< "heatsink"
+  std::string ambient_channel;  ///< to subtract; empty: none
+};
+
+/// Simulated counterpart of the bench, for `rehearse` and `demo`: keys by section, numbers or texts as
+/// written. Its meaning belongs to the command that composes the rehearsal; the file reader only knows the
+/// allowed keys.
+struct RehearsalSection {
+  std::map<std::string, double> converter, source, load, thermal, waveform;
+  std::string kind = "inverter";  ///< inverter, dcdc
+  std::map<std::string, std::string>
+      roles;  ///< instrument or typed channel -> what it is on the simulated bench
+};
+
+struct Hookup {
+  std::string file;  ///< as given, for messages
+  std::string text;  ///< the whole file, for the record
+  std::string bench;
+  std::vector<Instrument> instruments;
+  std::vector<Channel> channels;
+  std::vector<Port> ports;
+  std::vector<Control> controls;
+  std::vector<BankItem> loads;
+  std::vector<TemperaturePoint> temperatures;
+  std::vector<CaptureSource> captures;
+  std::map<std::string, double> repeatability_percent;  ///< by channel: declared 24-hour figures
+  std::optional<RehearsalSection> rehearsal;
+
+  [[nodiscard]] const Channel* find_channel(std::string_view name) const;
+  [[nodiscard]] const Instrument* find_instrument(std::string_view name) const;
+  [[nodiscard]] const Port* find_port(std::string_view name) const;
+};
+
+/// Reads a hook-up file's text. `file` is used in messages and to find profiles beside it.
+/// Refusal: place "FILE:line:column", reason with what would be right; the first problem only.
+[[nodiscard]] base::Outcome<Hookup> read_hookup(std::string_view text, const std::string& file);
+[[nodiscard]] base::Outcome<Hookup> load_hookup(const std::string& file);
+
+}  // namespace loadstair::setup

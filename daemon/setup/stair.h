@@ -1,0 +1,104 @@
+// The stair file: what to do on the bench, step by step.
+#pragma once
+
+#include <optional>
+#include <string>
+#include <string_view>
+#include <vector>
+
+#include "analysis/base/outcome.h"
+#include "daemon/setup/hookup.h"
+
+namespace loadstair::setup {
+
+struct Prototype {
+  std::string name, revision, unit;
+};
+
+struct Ratings {
+  double input_voltage_v = 0.0;
+  double output_voltage_v = 0.0;
+  double output_power_w = 0.0;
+  double output_frequency_hz = 0.0;  ///< 0: dc
+  double highest_ambient_c = 40.0;
+};
+
+/// One thing that is set before a step.
+struct SetPoint {
+  std::string control, setting;
+  double value = 0.0;
+};
+
+/// The electrical criterion: slope of a channel over the last window below a limit.
+struct ElectricalSettle {
+  std::string channel;
+  double slope_percent_per_min = 0.0;
+  double window_s = 0.0;
+};
+/// The thermal criterion: change over a window, met `count` times in a row; and, if allowed, by prediction.
+struct ThermalSettle {
+  std::string channel;
+  double change_k = 0.0;
+  double window_s = 0.0;
+  int count = 1;
+  double hold_s = 0.0;
+  bool by_prediction = false;  ///< a prediction may end the step
+  double prediction_tolerance_k = 1.0;
+  double slowest_tau_s = 0.0;  ///< slowest constant that a window could hide; 0: not declared
+};
+
+struct Step {
+  std::string label;
+  double load_w = 0.0;  ///< nominal output power of the step, for the curve and the weights
+  std::optional<double> input_voltage_v;
+  std::vector<SetPoint> set;
+  std::string prompt;       ///< a sentence for the person at the bench; empty: none
+  std::string hand_action;  ///< what the rehearsal does when the prompt is answered by itself
+  double soak_s = 0.0;
+  std::optional<ElectricalSettle> electrical;
+  std::optional<ThermalSettle> thermal;
+  double settle_limit_s = 0.0;  ///< after this the step goes on, "not settled"
+  double average_s = 0.0;
+  bool capture = false;
+};
+
+enum class GuardAction { stop, hold, next };
+enum class MissingAction { ignore, stop, hold, next };
+
+/// A software guard. A convenience on top of real protection, never instead of it.
+struct Guard {
+  std::string name, channel;
+  std::optional<double> above, below;  ///< trips beyond these, in the channel's unit
+  double debounce_s = 0.0;
+  double blanking_s = 0.0;  ///< after each set-point change
+  GuardAction action = GuardAction::stop;
+  MissingAction missing = MissingAction::stop;
+  double missing_after_s = 0.0;  ///< 0: three poll periods
+};
+
+struct End {
+  double cool_down_s = 0.0;
+  double discharge_s = 0.0;  ///< timed discharge before anybody touches the bench
+};
+
+struct Stair {
+  std::string file, text;
+  Prototype prototype;
+  Ratings ratings;
+  double ambient_c = 23.0;
+  double load_tolerance_percent = 2.0;
+  std::vector<Step> steps;
+  std::vector<Guard> guards;
+  End end;
+};
+
+/// Reads a stair file's text; the short form over load levels is expanded into steps.
+/// Refusal as for the hook-up file.
+[[nodiscard]] base::Outcome<Stair> read_stair(std::string_view text, const std::string& file);
+[[nodiscard]] base::Outcome<Stair> load_stair(const std::string& file);
+
+/// Do the two files fit: every channel, control and setting that the stair names exists, guards have a
+/// channel that is polled, the typed channels are not guarded. Refusal with the stair's place.
+[[nodiscard]] base::Outcome<void> match(const Stair& stair, const Hookup& hookup);
+
+}  // namespace loadstair::setup
