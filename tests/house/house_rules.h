@@ -1,0 +1,24 @@
+// The rules of the house as functions over a tree, so that a test can also show that they catch what they should.
+#pragma once
+
+#include <filesystem>
+#include <map>
+#include <set>
+#include <string>
+#include <vector>
+
+namespace loadstair::house {
+
+using Rooms = std::map<std::string, std::set<std::string>>;
+
+/// Reads "room: rooms it may include" lines; '#' starts a comment line.
+Rooms read_rooms(const std::filesystem::path& file);
+
+/// Every breach as "file:line: what is wrong".
+std::vector<std::string> include_breaches(const std::filesystem::path& root, const Rooms& rooms);
+std::vector<std::string> banned_word_breaches(const std::filesystem::path& root);
+std::vector<std::string> third_party_breaches(const std::filesystem::path& root);
+/// A circle as "a -> b -> a"; empty when there is none.
+std::string find_circle(const Rooms& rooms);
+
+}  // namespace loadstair::house

@@ -1,0 +1,78 @@
+// The architecture as a test: who may include whom, which words and libraries stand where.
+#include <catch2/catch.hpp>
+#include <fstream>
+
+#include "house/house_rules.h"
+
+using namespace loadstair::house;
+namespace fs = std::filesystem;
+
+namespace {
+
+const fs::path kRoot{LOADSTAIR_SOURCE};
+
+void put(const fs::path& file, const std::string& text) {
+  fs::create_directories(file.parent_path());
+  std::ofstream{file} << text;
+}
+
+std::string joined(const std::vector<std::string>& lines) {
+  std::string text;
+  for (const auto& line : lines) text += line + "\n";
+  return text;
+}
+
+}  // namespace
+
+TEST_CASE("every include stays within the walls of rooms.txt") {
+  const Rooms rooms = read_rooms(kRoot / "tests/house/rooms.txt");
+  REQUIRE(rooms.size() > 10);
+  CHECK(joined(include_breaches(kRoot, rooms)) == "");
+}
+
+TEST_CASE("rooms have no circle") { CHECK(find_circle(read_rooms(kRoot / "tests/house/rooms.txt")) == ""); }
+
+TEST_CASE("what CMake links is what rooms.txt allows") {
+  const Rooms linked = read_rooms(LOADSTAIR_ROOMS_OF_CMAKE);
+  CHECK(linked == read_rooms(kRoot / "tests/house/rooms.txt"));
+}
+
+TEST_CASE("banned words are absent") { CHECK(joined(banned_word_breaches(kRoot)) == ""); }
+
+TEST_CASE("third-party headers stay in the room that needs them") {
+  CHECK(joined(third_party_breaches(kRoot)) == "");
+}
+
+TEST_CASE("every room's folder has its library, and every test file is in a folder that is built") {
+  const Rooms rooms = read_rooms(kRoot / "tests/house/rooms.txt");
+  for (const auto& entry : fs::recursive_directory_iterator{kRoot / "tests"}) {
+    if (!entry.path().filename().string().ends_with("_test.cpp")) continue;
+    const fs::path folder = fs::relative(entry.path(), kRoot / "tests").parent_path();
+    const std::string top = folder.begin()->string();
+    INFO(entry.path());
+    CHECK((rooms.contains(folder.string()) || top == "published" || top == "house"));
+  }
+}
+
+TEST_CASE("the rules catch what breaks them") {
+  const fs::path tree = fs::temp_directory_path() / "loadstair_house_rules";
+  fs::remove_all(tree);
+  put(tree / "analysis/series/a.cpp", "#include \"drivers/link/link.h\"\n");
+  put(tree / "drivers/link/b.cpp", "int x;\n#include \"analysis/base/outcome.h\"\n#include \"daemon/store/store.h\"\n");
+  put(tree / "daemon/store/c.cpp", "#include <boost/beast/core.hpp>\nasio::co_spawn(io, f(), asio::detached);\n");
+  put(tree / "daemon/attic/d.cpp", "\n");
+  const Rooms rooms = {{"analysis/base", {}},
+                       {"analysis/series", {"analysis/base"}},
+                       {"drivers/link", {"analysis/base"}},
+                       {"daemon/store", {}}};
+  const std::string includes = joined(include_breaches(tree, rooms));
+  CHECK(includes.find("analysis/series/a.cpp:1: analysis/series may not include drivers/link") != std::string::npos);
+  CHECK(includes.find("drivers/link/b.cpp:3: drivers/link may not include daemon/store") != std::string::npos);
+  CHECK(includes.find("rooms.txt does not name the room daemon/attic") != std::string::npos);
+  CHECK(includes.find("b.cpp:2") == std::string::npos);
+  CHECK(joined(third_party_breaches(tree)).find("daemon/store/c.cpp:1: daemon/store may not use <boost/beast") !=
+        std::string::npos);
+  CHECK(joined(banned_word_breaches(tree)).find("daemon/store/c.cpp:2: a detached task") != std::string::npos);
+  CHECK(find_circle({{"a", {"b"}}, {"b", {"c"}}, {"c", {"a"}}}) == "a -> b -> c -> a");
+  fs::remove_all(tree);
+}
