@@ -1,0 +1,24 @@
+// A run's steps as a curve over output power.
+#pragma once
+
+#include <span>
+#include <string>
+#include <vector>
+
+#include "analysis/efficiency/step.h"
+
+namespace loadstair::efficiency {
+
+/// One measured level.
+struct CurvePoint {
+  std::string label;
+  Estimate input_power;   ///< W
+  Estimate output_power;  ///< W
+  Estimate loss;          ///< W
+  Estimate efficiency;    ///< ratio
+};
+
+/// The steps that have an efficiency, by rising output power. Steps without one are left out.
+[[nodiscard]] std::vector<CurvePoint> curve(std::span<const StepResult> steps);
+
+}  // namespace loadstair::efficiency
