@@ -10,18 +10,15 @@
 #include <vector>
 
 #include "analysis/base/outcome.h"
+#include "analysis/series/time_series.h"
 
 namespace loadstair::settling {
 
-/// One channel over time, oldest first. Both spans are of one length; times rise; values are finite.
-struct Trace {
-  std::span<const double> time_s;
-  std::span<const double> value;
+/// One channel over time, oldest first: times rise (s), values are finite.
+using Trace = series::TimeSeries;
 
-  [[nodiscard]] std::size_t size() const { return time_s.size(); }
-  /// From the first sample at or after t_s on.
-  [[nodiscard]] Trace from(double t_s) const;
-};
+/// The part from the first sample at or after t_s on.
+[[nodiscard]] Trace since(const Trace& trace, double t_s);
 
 /// Which rule said that it is settled.
 enum class SettledBy { nothing, electrical_slope, thermal_rate, prediction };
