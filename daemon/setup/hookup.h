@@ -151,14 +151,22 @@ struct TemperaturePoint {
   std::string ambient_channel;  ///< to subtract; empty: none
 };
 
-/// Simulated counterpart of the bench, for `rehearse` and `demo`: keys by section, numbers or texts as
-/// written. Its meaning belongs to the command that composes the rehearsal; the file reader only knows the
-/// allowed keys.
+/// Simulated counterpart of the bench, for `rehearse` and `demo`: numbers by section. Where the meters sit,
+/// what they measure and how exact they are is taken from the rest of the file. Allowed keys, all optional:
+///   converter  no_load_w linear quadratic_per_w resistance_rise_per_k standby_w output_voltage_v
+///              output_impedance_ohm soft_start_s sense_threshold_v sense_ohm fold_back least_input_voltage_v
+///   source     voltage_v resistance_ohm current_limit_a lead_ohm
+///   load       lead_ohm greatest_current_a
+///   thermal    ambient_c ambient_drift_k_per_h junction_to_case_k_per_w case_to_air_k_per_w
+///   case_to_air_fan_k_per_w
+///              junction_time_s case_time_s fan_starts_c fan_stops_c fan_power_w
+///   waveform   frequency_hz dc_offset_v third_share fifth_share seventh_share residue_share residue_ratio
+///   ripple_share meters     noise_share (standard deviation of one conversion over full scale) person look_s
+///   type_s (from question to reading the display, from there to the answer)
 struct RehearsalSection {
-  std::map<std::string, double> converter, source, load, thermal, waveform;
   std::string kind = "inverter";  ///< inverter, dcdc
-  std::map<std::string, std::string>
-      roles;  ///< instrument or typed channel -> what it is on the simulated bench
+  std::string sense = "peak";     ///< what the overload circuit looks at: peak, rms, average
+  std::map<std::string, double> converter, source, load, thermal, waveform, meters, person;
 };
 
 struct Hookup {
