@@ -1,5 +1,6 @@
-// Building plain data from a document: typed getters whose complaints a person can act on. The first problem is
-// kept, later getters then return their defaults in silence, so a reading function needs no branches for errors.
+// Building plain data from a document: typed getters whose complaints a person can act on. The first problem
+// is kept, later getters then return their defaults in silence, so a reading function needs no branches for
+// errors.
 #pragma once
 
 #include <array>
@@ -116,8 +117,8 @@ class ObjectReader {
   Problem* problem_;
 };
 
-/// The candidate that `written` was most likely meant to be; nullopt when none is near (more edits than a third of
-/// its length, at least two; a swap of neighbours counts as one).
+/// The candidate that `written` was most likely meant to be; nullopt when none is near (more edits than a
+/// third of its length, at least two; a swap of neighbours counts as one).
 [[nodiscard]] std::optional<std::string_view> nearest(std::string_view written,
                                                       std::span<const std::string_view> candidates);
 
