@@ -47,12 +47,13 @@ class Clock {
 /// CLOCK_MONOTONIC and CLOCK_REALTIME.
 [[nodiscard]] std::unique_ptr<Clock> make_real_clock();
 
-/// A clock that stands still while there is work and jumps to the next timer when the io_context is idle, so that
-/// an hour of bench takes a second. One io_context, one thread.
+/// A clock that stands still while there is work and jumps to the next timer when the io_context is idle, so
+/// that an hour of bench takes a second. One io_context, one thread.
 class VirtualClock : public Clock {
  public:
   /// `utc_start_ns`: the wall time at monotonic zero.
-  [[nodiscard]] static std::unique_ptr<VirtualClock> make(boost::asio::io_context& io, std::int64_t utc_start_ns);
+  [[nodiscard]] static std::unique_ptr<VirtualClock> make(boost::asio::io_context& io,
+                                                          std::int64_t utc_start_ns);
 
   /// Runs handlers and time until no handler and no timer is left, or `until_ns` is reached.
   virtual void run(std::int64_t until_ns = INT64_MAX) = 0;

@@ -25,7 +25,8 @@ enum class Status {
 /// What a bench does is a value, not an exception.
 struct Received {
   Status status = Status::closed;
-  std::string bytes;          ///< the line without its terminator, or the N bytes; partial text on timeout is not here
+  std::string
+      bytes;  ///< the line without its terminator, or the N bytes; partial text on timeout is not here
   std::int64_t first_ns = 0;  ///< monotonic instant at which the first byte of it arrived (0 when none)
   std::int64_t last_ns = 0;   ///< and the last
 };
@@ -66,24 +67,29 @@ struct TcpSettings {
   int port = 0;
 };
 
+// g++ 12 destroys an aggregate twice that is written with braces inside a co_await expression: build settings
+// in a variable of their own first. (It also awaits a co_await more than once inside Catch2's CHECK.)
+
 /// Opens a link; called again after a loss. The refusal says what was tried and what to do.
 using Opener = std::function<boost::asio::awaitable<base::Outcome<std::unique_ptr<Link>>>()>;
 
 /// A real port through libserialport, a pty by its path; locked with flock, flushed on open.
-/// Refusals: no such port, in use by another program, setting not supported by a real port. On a pty, settings that
-/// a pty cannot have count as "not supported here" and are passed over.
-[[nodiscard]] boost::asio::awaitable<base::Outcome<std::unique_ptr<Link>>> open_serial(Clock& clock,
-                                                                                       SerialSettings settings);
+/// Refusals: no such port, in use by another program, setting not supported by a real port. On a pty,
+/// settings that a pty cannot have count as "not supported here" and are passed over.
+[[nodiscard]] boost::asio::awaitable<base::Outcome<std::unique_ptr<Link>>> open_serial(
+    Clock& clock, SerialSettings settings);
 [[nodiscard]] boost::asio::awaitable<base::Outcome<std::unique_ptr<Link>>> open_tcp(
     Clock& clock, TcpSettings settings, std::chrono::nanoseconds limit = std::chrono::seconds{3});
 
-/// A link on a descriptor that is already open (the master side of a pty, an accepted socket). Takes ownership.
-[[nodiscard]] std::unique_ptr<Link> adopt_descriptor(boost::asio::any_io_executor executor, Clock& clock, int fd,
-                                                     std::string name);
+/// A link on a descriptor that is already open (the master side of a pty, an accepted socket). Takes
+/// ownership.
+[[nodiscard]] std::unique_ptr<Link> adopt_descriptor(boost::asio::any_io_executor executor, Clock& clock,
+                                                     int fd, std::string name);
 
 /// Two ends in memory. Closing one ends the other with Status::closed once its buffer is read.
 /// `baud`: bytes are paced to this rate of ten bits a byte; nullopt: at once.
 [[nodiscard]] std::pair<std::unique_ptr<Link>, std::unique_ptr<Link>> make_memory_pair(
-    boost::asio::any_io_executor executor, Clock& clock, std::string name, std::optional<int> baud = std::nullopt);
+    boost::asio::any_io_executor executor, Clock& clock, std::string name,
+    std::optional<int> baud = std::nullopt);
 
 }  // namespace loadstair::link

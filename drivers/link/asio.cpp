@@ -1,0 +1,2 @@
+// The one definition of Asio's separately compiled parts.
+#include <boost/asio/impl/src.hpp>
