@@ -72,6 +72,10 @@ struct Pty {
     std::array<char, 128> name{};
     REQUIRE(ptsname_r(master, name.data(), name.size()) == 0);
     path = name.data();
+    termios mode{};  // no echo, which would come back to the master
+    REQUIRE(tcgetattr(master, &mode) == 0);
+    cfmakeraw(&mode);
+    REQUIRE(tcsetattr(master, TCSANOW, &mode) == 0);
   }
   int master;
   std::string path;
