@@ -15,10 +15,10 @@ struct BudgetLine {
   std::string name;
   Kind kind = Kind::type_b;
   Owner owner;
-  double standard_uncertainty = 0;  ///< root sum of squares of the contributions, unit of the estimate
-  double contribution = 0;  ///< signed sum over the sources of the name's largest part, for the direction
-  double share = 0;         ///< of the variance, 0 to 1; shares sum to 1
-  std::string action;       ///< what would shrink it; empty where nothing is known
+  double standard_uncertainty = 0;         ///< root sum of squares of the contributions, unit of the estimate
+  double contribution = 0;                 ///< signed, of its largest source: the direction in which it acts
+  double share = 0;                        ///< of the variance, 0 to 1; shares sum to 1
+  std::string action;                      ///< what would shrink it; empty where nothing is known
   std::optional<double> expanded_if_done;  ///< U of the estimate recomputed as if the action had been taken
 };
 

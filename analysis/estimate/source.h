@@ -50,6 +50,8 @@ struct Source {
   std::string sample;
   Owner owner;
   Remedy remedy = Remedy::none;
+  /// Share of this source's variance that would be left if the remedy were taken, 0 to 1.
+  double variance_left = 1;
   std::uint64_t order = 0;  ///< set by make_source() from the key: sorting without comparing text
 };
 
