@@ -35,10 +35,13 @@ ChildProcess::ChildProcess(const std::vector<std::string>& arguments, const std:
     _exit(127);
   }
   close(log);
-  if (process_ < 0) throw std::runtime_error{"cannot start " + arguments.front() + " as a process of its own"};
+  if (process_ < 0)
+    throw std::runtime_error{"cannot start " + arguments.front() + " as a process of its own"};
 }
 
-ChildProcess::~ChildProcess() { end(); }
+ChildProcess::~ChildProcess() {
+  end();
+}
 
 bool ChildProcess::running() {
   if (process_ <= 0) return false;

@@ -17,7 +17,8 @@ class ChildProcess {
   ChildProcess& operator=(const ChildProcess&) = delete;
 
   [[nodiscard]] bool running();
-  /// Asks it to end, waits for at most `grace_s` seconds, then kills it. Returns its exit status; -1 when killed.
+  /// Asks it to end, waits for at most `grace_s` seconds, then kills it. Returns its exit status; -1 when
+  /// killed.
   int end(double grace_s = 10.0);
   [[nodiscard]] int process() const { return process_; }
 

@@ -1,0 +1,26 @@
+// From a hook-up file to its simulated counterpart: every meter at its declared place, as exact as declared.
+#pragma once
+
+#include <cstdint>
+#include <string>
+#include <vector>
+
+#include "analysis/base/outcome.h"
+#include "daemon/setup/hookup.h"
+#include "drivers/rehearsal/bench.h"
+
+namespace loadstair::command {
+
+struct RehearsalChoice {
+  std::uint64_t seed = 1;  ///< which bench
+  std::uint64_t run = 1;   ///< which visit to it
+  std::string folder;      ///< for ptys, sockets, captures and the control socket; empty: memory links
+  std::string log_path;    ///< every reply with its query; empty: memory only
+  std::vector<rehearsal::Fault> faults;
+};
+
+/// Refusal: the hook-up has no "rehearsal" section, or something in it that cannot be simulated (by name).
+[[nodiscard]] base::Outcome<rehearsal::BenchDescription> describe_rehearsal(const setup::Hookup& hookup,
+                                                                            const RehearsalChoice& choice);
+
+}  // namespace loadstair::command
