@@ -1,0 +1,144 @@
+#include "daemon/setup/forms.h"
+
+#include <array>
+
+namespace loadstair::setup {
+namespace {
+
+using document::Form;
+
+// std::to_array keeps the keys countable without saying how many there are.
+using std::to_array;
+using Key = std::string_view;
+
+constexpr auto kHookupKeys =
+    to_array<Key>({"format", "bench", "instruments", "channels", "ports", "controls", "loads", "temperatures",
+                   "captures", "repeatability", "rehearsal"});
+constexpr auto kInstrumentKeys =
+    to_array<Key>({"name", "profile", "link", "identity", "isolation", "poll_s", "update_s", "integration_s",
+                   "delay_s", "serial_number", "calibrated", "calibration_due"});
+constexpr auto kLinkKeys = to_array<Key>({"serial", "tcp", "folder", "baud", "data_bits", "parity", "stop_bits"});
+constexpr auto kChannelKeys =
+    to_array<Key>({"name", "typed", "instrument", "value", "quantity", "unit", "response", "conversion", "ranges",
+                   "band_hz", "crest_limit", "low", "high"});
+constexpr auto kConversionKeys = to_array<Key>({"scale", "scale_tolerance_percent", "shunt", "thermocouple"});
+constexpr auto kShuntKeys =
+    to_array<Key>({"resistance_ohm", "tolerance_percent", "tempco_ppm_per_k", "rise_k_per_w"});
+constexpr auto kThermocoupleKeys = to_array<Key>({"letter", "tolerance_class", "cold_junction"});
+constexpr auto kRangeKeys = to_array<Key>({"upto", "reading_percent", "range_percent", "digits", "resolution",
+                                           "impedance_ohm", "impedance_tolerance_percent"});
+constexpr auto kPortKeys =
+    to_array<Key>({"name", "direction", "kind", "counted", "voltage", "current", "power", "power_factor",
+                   "power_factor_low", "voltmeter", "sensed", "lead_resistance_ohm", "lead_tolerance_percent",
+                   "ripple_current_rms_a", "source_resistance_ohm", "live"});
+constexpr auto kControlKeys = to_array<Key>({"name", "instrument", "role", "at_start"});
+constexpr auto kLoadKeys = to_array<Key>({"name", "kind", "power_w", "voltage_v", "cold_ratio", "count"});
+constexpr auto kTemperatureKeys = to_array<Key>({"channel", "place", "ambient"});
+constexpr auto kCaptureKeys =
+    to_array<Key>({"instrument", "port", "voltage", "current", "voltage_scale", "current_scale",
+                   "voltage_gain_percent", "current_gain_percent", "delay_tolerance_s"});
+constexpr auto kRehearsalKeys =
+    to_array<Key>({"kind", "converter", "source", "load", "thermal", "waveform", "roles"});
+constexpr auto kRehearsedConverterKeys = to_array<Key>(
+    {"no_load_w", "linear_loss", "quadratic_loss_per_w", "resistance_rise_per_k", "standby_w",
+     "output_resistance_ohm", "sense_resistance_ohm", "sense_threshold_v", "fold_back", "soft_start_s",
+     "nominal_input_v", "least_input_v", "greatest_modulation"});
+constexpr auto kRehearsedSourceKeys =
+    to_array<Key>({"voltage_v", "resistance_ohm", "lead_resistance_ohm", "current_limit_a", "slew_v_per_s"});
+constexpr auto kRehearsedLoadKeys =
+    to_array<Key>({"lead_resistance_ohm", "greatest_current_a", "least_voltage_v", "displacement_deg"});
+constexpr auto kRehearsedThermalKeys =
+    to_array<Key>({"ambient_c", "ambient_drift_k_per_h", "heatsink_k_per_w", "heatsink_tau_s", "junction_k_per_w",
+                   "junction_tau_s", "fan_on_c", "fan_off_c", "fan_k_per_w", "fan_power_w"});
+constexpr auto kRehearsedWaveformKeys =
+    to_array<Key>({"frequency_hz", "dc_offset_v", "third_percent", "fifth_percent", "seventh_percent",
+                   "carrier_hz", "carrier_percent", "ripple_share"});
+
+constexpr auto kStairKeys = to_array<Key>({"format", "prototype", "ratings", "environment",
+                                           "load_tolerance_percent", "staircase", "steps", "guards", "end"});
+constexpr auto kPrototypeKeys = to_array<Key>({"name", "revision", "unit"});
+constexpr auto kRatingsKeys = to_array<Key>(
+    {"input_voltage_v", "output_voltage_v", "output_power_w", "output_frequency_hz", "highest_ambient_c"});
+constexpr auto kEnvironmentKeys = to_array<Key>({"ambient_c"});
+constexpr auto kStaircaseKeys =
+    to_array<Key>({"control", "setting", "prompt", "hand_action", "levels_percent", "levels_w",
+                   "input_voltages_v", "input_control", "soak_s", "settle", "average_s", "capture"});
+constexpr auto kStepKeys = to_array<Key>({"label", "load_w", "input_voltage_v", "set", "prompt", "hand_action",
+                                          "soak_s", "settle", "average_s", "capture"});
+constexpr auto kSetPointKeys = to_array<Key>({"control", "setting", "value"});
+constexpr auto kSettleKeys = to_array<Key>({"electrical", "thermal", "limit_s"});
+constexpr auto kElectricalKeys = to_array<Key>({"channel", "slope_percent_per_min", "window_s"});
+constexpr auto kThermalKeys =
+    to_array<Key>({"channel", "change_k", "window_s", "count", "hold_s", "prediction"});
+constexpr auto kPredictionKeys = to_array<Key>({"tolerance_k", "slowest_tau_s"});
+constexpr auto kGuardKeys = to_array<Key>({"name", "channel", "above", "below", "debounce_s", "blanking_s",
+                                           "action", "missing", "missing_after_s"});
+constexpr auto kEndKeys = to_array<Key>({"cool_down_s", "discharge_s"});
+
+constexpr auto kProfileKeys =
+    to_array<Key>({"format", "profile", "dialect", "terminator", "identity_query", "start_commands", "values",
+                   "queries", "overload_words", "overload_at", "timeout_s", "settings", "on_commands", "safe",
+                   "free_running"});
+constexpr auto kProfileValueKeys = to_array<Key>({"name", "unit", "line_pattern"});
+constexpr auto kProfileQueryKeys = to_array<Key>({"text", "values"});
+constexpr auto kProfileSettingKeys = to_array<Key>({"name", "unit", "command", "readback", "tolerance"});
+constexpr auto kProfileSafeKeys = to_array<Key>({"commands", "confirm_query", "confirm_reply"});
+
+}  // namespace
+
+const Form kHookupForm{"a hook-up file", kHookupKeys};
+const Form kInstrumentForm{"an instrument", kInstrumentKeys};
+const Form kLinkForm{"a link", kLinkKeys};
+const Form kChannelForm{"a channel", kChannelKeys};
+const Form kConversionForm{"a conversion", kConversionKeys};
+const Form kShuntForm{"a shunt", kShuntKeys};
+const Form kThermocoupleForm{"a thermocouple", kThermocoupleKeys};
+const Form kRangeForm{"a range", kRangeKeys};
+const Form kPortForm{"a port", kPortKeys};
+const Form kControlForm{"a control", kControlKeys};
+const Form kLoadForm{"a load", kLoadKeys};
+const Form kTemperatureForm{"a temperature", kTemperatureKeys};
+const Form kCaptureForm{"a capture", kCaptureKeys};
+const Form kRehearsalForm{"a rehearsal", kRehearsalKeys};
+const Form kRehearsedConverterForm{"a rehearsed converter", kRehearsedConverterKeys};
+const Form kRehearsedSourceForm{"a rehearsed source", kRehearsedSourceKeys};
+const Form kRehearsedLoadForm{"a rehearsed load", kRehearsedLoadKeys};
+const Form kRehearsedThermalForm{"a rehearsed heatsink", kRehearsedThermalKeys};
+const Form kRehearsedWaveformForm{"a rehearsed waveform", kRehearsedWaveformKeys};
+
+const Form kStairForm{"a stair file", kStairKeys};
+const Form kPrototypeForm{"a prototype", kPrototypeKeys};
+const Form kRatingsForm{"a set of ratings", kRatingsKeys};
+const Form kEnvironmentForm{"an environment", kEnvironmentKeys};
+const Form kStaircaseForm{"a staircase", kStaircaseKeys};
+const Form kStepForm{"a step", kStepKeys};
+const Form kSetPointForm{"a set point", kSetPointKeys};
+const Form kSettleForm{"a settle criterion", kSettleKeys};
+const Form kElectricalForm{"an electrical criterion", kElectricalKeys};
+const Form kThermalForm{"a thermal criterion", kThermalKeys};
+const Form kPredictionForm{"a prediction", kPredictionKeys};
+const Form kGuardForm{"a guard", kGuardKeys};
+const Form kEndForm{"an end", kEndKeys};
+
+const Form kProfileForm{"a profile", kProfileKeys};
+const Form kProfileValueForm{"a profile's value", kProfileValueKeys};
+const Form kProfileQueryForm{"a profile's query", kProfileQueryKeys};
+const Form kProfileSettingForm{"a profile's setting", kProfileSettingKeys};
+const Form kProfileSafeForm{"a profile's safe state", kProfileSafeKeys};
+
+std::span<const Form* const> all_forms() {
+  static constexpr std::array kAll = {
+      &kHookupForm,         &kInstrumentForm,     &kLinkForm,           &kChannelForm,
+      &kConversionForm,     &kShuntForm,          &kThermocoupleForm,   &kRangeForm,
+      &kPortForm,           &kControlForm,        &kLoadForm,           &kTemperatureForm,
+      &kCaptureForm,        &kRehearsalForm,      &kRehearsedConverterForm, &kRehearsedSourceForm,
+      &kRehearsedLoadForm,  &kRehearsedThermalForm, &kRehearsedWaveformForm, &kStairForm,
+      &kPrototypeForm,      &kRatingsForm,        &kEnvironmentForm,    &kStaircaseForm,
+      &kStepForm,           &kSetPointForm,       &kSettleForm,         &kElectricalForm,
+      &kThermalForm,        &kPredictionForm,     &kGuardForm,          &kEndForm,
+      &kProfileForm,        &kProfileValueForm,   &kProfileQueryForm,   &kProfileSettingForm,
+      &kProfileSafeForm};
+  return kAll;
+}
+
+}  // namespace loadstair::setup

@@ -1,0 +1,23 @@
+// Every key that the files of this room may hold, in one place: the readers accept these and docs/files.md
+// describes them (tests/daemon/setup/docs_test.cpp compares the two).
+#pragma once
+
+#include <span>
+
+#include "drivers/document/reader.h"
+
+namespace loadstair::setup {
+
+extern const document::Form kHookupForm, kInstrumentForm, kLinkForm, kChannelForm, kConversionForm, kShuntForm,
+    kThermocoupleForm, kRangeForm, kPortForm, kControlForm, kLoadForm, kTemperatureForm, kCaptureForm,
+    kRehearsalForm, kRehearsedConverterForm, kRehearsedSourceForm, kRehearsedLoadForm, kRehearsedThermalForm,
+    kRehearsedWaveformForm;
+extern const document::Form kStairForm, kPrototypeForm, kRatingsForm, kEnvironmentForm, kStaircaseForm, kStepForm,
+    kSetPointForm, kSettleForm, kElectricalForm, kThermalForm, kPredictionForm, kGuardForm, kEndForm;
+extern const document::Form kProfileForm, kProfileValueForm, kProfileQueryForm, kProfileSettingForm,
+    kProfileSafeForm;
+
+/// All of them, in the order of docs/files.md.
+[[nodiscard]] std::span<const document::Form* const> all_forms();
+
+}  // namespace loadstair::setup
