@@ -69,6 +69,7 @@ struct PortReading {
   std::optional<Estimate> ripple_power;
 };
 
+/// From good to worse.
 enum class PowerState { measured, apparent_only, missing };
 
 /// One port's power at the reference plane.

@@ -53,7 +53,8 @@ struct StepInput {
 
 struct StepResult {
   std::string label;
-  std::string state;  ///< "measured", "apparent power only", "missing channel ...": the worst of its ports
+  std::string
+      state;  ///< "measured", "apparent power only", "missing channel ...": the worst of its counted ports
   std::vector<PortPower> ports;
   Quoted input_power = base::Refusal{};   ///< W, counted inputs
   Quoted output_power = base::Refusal{};  ///< W, counted outputs
