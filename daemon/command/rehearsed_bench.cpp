@@ -250,7 +250,8 @@ rehearsal::ScopeDescription scope_of(const setup::CaptureSource& capture, const 
   scope.channels = {voltage, current};
   if (ac) {
     scope.length_s = 12.5 / plant.converter.output.frequency_hz;
-    scope.interval_s = 1.0 / plant.converter.output.frequency_hz / 400.0;
+    // Five samples a cycle of the usual 20 kHz residue, so that it is seen and not folded down.
+    scope.interval_s = 1.0 / plant.converter.output.frequency_hz / 2000.0;
   } else {
     scope.length_s = 2e-3;
     scope.interval_s = 2e-7;
@@ -354,8 +355,7 @@ base::Outcome<rehearsal::BenchDescription> describe_rehearsal(const Hookup& hook
     if (description.service == rehearsal::Service::scpi) add_queries(instrument, hookup, description);
     for (const auto& capture : hookup.captures) {
       if (capture.instrument != instrument.name) continue;
-      description.scope = scope_of(
-          capture, hookup, choice.folder.empty() ? std::string{} : choice.folder + "/scope", bench.plant);
+      description.scope = scope_of(capture, hookup, choice.captures, bench.plant);
       description.link = rehearsal::LinkKind::none;
     }
     bench.instruments.push_back(std::move(description));

@@ -14,7 +14,8 @@ namespace loadstair::command {
 struct RehearsalChoice {
   std::uint64_t seed = 1;  ///< which bench
   std::uint64_t run = 1;   ///< which visit to it
-  std::string folder;      ///< for ptys, sockets, captures and the control socket; empty: memory links
+  std::string captures;    ///< where the scope drops its files; empty: it cannot capture
+  std::string folder;      ///< for ptys, sockets and the control socket; empty: memory links
   std::string log_path;    ///< every reply with its query; empty: memory only
   std::vector<rehearsal::Fault> faults;
 };

@@ -1,0 +1,158 @@
+#include "daemon/command/result_text.h"
+
+#include <algorithm>
+#include <cmath>
+#include <nlohmann/json.hpp>
+#include <vector>
+
+#include "analysis/base/number.h"
+
+namespace loadstair::command {
+namespace {
+
+using nlohmann::json;
+
+/// Characters, not bytes: continuation bytes of UTF-8 do not count.
+std::size_t width_of(const std::string& text) {
+  return static_cast<std::size_t>(std::count_if(text.begin(), text.end(), [](char letter) {
+    return (static_cast<unsigned char>(letter) & 0xC0U) != 0x80U;
+  }));
+}
+
+std::string padded(const std::string& text, std::size_t width) {
+  return text + std::string(width > width_of(text) ? width - width_of(text) : 0, ' ');
+}
+
+/// Places after the point that show `uncertainty` with two significant digits.
+int decimals_for(double uncertainty) {
+  if (!(uncertainty > 0.0)) return 3;
+  return std::clamp(1 - static_cast<int>(std::floor(std::log10(uncertainty))), 0, 9);
+}
+
+using Row = std::vector<std::string>;
+
+std::string table_of(const std::vector<Row>& rows) {
+  std::vector<std::size_t> widths(rows.front().size(), 0);
+  for (const auto& row : rows) {
+    for (std::size_t i = 0; i < row.size(); ++i) widths[i] = std::max(widths[i], width_of(row[i]));
+  }
+  std::string text;
+  for (const auto& row : rows) {
+    std::string line;
+    for (std::size_t i = 0; i < row.size(); ++i) line += "  " + padded(row[i], widths[i]);
+    line.erase(line.find_last_not_of(' ') + 1);
+    text += line + "\n";
+  }
+  return text;
+}
+
+std::string indicated_or_dash(const json& quantity, double scale) {
+  if (quantity["value"].is_number()) {
+    return (quantity.value("at_least", false) ? "\u2265" : "") + estimate_text(quantity, scale);
+  }
+  if (quantity.contains("indicated")) {
+    return (quantity.value("at_least", false) ? "\u2265" : "") +
+           base::print_significant(quantity["indicated"].get<double>() * scale, 4) + " (?)";
+  }
+  return "-";
+}
+
+std::string temperature_text(const json& step) {
+  std::string text;
+  for (const auto& temperature : step["temperatures"]) {
+    if (!text.empty()) text += "; ";
+    text += estimate_text(temperature["end"]);
+    if (temperature["how"].is_string()) text += " " + temperature["how"].get<std::string>();
+  }
+  return text.empty() ? "-" : text;
+}
+
+std::string settled_text(const json& settled) {
+  if (!settled["settled"].get<bool>()) return "NO";
+  std::string text = "by " + settled["by"].get<std::string>();
+  if (settled["by"] == "no criterion") text = "no criterion";
+  if (settled["after_s"].is_number())
+    text += ", " + base::print_fixed(settled["after_s"].get<double>(), 1) + " s";
+  return text;
+}
+
+Row step_row(const json& step) {
+  return {step["label"].get<std::string>(),
+          base::print_significant(step["load_w"].get<double>(), 4),
+          estimate_text(step["input_power"]),
+          estimate_text(step["output_power"]),
+          estimate_text(step["efficiency"], 100.0),
+          estimate_text(step["loss"]),
+          indicated_or_dash(step["power_factor"], 1.0),
+          indicated_or_dash(step["thd_voltage"], 100.0),
+          indicated_or_dash(step["crest_factor"], 1.0),
+          temperature_text(step),
+          settled_text(step["settled"])};
+}
+
+/// Why a step has no efficiency, and what is remarkable about it.
+std::string step_notes(const json& step) {
+  std::string text;
+  const std::string label = step["label"].get<std::string>() + ": ";
+  if (!step["efficiency"]["value"].is_number()) {
+    text += "  " + label + step["efficiency"].value("why", std::string{"no efficiency"}) + "\n";
+  }
+  if (!step["settled"]["settled"].get<bool>() && !step["settled"]["text"].get<std::string>().empty()) {
+    text += "  " + label + step["settled"]["text"].get<std::string>() + "\n";
+  }
+  for (const auto& remark : step["remarks"]) text += "  " + label + remark.get<std::string>() + "\n";
+  if (!step["budget"].empty()) {
+    const auto& largest = step["budget"].front();
+    text += "  " + label + "largest share of the variance: " + largest["source"].get<std::string>() + ", " +
+            base::print_fixed(largest["share"].get<double>() * 100.0, 0) + " %";
+    const std::string action = largest["action"];
+    text += (action.empty() ? "" : "; " + action) + "\n";
+  }
+  return text;
+}
+
+}  // namespace
+
+std::string estimate_text(const json& estimate, double scale) {
+  if (!estimate.contains("value") || !estimate["value"].is_number()) return "-";
+  const double value = estimate["value"].get<double>() * scale;
+  if (estimate.contains("expanded")) {
+    const double expanded = estimate["expanded"].get<double>() * scale;
+    const int decimals = decimals_for(expanded);
+    return base::print_fixed(value, decimals) + " \u00b1" + base::print_fixed(expanded, decimals);
+  }
+  const double low = estimate["low"].get<double>() * scale;
+  const double high = estimate["high"].get<double>() * scale;
+  const int decimals = decimals_for((high - low) / 2.0);
+  return base::print_fixed(value, decimals) + " (" + base::print_fixed(low, decimals) + " to " +
+         base::print_fixed(high, decimals) + ")";
+}
+
+std::string result_table(const json& result) {
+  const auto& prototype = result["prototype"];
+  std::string text =
+      prototype["name"].get<std::string>() + " revision " + prototype["revision"].get<std::string>() +
+      ", unit " + prototype["unit"].get<std::string>() + ", run " +
+      base::print_integer(result["run"].get<std::int64_t>()) + ", " + result["state"].get<std::string>() +
+      ". Intervals: 95 %. (?): uncertainty not known.\n\n";
+  std::vector<Row> rows = {{"step", "load W", "input W", "output W", "efficiency %", "loss W", "PF", "THD %",
+                            "crest", "end temperature \u00b0C", "settled"}};
+  for (const auto& step : result["steps"]) rows.push_back(step_row(step));
+  text += table_of(rows);
+  std::string weighted;
+  for (const auto& figure : result["weighted"]) {
+    const auto& efficiency = figure["efficiency"];
+    weighted += "  " + figure["title"].get<std::string>() + ": " +
+                (efficiency["value"].is_number() ? estimate_text(efficiency, 100.0) + " %"
+                                                 : "none, " + efficiency.value("why", std::string{})) +
+                "\n";
+  }
+  if (!weighted.empty()) text += "\nWeighted, conversion only (tracking is not included)\n" + weighted;
+  std::string notes;
+  for (const auto& step : result["steps"]) notes += step_notes(step);
+  for (const auto& remark : result["remarks"]) notes += "  " + remark.get<std::string>() + "\n";
+  if (!notes.empty()) text += "\nNotes\n" + notes;
+  return text;
+}
+
+}  // namespace loadstair::command

@@ -1,0 +1,35 @@
+#include <filesystem>
+#include <fstream>
+#include <iostream>
+#include <sstream>
+
+#include "daemon/command/commands.h"
+#include "daemon/command/result_text.h"
+#include "daemon/command/run_loop.h"
+#include "daemon/command/terminal.h"
+#include "daemon/command/user_error.h"
+#include "daemon/setup/stair.h"
+
+namespace loadstair::command {
+
+int run_stair(const RunOptions& options) {
+  const auto stair = take(setup::load_stair(options.stair));
+  const auto daemon = running_daemon(options.record);
+  if (!daemon) {
+    throw UserError{"no daemon is running; start one with: loadstair daemon --hookup HOOKUP"};
+  }
+  catch_interrupts();
+  const auto started = daemon->post("runs", {{"stair", stair.text}, {"file", options.stair}});
+  if (!started) throw UserError{started.refusal()};
+  const auto run = (*started)["run"].get<std::int64_t>();
+  const auto person = person_at_terminal();
+  const RunOutcome outcome = follow_run(*daemon, run, *person);
+  const auto result = daemon->get("runs/" + std::to_string(run));
+  if (!result) throw std::runtime_error{result.refusal().text()};
+  std::cout << (options.json ? result->dump(2) + "\n" : result_table(*result));
+  for (const auto& warning : outcome.warnings) std::cerr << warning << "\n";
+  if (!outcome.done) std::cerr << "The run did not reach its end: " << outcome.reason << "\n";
+  return outcome.done && outcome.warnings.empty() ? kGood : kSaysNo;
+}
+
+}  // namespace loadstair::command

@@ -1,0 +1,196 @@
+#include "daemon/command/run_loop.h"
+
+#include <poll.h>
+
+#include <cmath>
+#include <iostream>
+#include <memory>
+#include <set>
+#include <stdexcept>
+
+#include "analysis/base/number.h"
+#include "daemon/command/terminal.h"
+
+namespace loadstair::command {
+namespace {
+
+using nlohmann::json;
+
+constexpr int kLookMs = 200;
+constexpr int kPatience = 25;  // looks without an answer, 5 s and the calls' own limits
+
+std::string range_words(const json& prompt) {
+  std::string words;
+  for (const auto& range : prompt["ranges"]) {
+    words += (words.empty() ? "" : ", ") + base::print_number(range.get<double>());
+  }
+  return words;
+}
+
+class TerminalPerson : public Person {
+ public:
+  void attend(const DaemonClient& daemon, const json& prompt) override {
+    const auto id = prompt["id"].get<std::int64_t>();
+    const std::string kind = prompt["kind"];
+    if (id != shown_ || kind != shown_kind_) show(prompt);
+    shown_ = id;
+    shown_kind_ = kind;
+    if (input_.ended()) {
+      throw std::runtime_error{"the run asks for a person, and nobody is at this terminal: " +
+                               prompt["text"].get<std::string>()};
+    }
+    const auto line = input_.next(kLookMs);
+    if (!line) return;
+    const auto outcome =
+        kind == "hand" ? answer_hand(daemon, id, *line) : answer_typed(daemon, prompt, id, *line);
+    if (!outcome) std::cout << "  " << outcome.refusal().text() << "\n> " << std::flush;
+  }
+
+  void save_capture(const std::string& step_label) override {
+    std::cout << "\nCapture wanted for step " << step_label
+              << ": save it on the scope as CSV into the folder of the hook-up file.\n";
+  }
+
+ private:
+  void show(const json& prompt) const {
+    std::cout << "\n" << bold(prompt["text"].get<std::string>()) << "\n";
+    for (const auto& caution : prompt["cautions"]) std::cout << "  ! " << caution.get<std::string>() << "\n";
+    if (prompt["kind"] == "hand") {
+      std::cout << "Type done and Enter when it is done, or skip and a reason.\n> " << std::flush;
+      return;
+    }
+    if (prompt["kind"] == "confirm") {
+      std::cout << "  " << prompt["why"].get<std::string>()
+                << "\nType yes and Enter to keep it, or the value again.\n> " << std::flush;
+      return;
+    }
+    std::cout << "Round " << prompt["round"].get<int>() << " of " << prompt["rounds"].get<int>()
+              << ". Type the value as it stands on the display, then range and weight of the last digit, in "
+              << prompt["unit"].get<std::string>() << " (ranges: " << range_words(prompt)
+              << "), for example: 385.1 600 0.1\n> " << std::flush;
+  }
+
+  static base::Outcome<json> answer_hand(const DaemonClient& daemon, std::int64_t id,
+                                         const std::string& line) {
+    if (line == "done") return daemon.post("prompt/answer", {{"prompt", id}, {"by", "terminal"}});
+    if (line.starts_with("skip")) {
+      return daemon.post("prompt/refuse",
+                         {{"prompt", id}, {"reason", line.size() > 5 ? line.substr(5) : ""}});
+    }
+    return base::Refusal{"", "type done, or skip and a reason"};
+  }
+
+  base::Outcome<json> answer_typed(const DaemonClient& daemon, const json& prompt, std::int64_t id,
+                                   const std::string& line) {
+    if (prompt["kind"] == "confirm" && line == "yes") {
+      last_["confirmed"] = true;
+      return daemon.post("prompt/typed", last_);
+    }
+    std::vector<std::string> words;
+    std::string word;
+    for (const char letter : line + " ") {
+      if (letter != ' ')
+        word += letter;
+      else if (!word.empty())
+        words.push_back(std::exchange(word, {}));
+    }
+    if (words.empty()) return base::Refusal{"", "type the value as it stands on the display"};
+    words.resize(3);
+    last_ = {{"prompt", id},           {"value", words[0]},  {"unit", prompt["unit"]}, {"range", words[1]},
+             {"last_digit", words[2]}, {"confirmed", false}, {"by", "terminal"}};
+    return daemon.post("prompt/typed", last_);
+  }
+
+  LineInput input_;
+  std::int64_t shown_ = 0;
+  std::string shown_kind_;
+  json last_;
+};
+
+std::string where(const json& run) {
+  const int step = run["step"].get<int>();
+  if (step < 0) return run["phase"].get<std::string>();
+  return "Step " + base::print_integer(step + 1) + " of " + base::print_integer(run["steps"].get<int>()) +
+         " (" + run["label"].get<std::string>() + "), " + run["step_phase"].get<std::string>();
+}
+
+/// What a run says about itself now, and what is new since the last look.
+class Teller {
+ public:
+  void tell(const json& run) {
+    for (const auto& trip : run["trips"])
+      say(trip["at"].get<std::string>() + " guard " + trip["guard"].get<std::string>() + ": " +
+          trip["text"].get<std::string>());
+    for (const auto& warning : run["warnings"]) say(bold("WARNING ") + warning.get<std::string>());
+    std::string moving = run["waits_for"];
+    if (run["remaining_s"].is_number()) {
+      const double left_s = run["remaining_s"];
+      moving += (moving.empty() ? "still " : ", still ") + base::print_fixed(std::ceil(left_s), 0) + " s";
+    }
+    progress_.show(where(run), moving);
+  }
+  void finish_line() { progress_.finish_line(); }
+
+ private:
+  void say(const std::string& text) {
+    if (!said_.insert(text).second) return;
+    progress_.finish_line();
+    std::cout << text << std::endl;
+  }
+
+  Progress progress_;
+  std::set<std::string> said_;
+};
+
+bool has_ended(const json& run, std::int64_t number) {
+  if (run["run"].get<std::int64_t>() != number) return true;
+  const std::string phase = run["phase"];
+  return phase == "done" || phase == "stopped" || phase == "idle";
+}
+
+}  // namespace
+
+std::unique_ptr<Person> person_at_terminal() {
+  return std::make_unique<TerminalPerson>();
+}
+
+RunOutcome follow_run(const DaemonClient& daemon, std::int64_t number, Person& person) {
+  Teller teller;
+  std::set<std::string> captured;
+  bool asked_to_stop = false;
+  int without_answer = 0;
+  for (;;) {
+    const auto state = daemon.get("state");
+    if (!state) {
+      if (++without_answer > kPatience) throw std::runtime_error{state.refusal().text()};
+      poll(nullptr, 0, kLookMs);
+      continue;
+    }
+    without_answer = 0;
+    const json& run = (*state)["run"];
+    teller.tell(run);
+    if (has_ended(run, number)) {
+      teller.finish_line();
+      RunOutcome outcome;
+      outcome.done = run["phase"] == "done";
+      outcome.reason = run["reason"];
+      for (const auto& warning : run["warnings"]) outcome.warnings.push_back(warning);
+      return outcome;
+    }
+    if (interrupted() && !asked_to_stop) {
+      teller.finish_line();
+      std::cout << "Stopping: safe state first." << std::endl;
+      asked_to_stop = daemon.post("run/stop", {{"reason", "interrupted at the terminal"}}).ok();
+    }
+    const std::string label = run["label"];
+    if (run["step_phase"] == "capture" && captured.insert(label).second) person.save_capture(label);
+    if (run["prompt"].is_object() && !asked_to_stop) {
+      teller.finish_line();
+      person.attend(daemon, run["prompt"]);
+    } else {
+      poll(nullptr, 0, kLookMs);
+    }
+  }
+}
+
+}  // namespace loadstair::command

@@ -1,0 +1,34 @@
+// Follows a run through the daemon until it ends: progress, prompts, Ctrl-C.
+#pragma once
+
+#include <functional>
+#include <nlohmann/json.hpp>
+
+#include "daemon/command/daemon_client.h"
+
+namespace loadstair::command {
+
+/// Who does what a prompt asks for, and saves captures.
+class Person {
+ public:
+  virtual ~Person() = default;
+  /// Called again and again while a prompt is open; answers through `daemon` when it can.
+  virtual void attend(const DaemonClient& daemon, const nlohmann::json& prompt) = 0;
+  /// Called once per step when a capture is wanted.
+  virtual void save_capture(const std::string& step_label) = 0;
+};
+
+/// The person at this terminal: shows the cautions, waits for a deliberate answer.
+[[nodiscard]] std::unique_ptr<Person> person_at_terminal();
+
+struct RunOutcome {
+  bool done = false;   ///< the stair was climbed to its end
+  std::string reason;  ///< why not
+  std::vector<std::string> warnings;
+};
+
+/// Returns when the run has ended and the bench is in its safe state. An interrupt (terminal.h) stops the
+/// run. Throws std::runtime_error when the daemon is lost.
+[[nodiscard]] RunOutcome follow_run(const DaemonClient& daemon, std::int64_t run, Person& person);
+
+}  // namespace loadstair::command
