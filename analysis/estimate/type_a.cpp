@@ -97,6 +97,27 @@ base::Outcome<std::vector<Estimate>> type_a_estimates(std::span<const series::St
   return out;
 }
 
+base::Outcome<std::vector<Estimate>> repeated_observations(std::span<const std::span<const double>> sets,
+                                                           const WindowId& id) {
+  std::vector<series::SteadyWindow> windows;
+  for (std::size_t i = 0; i < sets.size(); ++i) {
+    const auto found = series::statistics(sets[i]);
+    if (!found) return base::Refusal{id.step + ", quantity " + number(i), found.refusal().text()};
+    if (found->count < 2)
+      return base::Refusal{id.step + ", quantity " + number(i), "needs at least two observations"};
+    series::SteadyWindow window;
+    window.count = found->count;
+    window.value = found->mean;
+    window.deviation = found->standard_deviation;
+    window.effective_count = static_cast<double>(found->count);
+    window.u = found->standard_deviation / std::sqrt(window.effective_count);
+    window.degrees_of_freedom = window.effective_count - 1;
+    for (const double value : sets[i]) window.residual.push_back(value - found->mean);
+    windows.push_back(std::move(window));
+  }
+  return type_a_estimates(windows, id);
+}
+
 Quoted type_a_estimate(const series::SteadyWindow& window, const WindowId& id, std::string_view what) {
   auto all = type_a_estimates({&window, 1}, {id.run, id.step + ", " + std::string{what}});
   if (!all) return all.refusal();

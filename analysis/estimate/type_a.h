@@ -3,6 +3,7 @@
 
 #include <span>
 #include <string>
+#include <string_view>
 #include <vector>
 
 #include "analysis/estimate/estimate.h"
@@ -28,6 +29,13 @@ struct WindowId {
 /// Source:  JCGM 100:2008 H.2.4, second approach; the factor of the correlation matrix is Cholesky's.
 [[nodiscard]] base::Outcome<std::vector<Estimate>> type_a_estimates(
     std::span<const series::SteadyWindow> windows, const WindowId& id);
+
+/// Independent observations of several quantities made together, as in a table: no line is removed, every set
+/// counts. sets     one per quantity, equally long, at least two observations, finite Returns: the means,
+/// with u^2 = s^2/N, nu = N - 1 and the covariances of the sets. Source:  JCGM 100:2008 4.2, 5.2.3 equation
+/// 17, H.2.
+[[nodiscard]] base::Outcome<std::vector<Estimate>> repeated_observations(
+    std::span<const std::span<const double>> sets, const WindowId& id);
 
 /// One quantity on its own: what = part of the key and of the name ("output voltage").
 [[nodiscard]] Quoted type_a_estimate(const series::SteadyWindow& window, const WindowId& id,
