@@ -9,7 +9,7 @@
 
 namespace loadstair::rehearsal {
 
-/// Means over a window, of everything a step holds. `wave`, `running` and the flags are those of its last
+/// Means over a window, of everything a step holds. `wave`, the frequency and the flags are those of its last
 /// step.
 using StepMeans = PlantStep;
 

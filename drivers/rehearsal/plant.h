@@ -7,6 +7,7 @@
 #include <array>
 #include <complex>
 #include <cstddef>
+#include <memory>
 #include <vector>
 
 #include "drivers/rehearsal/lamps.h"
@@ -64,6 +65,7 @@ struct OverloadParameters {
 };
 
 struct InputParameters {
+  double nominal_voltage_v = 385.0;
   double least_voltage_v = 300.0;  ///< below: off; on again 5 % above
   double ripple_share = 0.02;      ///< peak of the current at twice the output frequency that reaches the
                                    ///< terminals, over the mean current (inverter only)
@@ -88,7 +90,8 @@ struct SourceParameters {
 /// The programmable load. Its harmonics flow whatever the voltage's shape (a rectifier's current).
 struct LoadParameters {
   double greatest_current_a = 12.0;
-  double least_voltage_v = 20.0;  ///< constant power turns into a resistance below this
+  double least_voltage_share = 0.85;  ///< of the nominal output: below it constant power is a resistance, so
+                                      ///< that a soft start does not meet the whole power at a few volts
   double displacement_deg = 0.0;  ///< the fundamental current lags by this (inverter only)
   std::vector<Line> harmonics;
   double setting_gain = 0.0;
@@ -147,7 +150,7 @@ enum class Node { terminals, inner, outer };
 struct SignalMeans {
   double mean = 0.0;
   double mean_square = 0.0;
-  double mean_rectified = 0.0;
+  double mean_rectified = 0.0;  ///< of the part without DC
 };
 
 /// A port over one step. Powers are true means of v*i.
@@ -181,6 +184,7 @@ struct PlantStep {
   WaveStep wave;
   double loss_w = 0.0;        ///< input.power_w - output.power_w
   double load_power_w = 0.0;  ///< dissipated in lamps, resistors and programmable load
+  double frequency_hz = 0.0;  ///< of the output; 0 when there is none
   double junction_c = 0.0;
   double case_c = 0.0;
   double ambient_c = 0.0;
@@ -189,9 +193,15 @@ struct PlantStep {
   bool fan_on = false;
 };
 
+struct OutputLoad;
+class OutputPort;
+
 class Plant {
  public:
   explicit Plant(PlantParameters parameters);
+  ~Plant();
+  Plant(Plant&&) noexcept;
+  Plant& operator=(Plant&&) noexcept;
 
   [[nodiscard]] const PlantParameters& parameters() const { return parameters_; }
   /// Effective from the next step on.
@@ -208,21 +218,22 @@ class Plant {
   [[nodiscard]] ThermalState steady_temperatures() const;
 
  private:
-  struct Spectrum;  // rms phasors of a port's signals, line by line
-  void solve_output(double ramp);
+  [[nodiscard]] OutputLoad load_now() const;
+  [[nodiscard]] double fold_back_factor(double sensed_a) const;
+  [[nodiscard]] double loss(double output_power_w, double current_rms_a) const;
+  void solve_output();
   void solve_input();
-  double load_conductance(double voltage_v) const;
-  double crest_of_current(std::complex<double> fundamental, double own_share) const;
-  void advance_state();
+  void watch_input();
 
   PlantParameters parameters_;
   std::size_t steps_ = 0;
   double source_voltage_v_ = 0.0;
   double ramp_ = 0.0;
   bool alive_ = false;
-  double load_voltage_v_ = 0.0;
+  double load_voltage_v_ = 0.0;  ///< rms, over the step before
   TwoNodes nodes_;
   LampBank lamps_;
+  std::unique_ptr<OutputPort> output_port_;
   PlantStep last_;
 };
 

@@ -1,0 +1,188 @@
+#include "drivers/rehearsal/meters.h"
+
+#include <algorithm>
+#include <cmath>
+#include <numbers>
+
+#include "drivers/rehearsal/draws.h"
+
+namespace loadstair::rehearsal {
+
+namespace {
+
+// A free-running meter whose conversions are numbered; a triggered one names them by their instant.
+constexpr double kTriggeredTick_s = 1e-9;
+// Over this share of full scale the level part of an error turns into another draw.
+constexpr double kLevelWidth = 0.04;
+
+double drawn_level(std::uint64_t seed, std::uint64_t run, const std::string& name, std::size_t range,
+                   double place) {
+  const double bin = std::floor(place / kLevelWidth);
+  const double share = place / kLevelWidth - bin;
+  const auto draw = [&](double at) {
+    return normal_draw(
+        key_of(seed, name + " level", {run, range, static_cast<std::uint64_t>(std::llround(at) + 1000)}));
+  };
+  // Between two draws, still of unit variance.
+  return ((1.0 - share) * draw(bin) + share * draw(bin + 1.0)) / std::hypot(1.0 - share, share);
+}
+
+/// A rectangular draw inside (-1, 1) with the shares fixed 0.8, run 0.1, level 0.1.
+double shared_draw(std::uint64_t seed, std::uint64_t run, const std::string& name, std::size_t range,
+                   double place) {
+  const double fixed = normal_draw(key_of(seed, name + " fixed", {range}));
+  const double of_run = normal_draw(key_of(seed, name + " run", {run, range}));
+  const double level = drawn_level(seed, run, name, range, place);
+  return normal_to_symmetric(std::sqrt(0.8) * fixed + std::sqrt(0.1) * of_run + std::sqrt(0.1) * level);
+}
+
+double responding(Response response, const SignalMeans& signal) {
+  switch (response) {
+    case Response::dc:
+      return signal.mean;
+    case Response::true_rms_ac:
+      return std::sqrt(std::max(0.0, signal.mean_square - signal.mean * signal.mean));
+    case Response::true_rms_ac_dc:
+      return std::sqrt(signal.mean_square);
+    case Response::average_responding:
+      return signal.mean_rectified * std::numbers::pi / (2.0 * std::numbers::sqrt2);
+  }
+  return 0.0;
+}
+
+double rounded(double value, double digit) {
+  return digit > 0.0 ? std::round(value / digit) * digit : value;
+}
+
+}  // namespace
+
+Meter::Meter(MeterDescription description, std::uint64_t seed, std::uint64_t run)
+    : description_{std::move(description)}, seed_{seed}, run_{run} {
+  const double place = symmetric_draw(key_of(seed_, description_.name + " phase", {run_}));
+  phase_s_ = 0.5 * (1.0 + place) * description_.update_period_s;
+}
+
+std::optional<std::size_t> Meter::find(const std::string& function) const {
+  for (std::size_t i = 0; i < description_.functions.size(); ++i)
+    if (description_.functions[i].name == function) return i;
+  return std::nullopt;
+}
+
+std::int64_t Meter::conversion_at(double time_s) const {
+  const double period = description_.update_period_s;
+  if (period <= 0.0) return std::llround(time_s / kTriggeredTick_s);
+  return static_cast<std::int64_t>(std::floor((time_s - description_.delay_s - phase_s_) / period + 1e-9));
+}
+
+double Meter::conversion_end_s(std::int64_t conversion) const {
+  const double period = description_.update_period_s;
+  if (period <= 0.0) return static_cast<double>(conversion) * kTriggeredTick_s - description_.delay_s;
+  return phase_s_ + static_cast<double>(conversion) * period;
+}
+
+DrawnError Meter::error(std::size_t function, std::size_t range, double value) const {
+  const MeterFunction& f = description_.functions[function];
+  if (f.ranges.empty()) return {};
+  const MeterRange& r = f.ranges[range];
+  const std::string name = description_.name + "/" + f.name;
+  const double place = r.full_scale > 0.0 ? value / r.full_scale : 0.0;
+  const double offset_bound = 0.01 * r.range_percent * r.full_scale + std::max(0.0, r.digits - 0.5) * r.digit;
+  return {0.01 * r.reading_percent * shared_draw(seed_, run_, name + " gain", range, place),
+          offset_bound * shared_draw(seed_, run_, name + " offset", range, place)};
+}
+
+double Meter::series_ohm(std::size_t function, std::size_t range) const {
+  const MeterFunction& f = description_.functions[function];
+  const std::string name = description_.name + "/" + f.name + " series";
+  if (f.shunt) {
+    return f.shunt->resistance_ohm *
+           (1.0 + 0.01 * f.shunt->tolerance_percent * symmetric_draw(key_of(seed_, name)));
+  }
+  if (range >= f.ranges.size()) return 0.0;
+  return f.ranges[range].burden_ohm *
+         (1.0 + 0.01 * f.burden_tolerance_percent * symmetric_draw(key_of(seed_, name, {range})));
+}
+
+double Meter::parallel_siemens(std::size_t function) const {
+  const MeterFunction& f = description_.functions[function];
+  if (f.impedance_ohm <= 0.0) return 0.0;
+  const std::string name = description_.name + "/" + f.name + " parallel";
+  return 1.0 /
+         (f.impedance_ohm * (1.0 + 0.01 * f.burden_tolerance_percent * symmetric_draw(key_of(seed_, name))));
+}
+
+std::optional<std::size_t> Meter::range_for(std::size_t function, double magnitude) const {
+  const MeterFunction& f = description_.functions[function];
+  if (f.fixed_range >= 0) {
+    const auto fixed = static_cast<std::size_t>(f.fixed_range);
+    if (fixed < f.ranges.size() && magnitude <= f.ranges[fixed].full_scale) return fixed;
+    return std::nullopt;
+  }
+  for (std::size_t i = 0; i < f.ranges.size(); ++i)
+    if (magnitude <= f.ranges[i].full_scale) return i;
+  return std::nullopt;
+}
+
+double Meter::true_value(std::size_t function, const StepMeans& means) const {
+  const MeterFunction& f = description_.functions[function];
+  const PortStep& port = f.port == Port::input ? means.input : means.output;
+  const auto node = static_cast<std::size_t>(f.node);
+  switch (f.quantity) {
+    case Quantity::voltage:
+      return responding(f.response, port.voltage[node]);
+    case Quantity::current:
+      return responding(f.response, port.meter_current) * (f.shunt ? series_ohm(function, 0) : 1.0);
+    case Quantity::power:
+      return port.meter_power_w[node];
+    case Quantity::power_factor: {
+      const double apparent =
+          std::sqrt(port.voltage[node].mean_square) * std::sqrt(port.meter_current.mean_square);
+      return apparent > 0.0 ? port.meter_power_w[node] / apparent : 0.0;
+    }
+    case Quantity::frequency:
+      return f.port == Port::output ? means.frequency_hz : 0.0;
+    case Quantity::case_temperature:
+      return means.case_c;
+    case Quantity::junction_temperature:
+      return means.junction_c;
+    case Quantity::ambient_temperature:
+      return means.ambient_c;
+  }
+  return 0.0;
+}
+
+Shown Meter::show(std::size_t function, double value, std::int64_t conversion) const {
+  const MeterFunction& f = description_.functions[function];
+  if (f.ranges.empty()) return {value, 0.0, 0.0, false};
+  const auto range = range_for(function, std::abs(value));
+  if (!range) {
+    const std::size_t stands = f.fixed_range >= 0
+                                   ? std::min(static_cast<std::size_t>(f.fixed_range), f.ranges.size() - 1)
+                                   : f.ranges.size() - 1;
+    return {value, f.ranges[stands].full_scale, f.ranges[stands].digit, true};
+  }
+  const MeterRange& r = f.ranges[*range];
+  const DrawnError drawn = error(function, *range, value);
+  double shown = value * (1.0 + drawn.gain) + drawn.offset;
+  if (f.nonlinearity_percent != 0.0)
+    shown += 0.01 * f.nonlinearity_percent * r.full_scale *
+             std::sin(2.0 * std::numbers::pi * value / r.full_scale);
+  if (f.noise > 0.0) {
+    const std::string name = description_.name + "/" + f.name + " noise";
+    shown += f.noise * normal_draw(key_of(seed_, name, {run_, static_cast<std::uint64_t>(conversion)}));
+  }
+  return {rounded(shown, r.digit), r.full_scale, r.digit, false};
+}
+
+std::vector<Shown> Meter::shown(const History& history, double time_s) const {
+  const std::int64_t conversion = conversion_at(time_s);
+  const double end_s = conversion_end_s(conversion);
+  const StepMeans means = history.means(end_s - description_.integration_s, end_s);
+  std::vector<Shown> all;
+  all.reserve(description_.functions.size());
+  for (std::size_t i = 0; i < description_.functions.size(); ++i)
+    all.push_back(show(i, true_value(i, means), conversion));
+  return all;
+}
+
+}  // namespace loadstair::rehearsal
