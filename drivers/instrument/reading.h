@@ -17,22 +17,24 @@ enum Flag : std::uint32_t {
   kUnitChanged = 1U << 3,   ///< another unit or function than the profile promises: somebody turned the knob
   kRangeChanged = 1U << 4,  ///< another range than the one before
   kTyped = 1U << 5,         ///< entered by a person (not a fault)
-  kImplausible = 1U << 6,   ///< far from what was expected, and confirmed by the person who typed it (not a fault)
-  kSuperseded = 1U << 7,    ///< a typed value that was corrected; kept, not used
-  kMissing = 1U << 8,       ///< asked for, and no reply came in time
+  kImplausible =
+      1U << 6,  ///< far from what was expected, and confirmed by the person who typed it (not a fault)
+  kSuperseded = 1U << 7,  ///< a typed value that was corrected; kept, not used
+  kMissing = 1U << 8,     ///< asked for, and no reply came in time
 };
 /// Flags that forbid the use of a value.
-inline constexpr std::uint32_t kUnusable = kOverload | kInvalid | kStale | kUnitChanged | kSuperseded | kMissing;
+inline constexpr std::uint32_t kUnusable =
+    kOverload | kInvalid | kStale | kUnitChanged | kSuperseded | kMissing;
 
 /// One value from one instrument, as the instrument said it, in the unit that the profile declares for it.
 struct Reading {
-  std::int32_t value_index = 0;     ///< index into Profile::values
-  std::int64_t t_ns = 0;            ///< monotonic instant the value stands for: middle of request and reply, minus
-                                    ///< the declared delay and half the integration time
-  std::int64_t half_width_ns = 0;   ///< half of request-to-reply, plus half the update period
-  double value = 0.0;               ///< NaN exactly when there is no number (kInvalid, kMissing, kOverload)
+  std::int32_t value_index = 0;  ///< index into Profile::values
+  std::int64_t t_ns = 0;  ///< monotonic instant the value stands for: middle of request and reply, minus
+                          ///< the declared delay and half the integration time
+  std::int64_t half_width_ns = 0;  ///< half of request-to-reply, plus half the update period
+  double value = 0.0;              ///< NaN exactly when there is no number (kInvalid, kMissing, kOverload)
   std::uint32_t flags = 0;
-  double range = 0.0;               ///< full scale the reading was taken on; 0: not known
+  double range = 0.0;  ///< full scale the reading was taken on; 0: not known
 };
 
 /// One query with its reply (or one unsolicited line, with an empty query), and what was read from it.
@@ -40,17 +42,17 @@ struct Exchange {
   std::int64_t sent_ns = 0;      ///< monotonic; for an unsolicited line: its first byte
   std::int64_t received_ns = 0;  ///< last byte of the reply
   std::string query;
-  std::string reply;             ///< without the terminator; empty when none came
+  std::string reply;  ///< without the terminator; empty when none came
   std::vector<Reading> readings;
 };
 
 enum class EventKind {
   connected,
-  lost,             ///< link closed, or silent beyond the limit
-  identity_wrong,   ///< something else answers: nothing is read from it and nothing is sent to it
-  timeout,          ///< one query without a reply in time
-  resynchronised,   ///< late bytes thrown away, the line is in step again
-  garbage,          ///< a reply that could not be read
+  lost,            ///< link closed, or silent beyond the limit
+  identity_wrong,  ///< something else answers: nothing is read from it and nothing is sent to it
+  timeout,         ///< one query without a reply in time
+  resynchronised,  ///< late bytes thrown away, the line is in step again
+  garbage,         ///< a reply that could not be read
   overload,
   unit_changed,
   stale,
