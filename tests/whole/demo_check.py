@@ -1,0 +1,65 @@
+"""The demo as a black box: it ends well, its record joins the rehearsal's log, truth.json is not needed."""
+import json
+import os
+import subprocess
+import sys
+import tempfile
+
+from bench_tools import Bench, check_readings_against_log
+
+program, source = sys.argv[1], sys.argv[2]
+
+
+def main():
+    out = tempfile.mkdtemp(prefix="ls-demo-", dir="/tmp")
+    runtime = os.path.join(out, "rt")
+    env = dict(os.environ, LOADSTAIR_RUNTIME=runtime, NO_COLOR="1")
+    stair = os.path.join(source, "tests", "whole", "short.stair.json")
+    demo = subprocess.run([program, "demo", "--out", out, "--seed", "3", "--headless", "--stair", stair], env=env,
+                          capture_output=True, text=True, timeout=170, stdin=subprocess.DEVNULL)
+    print(demo.stdout[-6000:])
+    assert demo.returncode == 0, f"exit status {demo.returncode}: {demo.stderr}"
+    record = os.path.join(out, "record.db")
+
+    def show():
+        shown = subprocess.run([program, "show", "1", "--record", record, "--json"], env=env, capture_output=True,
+                               text=True, timeout=60)
+        assert shown.returncode == 0, shown.stderr
+        return shown.stdout
+
+    first = show()
+    result = json.loads(first)
+    with open(os.path.join(out, "truth.json")) as text:
+        truth = {step["label"]: step for step in json.load(text)["steps"]}
+    assert len(result["steps"]) == 4
+    holding = 0
+    for step in result["steps"]:
+        efficiency = step["efficiency"]
+        assert efficiency["value"] is not None, f"{step['label']}: {efficiency.get('why')}"
+        true = truth[step["label"]]["efficiency"]
+        holding += efficiency["low"] <= true <= efficiency["high"]
+        # Twice the interval is missed by a bench inside its declared specification only if something is wrong.
+        assert abs(true - efficiency["value"]) < efficiency["high"] - efficiency["low"], (step["label"], true, efficiency)
+        assert 0.6 < efficiency["value"] < 1.0
+        assert abs(sum(entry["share"] for entry in step["budget"]) - 1.0) < 1e-9
+        assert step["temperatures"][0]["end"]["value"] is not None
+    assert holding >= 2, "the truth is outside most intervals"
+    captures = os.listdir(os.path.join(out, "captures"))
+    assert len(captures) == 3, captures
+
+    os.remove(os.path.join(out, "truth.json"))
+    assert show() == first, "a result changed when truth.json was deleted"
+    assert "nan" not in first.lower().replace("nanos", ""), "a NaN in the results"
+
+    listed = json.loads(subprocess.run([program, "runs", "--record", record, "--json"], env=env, capture_output=True,
+                                       text=True, timeout=60).stdout)
+    assert [(run["run"], run["state"]) for run in listed] == [(1, "done")], listed
+
+    bench = Bench(program, source)
+    bench.record, bench.log_path = record, os.path.join(out, "rehearsal.log")
+    joined = check_readings_against_log(bench, 1)
+    bench.close()
+    print(f"{joined} replies of good readings join the rehearsal's log; {holding} of 4 intervals hold the truth")
+
+
+main()
