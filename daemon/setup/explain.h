@@ -1,5 +1,6 @@
-// What `loadstair check` says about the files before power is on: what was understood, what is dangerous, what
-// would spoil the result. Arithmetic from the ratings only; the forecast of uncertainties is evaluation's.
+// What `loadstair check` says about the files before power is on: what was understood, what is dangerous,
+// what would spoil the result. Arithmetic from the ratings only; the forecast of uncertainties is
+// evaluation's.
 #pragma once
 
 #include <string>
@@ -28,9 +29,9 @@ struct Finding {
 /// What the stair will do, one line a step, and how long it takes at most.
 [[nodiscard]] std::vector<std::string> explain(const Stair& stair);
 
-/// Everything that needs saying, worst first: isolation on live nodes, lead drops that nobody declared, AC power
-/// that will be apparent power only, undeclared accuracy, guards that act on nothing, and the usual cautions for what
-/// this bench is. `stair` may be null; what needs ratings is then left out.
+/// Everything that needs saying, worst first: isolation on live nodes, lead drops that nobody declared, AC
+/// power that will be apparent power only, undeclared accuracy, guards that act on nothing, and the usual
+/// cautions for what this bench is. `stair` may be null; what needs ratings is then left out.
 [[nodiscard]] std::vector<Finding> cautions(const Hookup& hookup, const Stair* stair);
 
 /// How fast a guard can be, and what it can do.
@@ -43,7 +44,8 @@ struct GuardForecast {
 /// Precondition: match(stair, hookup) is good.
 [[nodiscard]] std::vector<GuardForecast> forecast_guards(const Stair& stair, const Hookup& hookup);
 
-/// The caution that goes with every prompt for a hand on the bench; one or two sentences, fitting to the bench.
+/// The caution that goes with every prompt for a hand on the bench; one or two sentences, fitting to the
+/// bench.
 [[nodiscard]] std::string hand_caution(const Hookup& hookup);
 
 }  // namespace loadstair::setup

@@ -17,10 +17,11 @@ constexpr auto kHookupKeys =
 constexpr auto kInstrumentKeys =
     to_array<Key>({"name", "profile", "link", "identity", "isolation", "poll_s", "update_s", "integration_s",
                    "delay_s", "serial_number", "calibrated", "calibration_due"});
-constexpr auto kLinkKeys = to_array<Key>({"serial", "tcp", "folder", "baud", "data_bits", "parity", "stop_bits"});
+constexpr auto kLinkKeys =
+    to_array<Key>({"serial", "tcp", "folder", "baud", "data_bits", "parity", "stop_bits"});
 constexpr auto kChannelKeys =
-    to_array<Key>({"name", "typed", "instrument", "value", "quantity", "unit", "response", "conversion", "ranges",
-                   "band_hz", "crest_limit", "low", "high"});
+    to_array<Key>({"name", "typed", "instrument", "value", "quantity", "unit", "response", "conversion",
+                   "ranges", "band_hz", "crest_limit", "low", "high"});
 constexpr auto kConversionKeys = to_array<Key>({"scale", "scale_tolerance_percent", "shunt", "thermocouple"});
 constexpr auto kShuntKeys =
     to_array<Key>({"resistance_ohm", "tolerance_percent", "tempco_ppm_per_k", "rise_k_per_w"});
@@ -37,22 +38,24 @@ constexpr auto kTemperatureKeys = to_array<Key>({"channel", "place", "ambient"})
 constexpr auto kCaptureKeys =
     to_array<Key>({"instrument", "port", "voltage", "current", "voltage_scale", "current_scale",
                    "voltage_gain_percent", "current_gain_percent", "delay_tolerance_s"});
-constexpr auto kRehearsalKeys =
-    to_array<Key>({"kind", "converter", "source", "load", "thermal", "waveform", "roles"});
-constexpr auto kRehearsedConverterKeys = to_array<Key>(
-    {"no_load_w", "linear_loss", "quadratic_loss_per_w", "resistance_rise_per_k", "standby_w",
-     "output_resistance_ohm", "sense_resistance_ohm", "sense_threshold_v", "fold_back", "soft_start_s",
-     "nominal_input_v", "least_input_v", "greatest_modulation"});
+constexpr auto kRehearsalKeys = to_array<Key>(
+    {"kind", "sense", "converter", "source", "load", "thermal", "waveform", "meters", "person"});
+constexpr auto kRehearsedConverterKeys =
+    to_array<Key>({"no_load_w", "linear", "quadratic_per_w", "resistance_rise_per_k", "standby_w",
+                   "output_voltage_v", "output_impedance_ohm", "soft_start_s", "sense_threshold_v",
+                   "sense_ohm", "fold_back", "least_input_voltage_v"});
 constexpr auto kRehearsedSourceKeys =
-    to_array<Key>({"voltage_v", "resistance_ohm", "lead_resistance_ohm", "current_limit_a", "slew_v_per_s"});
-constexpr auto kRehearsedLoadKeys =
-    to_array<Key>({"lead_resistance_ohm", "greatest_current_a", "least_voltage_v", "displacement_deg"});
+    to_array<Key>({"voltage_v", "resistance_ohm", "current_limit_a", "lead_ohm"});
+constexpr auto kRehearsedLoadKeys = to_array<Key>({"lead_ohm", "greatest_current_a"});
 constexpr auto kRehearsedThermalKeys =
-    to_array<Key>({"ambient_c", "ambient_drift_k_per_h", "heatsink_k_per_w", "heatsink_tau_s", "junction_k_per_w",
-                   "junction_tau_s", "fan_on_c", "fan_off_c", "fan_k_per_w", "fan_power_w"});
+    to_array<Key>({"ambient_c", "ambient_drift_k_per_h", "junction_to_case_k_per_w", "case_to_air_k_per_w",
+                   "case_to_air_fan_k_per_w", "junction_time_s", "case_time_s", "fan_starts_c", "fan_stops_c",
+                   "fan_power_w"});
 constexpr auto kRehearsedWaveformKeys =
-    to_array<Key>({"frequency_hz", "dc_offset_v", "third_percent", "fifth_percent", "seventh_percent",
-                   "carrier_hz", "carrier_percent", "ripple_share"});
+    to_array<Key>({"frequency_hz", "dc_offset_v", "third_share", "fifth_share", "seventh_share",
+                   "residue_share", "residue_ratio", "ripple_share"});
+constexpr auto kRehearsedMetersKeys = to_array<Key>({"noise_share"});
+constexpr auto kRehearsedPersonKeys = to_array<Key>({"look_s", "type_s"});
 
 constexpr auto kStairKeys = to_array<Key>({"format", "prototype", "ratings", "environment",
                                            "load_tolerance_percent", "staircase", "steps", "guards", "end"});
@@ -63,8 +66,8 @@ constexpr auto kEnvironmentKeys = to_array<Key>({"ambient_c"});
 constexpr auto kStaircaseKeys =
     to_array<Key>({"control", "setting", "prompt", "hand_action", "levels_percent", "levels_w",
                    "input_voltages_v", "input_control", "soak_s", "settle", "average_s", "capture"});
-constexpr auto kStepKeys = to_array<Key>({"label", "load_w", "input_voltage_v", "set", "prompt", "hand_action",
-                                          "soak_s", "settle", "average_s", "capture"});
+constexpr auto kStepKeys = to_array<Key>({"label", "load_w", "input_voltage_v", "set", "prompt",
+                                          "hand_action", "soak_s", "settle", "average_s", "capture"});
 constexpr auto kSetPointKeys = to_array<Key>({"control", "setting", "value"});
 constexpr auto kSettleKeys = to_array<Key>({"electrical", "thermal", "limit_s"});
 constexpr auto kElectricalKeys = to_array<Key>({"channel", "slope_percent_per_min", "window_s"});
@@ -75,10 +78,9 @@ constexpr auto kGuardKeys = to_array<Key>({"name", "channel", "above", "below", 
                                            "action", "missing", "missing_after_s"});
 constexpr auto kEndKeys = to_array<Key>({"cool_down_s", "discharge_s"});
 
-constexpr auto kProfileKeys =
-    to_array<Key>({"format", "profile", "dialect", "terminator", "identity_query", "start_commands", "values",
-                   "queries", "overload_words", "overload_at", "timeout_s", "settings", "on_commands", "safe",
-                   "free_running"});
+constexpr auto kProfileKeys = to_array<Key>(
+    {"format", "profile", "dialect", "terminator", "identity_query", "start_commands", "values", "queries",
+     "overload_words", "overload_at", "timeout_s", "settings", "on_commands", "safe", "free_running"});
 constexpr auto kProfileValueKeys = to_array<Key>({"name", "unit", "line_pattern"});
 constexpr auto kProfileQueryKeys = to_array<Key>({"text", "values"});
 constexpr auto kProfileSettingKeys = to_array<Key>({"name", "unit", "command", "readback", "tolerance"});
@@ -105,6 +107,8 @@ const Form kRehearsedSourceForm{"a rehearsed source", kRehearsedSourceKeys};
 const Form kRehearsedLoadForm{"a rehearsed load", kRehearsedLoadKeys};
 const Form kRehearsedThermalForm{"a rehearsed heatsink", kRehearsedThermalKeys};
 const Form kRehearsedWaveformForm{"a rehearsed waveform", kRehearsedWaveformKeys};
+const Form kRehearsedMetersForm{"a set of rehearsed meters", kRehearsedMetersKeys};
+const Form kRehearsedPersonForm{"a rehearsed person", kRehearsedPersonKeys};
 
 const Form kStairForm{"a stair file", kStairKeys};
 const Form kPrototypeForm{"a prototype", kPrototypeKeys};
@@ -127,17 +131,45 @@ const Form kProfileSettingForm{"a profile's setting", kProfileSettingKeys};
 const Form kProfileSafeForm{"a profile's safe state", kProfileSafeKeys};
 
 std::span<const Form* const> all_forms() {
-  static constexpr std::array kAll = {
-      &kHookupForm,         &kInstrumentForm,     &kLinkForm,           &kChannelForm,
-      &kConversionForm,     &kShuntForm,          &kThermocoupleForm,   &kRangeForm,
-      &kPortForm,           &kControlForm,        &kLoadForm,           &kTemperatureForm,
-      &kCaptureForm,        &kRehearsalForm,      &kRehearsedConverterForm, &kRehearsedSourceForm,
-      &kRehearsedLoadForm,  &kRehearsedThermalForm, &kRehearsedWaveformForm, &kStairForm,
-      &kPrototypeForm,      &kRatingsForm,        &kEnvironmentForm,    &kStaircaseForm,
-      &kStepForm,           &kSetPointForm,       &kSettleForm,         &kElectricalForm,
-      &kThermalForm,        &kPredictionForm,     &kGuardForm,          &kEndForm,
-      &kProfileForm,        &kProfileValueForm,   &kProfileQueryForm,   &kProfileSettingForm,
-      &kProfileSafeForm};
+  static constexpr std::array kAll = {&kHookupForm,
+                                      &kInstrumentForm,
+                                      &kLinkForm,
+                                      &kChannelForm,
+                                      &kConversionForm,
+                                      &kShuntForm,
+                                      &kThermocoupleForm,
+                                      &kRangeForm,
+                                      &kPortForm,
+                                      &kControlForm,
+                                      &kLoadForm,
+                                      &kTemperatureForm,
+                                      &kCaptureForm,
+                                      &kRehearsalForm,
+                                      &kRehearsedConverterForm,
+                                      &kRehearsedSourceForm,
+                                      &kRehearsedLoadForm,
+                                      &kRehearsedThermalForm,
+                                      &kRehearsedWaveformForm,
+                                      &kRehearsedMetersForm,
+                                      &kRehearsedPersonForm,
+                                      &kStairForm,
+                                      &kPrototypeForm,
+                                      &kRatingsForm,
+                                      &kEnvironmentForm,
+                                      &kStaircaseForm,
+                                      &kStepForm,
+                                      &kSetPointForm,
+                                      &kSettleForm,
+                                      &kElectricalForm,
+                                      &kThermalForm,
+                                      &kPredictionForm,
+                                      &kGuardForm,
+                                      &kEndForm,
+                                      &kProfileForm,
+                                      &kProfileValueForm,
+                                      &kProfileQueryForm,
+                                      &kProfileSettingForm,
+                                      &kProfileSafeForm};
   return kAll;
 }
 

@@ -32,7 +32,9 @@ enum class Isolation { unknown, isolated, battery, earthed };
 struct Instrument {
   std::string name;
   std::string profile_name;
-  instrument::Profile profile;  ///< resolved: built in, or a file beside the hook-up file
+  /// Resolved: built in, or a file beside the hook-up file. Of its queries only those that a channel needs
+  /// are kept.
+  instrument::Profile profile;
   LinkChoice link;
   std::string identity;  ///< what the identity reply must begin with; empty: any
   Isolation isolation = Isolation::unknown;
@@ -192,5 +194,8 @@ struct Hookup {
 /// Refusal: place "FILE:line:column", reason with what would be right; the first problem only.
 [[nodiscard]] base::Outcome<Hookup> read_hookup(std::string_view text, const std::string& file);
 [[nodiscard]] base::Outcome<Hookup> load_hookup(const std::string& file);
+
+/// A path that stands in a file, as the program may open it: relative ones are relative to the file's folder.
+[[nodiscard]] std::string beside(const std::string& file, const std::string& path);
 
 }  // namespace loadstair::setup

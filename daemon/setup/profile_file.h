@@ -1,4 +1,5 @@
-// Profiles: how one kind of instrument speaks, as a file. Generic ones are built in; a bench may bring its own.
+// Profiles: how one kind of instrument speaks, as a file. Generic ones are built in; a bench may bring its
+// own.
 #pragma once
 
 #include <string>
@@ -17,10 +18,9 @@ namespace loadstair::setup {
 /// Names of the built-in profiles, in alphabetical order: "scpi-load", "scpi-meter", ...
 [[nodiscard]] std::vector<std::string_view> built_in_profile_names();
 
-/// A profile by the name that a hook-up file gives it: a built-in one, or, when it ends in ".json", a file beside
-/// the hook-up file.
-/// Refusal: without a place when there is no such profile or file (the place is the hook-up's to say); with the
-/// profile file's own place when the file is wrong.
+/// A profile by the name that a hook-up file gives it: a built-in one, or, when it ends in ".json", a file
+/// beside the hook-up file. Refusal: without a place when there is no such profile or file (the place is the
+/// hook-up's to say); with the profile file's own place when the file is wrong.
 [[nodiscard]] base::Outcome<instrument::Profile> find_profile(const std::string& name,
                                                               const std::string& hookup_file);
 

@@ -49,7 +49,8 @@ struct ThermalSettle {
 
 struct Step {
   std::string label;
-  double load_w = 0.0;  ///< nominal output power of the step, for the curve and the weights
+  std::string written_at;  ///< where in the file: "staircase" or "steps/0", a path of drivers/document
+  double load_w = 0.0;     ///< nominal output power of the step, for the curve and the weights
   std::optional<double> input_voltage_v;
   std::vector<SetPoint> set;
   std::string prompt;       ///< a sentence for the person at the bench; empty: none
@@ -76,6 +77,7 @@ struct Guard {
   double missing_after_s = 0.0;  ///< 0: three poll periods
 };
 
+/// What comes after the last step, beside switching off.
 struct End {
   double cool_down_s = 0.0;
   double discharge_s = 0.0;  ///< timed discharge before anybody touches the bench
