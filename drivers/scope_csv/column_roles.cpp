@@ -15,17 +15,13 @@ namespace {
 
 constexpr std::size_t kRowsLookedAt = 200;
 
-std::string text_of(std::size_t count) {
-  return base::print_integer(static_cast<std::int64_t>(count));
-}
-
 bool is_time_unit(const ColumnLabel& label) {
   return label.unit && label.unit->unit == "s";
 }
 
 std::string described(const Labels& labels, std::size_t column) {
   const auto& label = labels.columns[column];
-  return "column " + text_of(column + 1) + (label.is_named ? ", " + shown(label.name) : "");
+  return "column " + text_of(column + 1) + (label.is_named ? ", " + shown(label.name) + "," : "");
 }
 
 std::string capital(std::string text) {
@@ -112,7 +108,9 @@ class RoleFinder {
   base::Outcome<void> by_label() {
     for (std::size_t k = 0; k < labels_.columns.size(); ++k) {
       const auto& label = labels_.columns[k];
-      const bool by_name = label.is_named && is_time_name(label.name) && (!label.unit || is_time_unit(label));
+      // "x" may be in volts, "time" may not: check_time_unit refuses it.
+      const bool by_name = label.is_named && is_time_name(label.name) &&
+                           (!label.unit || is_time_unit(label) || lower(label.name).starts_with("time"));
       if (by_name || is_time_unit(label)) {
         if (roles_.time) {
           roles_.other_times.push_back(k);
@@ -121,7 +119,7 @@ class RoleFinder {
         }
       } else if (k == 0 && label.is_named && is_counter_name(label.name)) {
         roles_.left_out.push_back(k);
-        roles_.remarks.push_back(capital(described(labels_, k)) + ", counts samples and is left out.");
+        roles_.remarks.push_back(capital(described(labels_, k)) + " counts samples and is left out.");
       }
     }
     return {};
@@ -141,12 +139,12 @@ class RoleFinder {
       // A count, or seconds: only a stated interval tells.
       if (!interval_stated) return;
       roles_.left_out.push_back(0);
-      roles_.remarks.push_back(capital(described(labels_, 0)) + ", counts samples and is left out.");
+      roles_.remarks.push_back(capital(described(labels_, 0)) + " counts samples and is left out.");
     } else if (!interval_stated || (!labels_.intervals.empty() &&
                                     std::abs(step - labels_.intervals[0].interval_s) < 0.1 * step)) {
       roles_.time = 0;
       roles_.remarks.push_back(capital(described(labels_, 0)) +
-                               ", is taken for the time since it rises evenly; nothing in the file says so.");
+                               " is taken for the time since it rises evenly; nothing in the file says so.");
     }
   }
 
@@ -154,7 +152,7 @@ class RoleFinder {
   void drop_times() {
     if (!roles_.time) return;
     roles_.remarks.push_back("The times in " + described(labels_, *roles_.time) +
-                             " are not used, since the interval was given.");
+                             " are not used since the interval was given.");
     roles_.left_out.push_back(*roles_.time);
     roles_.left_out.insert(roles_.left_out.end(), roles_.other_times.begin(), roles_.other_times.end());
     roles_.other_times.clear();
@@ -169,16 +167,15 @@ class RoleFinder {
           std::string{is_count ? "column 1 counts up by one, which may be samples or seconds"
                                : "no column is named or rises like a time"} +
           ", and no line above states a sampling interval or rate; say the interval (--interval) or the "
-          "time column (--time)");
+          "time column (--time-column)");
     }
     const auto& first = labels_.intervals.front();
     for (const auto& other : labels_.intervals) {
       if (std::abs(other.interval_s - first.interval_s) <= 1e-3 * first.interval_s) continue;
       return refusal_at(file_name_, other.line, "", 0,
-                        "this line states a sampling interval of " +
-                            base::print_significant(other.interval_s, 6) + " s, but line " +
-                            text_of(first.line) + " one of " + base::print_significant(first.interval_s, 6) +
-                            " s; say which is right (--interval)");
+                        "this line states a sampling interval of " + short_number(other.interval_s) +
+                            " s, but line " + text_of(first.line) + " one of " +
+                            short_number(first.interval_s) + " s; say which is right (--interval)");
     }
     return {};
   }
@@ -189,7 +186,7 @@ class RoleFinder {
     if (label.written_unit.empty() || is_time_unit(label)) return {};
     const std::size_t line = labels_.unit_line != 0 ? labels_.unit_line : labels_.header_line;
     return refusal_at(file_name_, line, "", 0,
-                      "the time in " + described(labels_, *roles_.time) + ", has the unit " +
+                      "the time in " + described(labels_, *roles_.time) + " has the unit " +
                           shown(label.written_unit) + "; s, ms, \u00b5s or ns would be right");
   }
 

@@ -30,10 +30,6 @@ constexpr std::array kUnitWords = {
     UnitWord{"nanosecond", 1e-9, "s"},  UnitWord{"nanoseconds", 1e-9, "s"},
 };
 
-std::string text_of(std::size_t count) {
-  return base::print_integer(static_cast<std::int64_t>(count));
-}
-
 bool is_number(std::string_view text, char mark) {
   return read_field(text, mark).kind == FieldKind::kNumber;
 }

@@ -17,10 +17,6 @@ constexpr std::size_t kSureRun = 3;
 /// So far above the first such row another one is looked for, in case a broken row cut the data in two.
 constexpr std::size_t kReach = 2;
 
-std::string text_of(std::size_t count) {
-  return base::print_integer(static_cast<std::int64_t>(count));
-}
-
 /// One way to read the file, and how the head's lines look under it.
 struct Reading {
   char separator = ',';

@@ -16,10 +16,6 @@ constexpr std::size_t kBlockRows = 1024;
 constexpr std::size_t kRowsToCompare = 8;
 constexpr double kNan = std::numeric_limits<double>::quiet_NaN();
 
-std::string text_of(std::size_t count) {
-  return base::print_integer(static_cast<std::int64_t>(count));
-}
-
 /// Places behind the decimal mark, and whether an exponent follows.
 std::pair<std::size_t, bool> shape_of(std::string_view number, char mark) {
   const auto power = std::min(number.find_first_of("eE"), number.size());

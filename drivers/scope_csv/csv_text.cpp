@@ -157,14 +157,19 @@ base::Refusal refusal_at(std::string_view file_name, std::size_t line, std::stri
   for (std::size_t at = 0; at < std::min(offset, text.size()); ++column) {
     at += std::max<std::size_t>(utf8_length(text, at), 1);
   }
-  return {clean_text(file_name) + ":" + base::print_integer(static_cast<std::int64_t>(line)) + ":" +
-              base::print_integer(static_cast<std::int64_t>(column)),
-          std::move(reason)};
+  return {clean_text(file_name) + ":" + text_of(line) + ":" + text_of(column), std::move(reason)};
+}
+
+std::string short_number(double value) {
+  return base::print_number(base::parse_number(base::print_significant(value, 6)).value_or(value));
+}
+
+std::string text_of(std::size_t count) {
+  return base::print_integer(static_cast<std::int64_t>(count));
 }
 
 std::string counted(std::size_t count, std::string_view noun) {
-  return base::print_integer(static_cast<std::int64_t>(count)) + " " + std::string{noun} +
-         (count == 1 ? "" : "s");
+  return text_of(count) + " " + std::string{noun} + (count == 1 ? "" : "s");
 }
 
 }  // namespace loadstair::scope_csv

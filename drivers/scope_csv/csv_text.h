@@ -49,4 +49,10 @@ struct Field {
 /// A count in words of a message: "1 row", "3 rows".
 [[nodiscard]] std::string counted(std::size_t count, std::string_view noun);
 
+/// A number for a message: six digits at most, the shortest way.
+[[nodiscard]] std::string short_number(double value);
+
+/// A count as text.
+[[nodiscard]] std::string text_of(std::size_t count);
+
 }  // namespace loadstair::scope_csv

@@ -14,16 +14,13 @@
 #include "drivers/scope_csv/csv_layout.h"
 #include "drivers/scope_csv/csv_rows.h"
 #include "drivers/scope_csv/csv_text.h"
+#include "drivers/scope_csv/plain_twin.h"
 #include "drivers/scope_csv/time_axis.h"
 
 namespace loadstair::scope_csv {
 namespace {
 
 constexpr std::size_t kChunkBytes = 1024 * 1024;
-
-std::string text_of(std::size_t count) {
-  return base::print_integer(static_cast<std::int64_t>(count));
-}
 
 /// Division by 1000 is exact where multiplication by 0.001 is not.
 void apply_scale(std::vector<double>& values, double scale) {
@@ -39,8 +36,8 @@ void apply_scale(std::vector<double>& values, double scale) {
 /// One file on its way from head to samples.
 class FileReader {
  public:
-  FileReader(std::string file_name, const Options& options)
-      : file_name_{std::move(file_name)}, options_{options} {}
+  FileReader(std::string file_name, const Options& options, bool fast = true)
+      : file_name_{std::move(file_name)}, options_{options}, fast_{fast} {}
 
   /// Looks at the head. file_bytes: size of the whole file, to make room for its rows.
   base::Outcome<void> begin(std::string_view head, bool is_whole, std::size_t file_bytes) {
@@ -53,7 +50,7 @@ class FileReader {
     auto roles = find_roles(layout_, labels_, file_name_, options_);
     if (!roles) return roles.refusal();
     roles_ = std::move(*roles);
-    decoder_.emplace(layout_, file_name_, roles_.time);
+    decoder_.emplace(layout_, file_name_, roles_.time, fast_);
     const std::size_t rows_in_head = layout_.head.size() - layout_.data_line + 1;
     const std::size_t row_bytes =
         std::max<std::size_t>((head.size() - layout_.data_offset) / rows_in_head, 1);
@@ -133,9 +130,8 @@ class FileReader {
     for (const auto& stated : labels_.intervals) {
       if (std::abs(stated.interval_s - check.grid.interval_s) <= 1e-3 * stated.interval_s) continue;
       understood.remarks.push_back("Line " + text_of(stated.line) + " states a sampling interval of " +
-                                   base::print_significant(stated.interval_s, 6) + " s, the times say " +
-                                   base::print_significant(check.grid.interval_s, 6) +
-                                   " s; the times are used.");
+                                   short_number(stated.interval_s) + " s, the times say " +
+                                   short_number(check.grid.interval_s) + " s; the times are used.");
       break;
     }
     return {};
@@ -202,6 +198,7 @@ class FileReader {
 
   std::string file_name_;
   const Options& options_;
+  bool fast_;
   Layout layout_;
   Labels labels_;
   ColumnRoles roles_;
@@ -211,6 +208,16 @@ class FileReader {
 base::Refusal file_refusal(const std::filesystem::path& path, std::string_view tried, int error) {
   return {clean_text(path.string()),
           "cannot " + std::string{tried} + " the file: " + std::generic_category().message(error)};
+}
+
+base::Outcome<ScopeFile> read_bytes(std::string_view bytes, FileReader reader) {
+  const auto head = bytes.substr(0, kHeadBytes);
+  if (auto begun = reader.begin(head, head.size() == bytes.size(), bytes.size()); !begun)
+    return begun.refusal();
+  const auto rows = bytes.substr(reader.data_offset());
+  const auto taken = reader.take(rows);
+  if (!taken) return taken.refusal();
+  return reader.finish(rows.substr(*taken));
 }
 
 /// Fills `buffer` from `used` on; returns the bytes in it.
@@ -223,14 +230,12 @@ std::size_t fill(std::ifstream& stream, std::string& buffer, std::size_t used) {
 
 base::Outcome<ScopeFile> read_scope_csv(std::string_view bytes, std::string_view file_name,
                                         const Options& options) {
-  FileReader reader{std::string{file_name}, options};
-  const auto head = bytes.substr(0, kHeadBytes);
-  if (auto begun = reader.begin(head, head.size() == bytes.size(), bytes.size()); !begun)
-    return begun.refusal();
-  const auto rows = bytes.substr(reader.data_offset());
-  const auto taken = reader.take(rows);
-  if (!taken) return taken.refusal();
-  return reader.finish(rows.substr(*taken));
+  return read_bytes(bytes, FileReader{std::string{file_name}, options});
+}
+
+base::Outcome<ScopeFile> read_scope_csv_plainly(std::string_view bytes, std::string_view file_name,
+                                                const Options& options) {
+  return read_bytes(bytes, FileReader{std::string{file_name}, options, false});
 }
 
 base::Outcome<ScopeFile> read_scope_csv_file(const std::filesystem::path& path, const Options& options) {

@@ -8,15 +8,6 @@
 namespace loadstair::scope_csv {
 namespace {
 
-std::string text_of(std::size_t count) {
-  return base::print_integer(static_cast<std::int64_t>(count));
-}
-
-/// Six digits, the shortest way.
-std::string short_number(double value) {
-  return base::print_number(base::parse_number(base::print_significant(value, 6)).value_or(value));
-}
-
 std::string separator_sentence(const Understood& understood) {
   std::string text = "Text is UTF-8" +
                      std::string{understood.byte_order_mark ? " with a byte-order mark" : ""} +
@@ -67,8 +58,14 @@ std::string time_sentence(const Understood& understood, const Samples& samples) 
   if (!understood.time_unit_stated) text += " (the unit is not stated)";
   text += ", from " + short_number(samples.start_s) + " s on; the interval is " + interval + rate +
           ", from the first and the last time over " + counted(understood.rows - 1, "step") +
-          "; the times lie within " + short_number(understood.largest_deviation_s) +
-          " s of it, their last printed digit is " + short_number(understood.time_resolution_s) + " s.";
+          "; the times lie on it ";
+  const bool is_exact = understood.largest_deviation_s < 1e-3 * understood.time_resolution_s;
+  if (is_exact) {
+    text += "to their last printed digit, " + short_number(understood.time_resolution_s) + " s.";
+  } else {
+    text += "within " + short_number(understood.largest_deviation_s) + " s, their last printed digit is " +
+            short_number(understood.time_resolution_s) + " s.";
+  }
   return text;
 }
 
