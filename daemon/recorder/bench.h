@@ -37,9 +37,9 @@ struct ChannelNow {
 /// An instrument as it stands now.
 struct InstrumentNow {
   std::string name;
-  std::string link;      ///< "serial bench/shunt at 9600 baud"
-  std::string state;     ///< "connecting", "ready", "silent", "lost", "wrong identity", "watching folder"
-  bool ready = false;    ///< connected, its identity as declared (or none declared): may be commanded
+  std::string link;    ///< "serial bench/shunt at 9600 baud"
+  std::string state;   ///< "connecting", "ready", "resynchronising", "wrong identity", "watching folder", ...
+  bool ready = false;  ///< connected, its identity as declared (or none declared): may be commanded
   std::string identity;  ///< what it said; empty: has not been asked or says nothing
 };
 
@@ -72,7 +72,8 @@ struct BenchOptions {
   /// a job found is posted back to the executor.
   std::function<void(std::function<void()>)> background;
   std::int64_t folder_look_ns = 200'000'000;  ///< how often a scope's folder is looked at
-  std::size_t window_readings = 20000;        ///< kept per channel
+  double safe_limit_s = 5.0;            ///< for one control's safe state, with its repeats and reconnections
+  std::size_t window_readings = 20000;  ///< kept per channel
   std::size_t events_kept = 200;
 };
 
@@ -103,8 +104,9 @@ class Bench {
   [[nodiscard]] link::Clock& clock() const;
   [[nodiscard]] store::Writer& writer() const;
   [[nodiscard]] boost::asio::any_io_executor executor() const;
-  /// Runs a job as BenchOptions::background says.
-  void in_background(std::function<void()> job);
+  /// Runs `job` as BenchOptions::background says, then `done` on the executor. What leaves `job` becomes an
+  /// event.
+  void in_background(std::function<void()> job, std::function<void()> done);
 
   // --- what is
   [[nodiscard]] std::vector<ChannelNow> channels() const;
@@ -131,8 +133,9 @@ class Bench {
   void end_run();
   /// Captures and typed answers belong to this step from now on; -1: to none.
   void set_step(std::int32_t step);
-  /// Posts an event of the present run and tells the listeners.
-  void event(std::string kind, std::string source, std::string text);
+  /// Posts an event and tells the listeners. `run`: nullopt, the present one.
+  void event(std::string kind, std::string source, std::string text,
+             std::optional<store::RunId> run = std::nullopt);
   /// Takes in a typed value, so that the windows and the feed show it too. Nothing is posted.
   void show_typed(std::size_t channel, const Point& raw_point);
   /// Takes in a scope's file as if it had appeared in the folder; parsed in the background, then posted to

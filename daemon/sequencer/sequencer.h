@@ -112,8 +112,6 @@ struct SequencerOptions {
   std::function<void(const std::string& step_label)> request_capture;
   double capture_limit_s = 20.0;  ///< after this the step goes on without its capture
   double ready_limit_s = 15.0;    ///< for the instruments to be there before a start
-  double safe_limit_s = 5.0;      ///< for one control's safe state, with its repeats
-  std::int32_t safe_attempts = 3;
 };
 
 /// Lives on the bench's executor, one thread, no locks. The bench outlives it.

@@ -1,0 +1,152 @@
+#include "daemon/sequencer/guard_watch.h"
+
+#include <algorithm>
+#include <cmath>
+
+#include "analysis/base/number.h"
+#include "daemon/sequencer/ticks.h"
+#include "drivers/instrument/reading.h"
+
+namespace loadstair::sequencer {
+
+std::string_view name_of(GuardDemand demand) {
+  switch (demand) {
+    case GuardDemand::stop:
+      return "stop";
+    case GuardDemand::hold:
+      return "hold";
+    case GuardDemand::next:
+      return "next";
+  }
+  return "stop";
+}
+
+namespace {
+
+GuardDemand demand_of(setup::GuardAction action) {
+  switch (action) {
+    case setup::GuardAction::stop:
+      return GuardDemand::stop;
+    case setup::GuardAction::hold:
+      return GuardDemand::hold;
+    case setup::GuardAction::next:
+      return GuardDemand::next;
+  }
+  return GuardDemand::stop;
+}
+
+/// nullopt: a missing reading alone is ignored.
+std::optional<GuardDemand> demand_of(setup::MissingAction action) {
+  switch (action) {
+    case setup::MissingAction::ignore:
+      return std::nullopt;
+    case setup::MissingAction::stop:
+      return GuardDemand::stop;
+    case setup::MissingAction::hold:
+      return GuardDemand::hold;
+    case setup::MissingAction::next:
+      return GuardDemand::next;
+  }
+  return GuardDemand::stop;
+}
+
+}  // namespace
+
+GuardWatch::GuardWatch(setup::Guard guard, std::string unit, double period_s)
+    : guard_{std::move(guard)},
+      unit_{std::move(unit)},
+      missing_after_ns_{ticks_of(guard_.missing_after_s > 0.0 ? guard_.missing_after_s : 3.0 * period_s)} {}
+
+void GuardWatch::arm(std::int64_t now_ns) {
+  armed_ = true;
+  tripped_ = false;
+  beyond_since_ns_.reset();
+  seen_ = false;
+  last_ns_ = now_ns;
+}
+
+void GuardWatch::disarm() {
+  armed_ = false;
+}
+
+void GuardWatch::blank(std::int64_t now_ns) {
+  blank_until_ns_ = now_ns + ticks_of(guard_.blanking_s);
+  beyond_since_ns_.reset();
+}
+
+bool GuardWatch::beyond(double value) const {
+  return (guard_.above && value > *guard_.above) || (guard_.below && value < *guard_.below);
+}
+
+void GuardWatch::see(const recorder::Point& point) {
+  if ((point.flags & instrument::kUnusable) != 0U || !std::isfinite(point.value)) return;
+  seen_ = true;
+  last_ns_ = std::max(last_ns_, point.arrived_ns);
+  last_value_ = point.value;
+  if (!beyond(point.value) || point.t_ns < blank_until_ns_) {
+    beyond_since_ns_.reset();
+    return;
+  }
+  if (!beyond_since_ns_) beyond_since_ns_ = point.t_ns;
+  beyond_last_ns_ = point.t_ns;
+}
+
+bool GuardWatch::missing(std::int64_t now_ns) const {
+  return now_ns - last_ns_ > missing_after_ns_;
+}
+
+std::string GuardWatch::limit_text() const {
+  if (guard_.above && last_value_ > *guard_.above) {
+    return "above " + base::print_significant(*guard_.above, 6) + " " + unit_;
+  }
+  return "below " + base::print_significant(guard_.below.value_or(0.0), 6) + " " + unit_;
+}
+
+std::optional<GuardWatch::Cause> GuardWatch::check(std::int64_t now_ns) {
+  if (!armed_ || tripped_) return std::nullopt;
+  const auto debounce_ns = ticks_of(guard_.debounce_s);
+  if (beyond_since_ns_) {
+    const bool long_enough = beyond_last_ns_ - *beyond_since_ns_ >= debounce_ns;
+    const bool silent_beyond =
+        missing(now_ns) && now_ns - *beyond_since_ns_ >= std::max(debounce_ns, missing_after_ns_);
+    if (long_enough || silent_beyond) {
+      tripped_ = true;
+      std::string text = guard_.channel + " is " + base::print_significant(last_value_, 6) + " " + unit_ +
+                         ", " + limit_text();
+      if (debounce_ns > 0) text += " for " + base::print_significant(guard_.debounce_s, 3) + " s";
+      if (!long_enough) text += ", and silent since";
+      return Cause{demand_of(guard_.action), text};
+    }
+  }
+  if (!missing(now_ns)) return std::nullopt;
+  const auto demand = demand_of(guard_.missing);
+  if (!demand) return std::nullopt;
+  tripped_ = true;
+  return Cause{*demand, "no usable reading of " + guard_.channel + " for " +
+                            base::print_fixed(seconds_of(now_ns - last_ns_), 2) +
+                            " s; check the meter, its range and its link"};
+}
+
+GuardWatch::Standing GuardWatch::standing(std::int64_t now_ns) const {
+  if (!armed_) return Standing::off;
+  if (tripped_) return Standing::tripped;
+  if (missing(now_ns)) return Standing::missing;
+  if (now_ns < blank_until_ns_) return Standing::blanked;
+  return beyond_since_ns_ ? Standing::beyond : Standing::watching;
+}
+
+std::optional<double> GuardWatch::value(std::int64_t now_ns) const {
+  if (!seen_ || missing(now_ns)) return std::nullopt;
+  return last_value_;
+}
+
+std::optional<double> GuardWatch::margin(std::int64_t now_ns) const {
+  const auto present = value(now_ns);
+  if (!present || (!guard_.above && !guard_.below)) return std::nullopt;
+  double nearest = INFINITY;
+  if (guard_.above) nearest = std::min(nearest, *guard_.above - *present);
+  if (guard_.below) nearest = std::min(nearest, *present - *guard_.below);
+  return nearest;
+}
+
+}  // namespace loadstair::sequencer

@@ -1,0 +1,417 @@
+// The stair, phase by phase.
+#include <algorithm>
+#include <exception>
+#include <utility>
+
+#include "analysis/base/number.h"
+#include "daemon/sequencer/state.h"
+
+namespace loadstair::sequencer {
+namespace {
+
+using boost::asio::awaitable;
+
+constexpr std::int64_t kSettleLook = 250'000'000;
+constexpr std::int64_t kReadyLook = 50'000'000;
+
+/// The order in which a bench is switched on: what feeds first.
+int switch_on_rank(const std::string& role) {
+  if (role == "source") return 0;
+  if (role == "converter") return 1;
+  return 2;
+}
+
+/// Counts a command of the run as under way for as long as it is.
+class Commanding {
+ public:
+  explicit Commanding(int& count) : count_{count} { ++count_; }
+  ~Commanding() { --count_; }
+  Commanding(const Commanding&) = delete;
+  Commanding& operator=(const Commanding&) = delete;
+
+ private:
+  int& count_;
+};
+
+/// The usable readings of a channel from an instant on, in s of that instant.
+struct Trace {
+  std::vector<double> time_s, value;
+  [[nodiscard]] series::TimeSeries view() const { return {time_s, value}; }
+};
+
+Trace trace_of(const recorder::Bench& bench, const std::string& channel, std::int64_t from_ns,
+               std::int64_t origin_ns) {
+  Trace trace;
+  const auto place = bench.find_channel(channel);
+  if (!place) return trace;
+  const auto& window = bench.window(*place);
+  const auto times = window.t_ns();
+  const auto values = window.value();
+  for (std::size_t i = window.first_from(from_ns); i < window.size(); ++i) {
+    if (!std::isfinite(values[i])) continue;
+    const double t_s = seconds_of(times[i] - origin_ns);
+    if (!trace.time_s.empty() && t_s <= trace.time_s.back()) continue;
+    trace.time_s.push_back(t_s);
+    trace.value.push_back(values[i]);
+  }
+  return trace;
+}
+
+std::string ambient_of(const setup::Hookup& hookup, const std::string& channel) {
+  for (const auto& point : hookup.temperatures) {
+    if (point.channel == channel) return point.ambient_channel;
+  }
+  return {};
+}
+
+store::StepState state_of(Go how) {
+  switch (how) {
+    case Go::next:
+      return store::StepState::skipped;
+    case Go::stop:
+      return store::StepState::stopped;
+    default:
+      return store::StepState::done;
+  }
+}
+
+}  // namespace
+
+void Sequencer::State::enter(StepPhase new_phase, std::string what, std::optional<std::int64_t> until) {
+  step_phase = new_phase;
+  waits_for = std::move(what);
+  until_ns = until;
+  changed();
+}
+
+void Sequencer::State::post_step(store::StepState state) {
+  step.state = state;
+  bench.writer().post(step);
+}
+
+awaitable<Go> Sequencer::State::wait_for(std::function<bool()> condition, std::int64_t deadline_ns) {
+  while (true) {
+    if (stop_demand) co_return Go::stop;
+    if (skip_demand) co_return Go::next;
+    if (hold_demand) co_return co_await hold();
+    if (condition && condition()) co_return Go::on;
+    if (clock.now_ns() >= deadline_ns) co_return Go::on;
+    co_await wake.wait_until(deadline_ns);
+  }
+}
+
+awaitable<Go> Sequencer::State::wait_until(std::int64_t deadline_ns) {
+  return wait_for({}, deadline_ns);
+}
+
+awaitable<Go> Sequencer::State::hold() {
+  phase = RunPhase::holding;
+  reason = hold_demand.value_or("");
+  prompt.reset();
+  enter(StepPhase::hold,
+        "held, and the power stays on: " + reason + ". Resume, go to the next step, or stop.");
+  event("hold", "sequencer", "the run is held, the power stays on: " + reason);
+  while (!stop_demand && !skip_demand && !resume_demand) co_await wake.wait_until(INT64_MAX);
+  hold_demand.reset();
+  if (stop_demand) co_return Go::stop;
+  phase = RunPhase::running;
+  reason.clear();
+  rearm_tripped();
+  if (skip_demand) co_return Go::next;
+  resume_demand = false;
+  event("resume", "sequencer", "resumed; the step begins again with its soak");
+  co_return Go::again;
+}
+
+awaitable<void> Sequencer::State::run_stair() {
+  const auto self = shared_from_this();
+  Go how = Go::stop;
+  std::string broke;
+  try {
+    how = co_await all_steps();
+  } catch (const std::exception& error) {
+    broke = error.what();
+  } catch (...) {
+    broke = "an exception of an unknown kind";
+  }
+  if (!broke.empty()) {
+    event("broken", "sequencer", "the run was ended by a fault of the program: " + broke);
+    stop_now("a fault of the program: " + broke);
+  }
+  if (step_index >= 0 && !step.ended_ns) end_step(Go::stop);
+  co_await finish(how == Go::stop ? store::RunState::stopped : store::RunState::done);
+}
+
+awaitable<Go> Sequencer::State::all_steps() {
+  if (const auto go = co_await prepare(); go != Go::on) co_return Go::stop;
+  for (std::int32_t index = 0; index < static_cast<std::int32_t>(stair.steps.size()); ++index) {
+    const auto go = co_await run_step(index);
+    end_step(go);
+    if (go == Go::stop) co_return Go::stop;
+  }
+  co_return Go::on;
+}
+
+awaitable<Go> Sequencer::State::wait_for_instruments() {
+  const auto& hookup = bench.hookup();
+  const auto deadline = clock.now_ns() + ticks_of(options.ready_limit_s);
+  while (true) {
+    std::string missing;
+    for (const auto& now : bench.instruments()) {
+      const auto* declared = hookup.find_instrument(now.name);
+      if (declared == nullptr || declared->link.kind == setup::LinkKind::folder || now.ready) continue;
+      missing += (missing.empty() ? "" : ", ") + now.name + " (" + now.state + ")";
+    }
+    if (missing.empty()) co_return Go::on;
+    if (clock.now_ns() >= deadline) {
+      stop_now("not ready: " + missing + "; check power, cable and the hook-up file, then start again");
+      co_return Go::stop;
+    }
+    enter(StepPhase::start, "waits for " + missing, deadline);
+    const auto go = co_await wait_until(std::min(deadline, clock.now_ns() + kReadyLook));
+    if (go != Go::on) co_return go;
+  }
+}
+
+/// Everything that comes before the first step: instruments there, settings set and read back, then power.
+awaitable<Go> Sequencer::State::prepare() {
+  if (const auto go = co_await wait_for_instruments(); go != Go::on) co_return go;
+  std::vector<setup::SetPoint> points;
+  for (const auto& control : bench.hookup().controls) {
+    for (const auto& [setting, value] : control.at_start) points.push_back({control.name, setting, value});
+  }
+  // A load that still holds the last run's set point would be switched on with it.
+  const auto& first = stair.steps.front().set;
+  points.insert(points.end(), first.begin(), first.end());
+  enter(StepPhase::start, "sets and reads back what is to hold before the power comes on");
+  if (const auto go = co_await apply_all(points); go != Go::on) co_return go;
+
+  auto controls = bench.hookup().controls;
+  std::stable_sort(controls.begin(), controls.end(), [](const auto& a, const auto& b) {
+    return switch_on_rank(a.role) < switch_on_rank(b.role);
+  });
+  for (const auto& control : controls) {
+    if (stop_demand) co_return Go::stop;
+    enter(StepPhase::start, "switches on: " + control.name);
+    energised = true;
+    base::Outcome<void> outcome;
+    {
+      const Commanding under_way{commanding};
+      outcome = co_await bench.switch_on(control.name);
+    }
+    if (stop_demand) co_return Go::stop;
+    if (!outcome) {
+      event("command_refused", control.name, outcome.refusal().text());
+      stop_now("cannot switch on " + control.name + ": " + outcome.refusal().text());
+      co_return Go::stop;
+    }
+  }
+  arm_guards();
+  co_return Go::on;
+}
+
+awaitable<Go> Sequencer::State::apply_all(const std::vector<setup::SetPoint>& points) {
+  for (const auto& point : points) {
+    if (const auto go = co_await wait_until(0); go != Go::on) co_return go;
+    blank_guards();
+    base::Outcome<std::optional<double>> outcome{std::optional<double>{}};
+    {
+      const Commanding under_way{commanding};
+      outcome = co_await bench.apply(point.control, point.setting, point.value);
+    }
+    blank_guards();
+    store::SettingItem item;
+    item.run = run;
+    item.step = step_index;
+    item.control = point.control;
+    item.setting = point.setting;
+    item.value = point.value;
+    if (outcome) item.read_back = *outcome;
+    item.t_ns = clock.now_ns();
+    bench.writer().post(item);
+    if (stop_demand) co_return Go::stop;
+    if (!outcome) {
+      event("command_refused", point.control, outcome.refusal().text());
+      stop_now("cannot set " + point.control + " " + point.setting + ": " + outcome.refusal().text());
+      co_return Go::stop;
+    }
+  }
+  co_return Go::on;
+}
+
+awaitable<Go> Sequencer::State::run_step(std::int32_t index) {
+  const auto& plan = stair.steps[static_cast<std::size_t>(index)];
+  step_index = index;
+  step = {};
+  step.run = run;
+  step.step = index;
+  step.begun_ns = clock.now_ns();
+  typed.clear();
+  doubted.clear();
+  bench.set_step(index);
+  rearm_tripped();
+  post_step(store::StepState::waiting);
+  Go go = Go::again;
+  while (go == Go::again) {
+    enter(StepPhase::apply, "sets and reads back the step's set points");
+    go = co_await apply_all(plan.set);
+    if (go == Go::on) {
+      applied_ns = clock.now_ns();
+      go = co_await hand_prompt(plan);
+    }
+  }
+  if (go != Go::on) co_return go;
+  do {
+    go = co_await measure(plan);
+  } while (go == Go::again);
+  co_return go;
+}
+
+/// From the soak to the capture; begins again after a hold, with windows of its own.
+awaitable<Go> Sequencer::State::measure(const setup::Step& plan) {
+  step.soak_begin_ns.reset();
+  step.settle_begin_ns.reset();
+  step.average_begin_ns.reset();
+  step.average_end_ns.reset();
+  step.settled_ns.reset();
+  step.settled_how.clear();
+  if (const auto go = co_await soak(plan); go != Go::on) co_return go;
+  if (const auto go = co_await settle(plan); go != Go::on) co_return go;
+  if (const auto go = co_await average(plan); go != Go::on) co_return go;
+  co_return co_await capture(plan);
+}
+
+awaitable<Go> Sequencer::State::soak(const setup::Step& plan) {
+  const auto begin = clock.now_ns();
+  step.soak_begin_ns = begin;
+  post_step(store::StepState::soaking);
+  const auto end = begin + ticks_of(plan.soak_s);
+  enter(StepPhase::soak, "soaks", end);
+  co_return co_await wait_until(end);
+}
+
+awaitable<evaluation::WindowState> Sequencer::State::settling_now(const setup::Step& plan) {
+  struct Work {
+    setup::Step plan;
+    Trace electrical, thermal, ambient;
+    double floor = 0.0;
+    bool last = false;
+    evaluation::WindowState found;
+    bool finished = false;  ///< set and read on the executor
+  };
+  const auto work = std::make_shared<Work>();
+  work->plan = plan;
+  work->last = step_index + 1 == static_cast<std::int32_t>(stair.steps.size());
+  if (plan.electrical) {
+    const auto from = std::max(applied_ns, clock.now_ns() - ticks_of(2.0 * plan.electrical->window_s));
+    work->electrical = trace_of(bench, plan.electrical->channel, from, applied_ns);
+    if (const auto place = bench.find_channel(plan.electrical->channel)) {
+      work->floor = evaluation::electrical_floor(bench.hookup().channels[*place]);
+    }
+  }
+  if (plan.thermal) {
+    work->thermal = trace_of(bench, plan.thermal->channel, applied_ns, applied_ns);
+    const auto ambient = ambient_of(bench.hookup(), plan.thermal->channel);
+    if (!ambient.empty()) work->ambient = trace_of(bench, ambient, applied_ns, applied_ns);
+  }
+  const auto done = std::make_shared<link::Notice>(clock, bench.executor());
+  bench.in_background(
+      [work] {
+        const evaluation::LiveTraces traces{work->electrical.view(), work->thermal.view(),
+                                            work->ambient.view(), work->floor};
+        work->found = evaluation::live_window(work->plan, traces, work->last);
+      },
+      [work, done] {
+        work->finished = true;
+        done->notify();
+      });
+  while (!work->finished) co_await done->wait_until(INT64_MAX);
+  co_return work->found;
+}
+
+awaitable<Go> Sequencer::State::settle(const setup::Step& plan) {
+  const auto begin = clock.now_ns();
+  step.settle_begin_ns = begin;
+  post_step(store::StepState::settling);
+  if (!plan.electrical && !plan.thermal) {
+    step.settled_how = "no criterion";
+    co_return Go::on;
+  }
+  const auto limit = plan.settle_limit_s > 0.0 ? begin + ticks_of(plan.settle_limit_s) : INT64_MAX;
+  enter(StepPhase::settle, "waits until it is settled");
+  while (true) {
+    const auto found = co_await settling_now(plan);
+    const auto now = clock.now_ns();
+    if (found.settled) {
+      step.settled_how = found.by;
+      step.settled_ns = now;
+      co_return co_await wait_until(0);
+    }
+    if (now >= limit) {
+      step.settled_how = "not settled";
+      event("not settled", stair.steps[static_cast<std::size_t>(step_index)].label,
+            "not settled within " + base::print_significant(plan.settle_limit_s, 4) + " s: " + found.text);
+      co_return co_await wait_until(0);
+    }
+    auto until = found.remaining_s ? std::optional{now + ticks_of(*found.remaining_s)} : std::nullopt;
+    if (limit != INT64_MAX) until = std::min(until.value_or(limit), limit);
+    enter(StepPhase::settle, found.text, until);
+    if (const auto go = co_await wait_until(std::min(limit, now + kSettleLook)); go != Go::on) co_return go;
+  }
+}
+
+awaitable<Go> Sequencer::State::average(const setup::Step& plan) {
+  const auto begin = clock.now_ns();
+  step.average_begin_ns = begin;
+  post_step(store::StepState::averaging);
+  const auto least = ticks_of(plan.average_s);
+  enter(StepPhase::average, "averages", begin + least);
+  auto go = Go::on;
+  if (!typed_channels().empty()) go = co_await typed_rounds(begin, least);
+  if (go == Go::on) {
+    enter(StepPhase::average, "averages", begin + least);
+    go = co_await wait_until(begin + least);
+  }
+  if (go == Go::on) step.average_end_ns = clock.now_ns();
+  co_return go;
+}
+
+awaitable<Go> Sequencer::State::capture(const setup::Step& plan) {
+  if (!plan.capture) co_return Go::on;
+  post_step(store::StepState::capturing);
+  if (bench.hookup().captures.empty()) {
+    event("capture missing", plan.label,
+          "the step wants a capture, but the hook-up file declares no capture source");
+    co_return Go::on;
+  }
+  const auto had = bench.captures_of_step(step_index);
+  const auto deadline = clock.now_ns() + ticks_of(options.capture_limit_s);
+  enter(StepPhase::capture,
+        options.request_capture ? "waits for the scope's file" : "waits for a capture: save one on the scope",
+        deadline);
+  if (options.request_capture) options.request_capture(plan.label);
+  const auto go =
+      co_await wait_for([this, had] { return bench.captures_of_step(step_index) > had; }, deadline);
+  if (go == Go::on && bench.captures_of_step(step_index) == had) {
+    event("capture missing", plan.label,
+          "no capture came within " + base::print_significant(options.capture_limit_s, 4) +
+              " s; the step has none. One can be added later from its file.");
+  }
+  co_return go;
+}
+
+void Sequencer::State::end_step(Go how) {
+  if (step.ended_ns) return;
+  step.ended_ns = clock.now_ns();
+  if (how == Go::next) step.reason = skip_demand.value_or("");
+  if (how == Go::stop) step.reason = stop_demand.value_or("");
+  if (how == Go::next) event("skipped", stair.steps[static_cast<std::size_t>(step_index)].label, step.reason);
+  post_step(state_of(how));
+  skip_demand.reset();
+  hold_demand.reset();
+  resume_demand = false;
+  prompt.reset();
+  changed();
+}
+
+}  // namespace loadstair::sequencer

@@ -1,0 +1,75 @@
+// What is watched while a run goes on: the guards, and whether the record can be written.
+#include <utility>
+
+#include "analysis/base/number.h"
+#include "daemon/sequencer/state.h"
+
+namespace loadstair::sequencer {
+
+boost::asio::awaitable<void> Sequencer::State::watch() {
+  const auto self = shared_from_this();
+  const auto mine = run;
+  while (run_task && run == mine) {
+    check_guards();
+    if (!stop_demand && phase != RunPhase::making_safe) {
+      if (const auto health = bench.writer().health(); health.failure) {
+        stop_now("the record cannot be written: " + health.failure->text);
+      }
+    }
+    co_await clock.sleep_for(std::chrono::milliseconds{100});
+  }
+}
+
+void Sequencer::State::arm_guards() {
+  const auto now = clock.now_ns();
+  for (auto& guarded : guards) {
+    guarded.watch.arm(now);
+    guarded.watch.blank(now);
+  }
+}
+
+void Sequencer::State::rearm_tripped() {
+  const auto now = clock.now_ns();
+  for (auto& guarded : guards) {
+    if (guarded.watch.standing(now) == GuardWatch::Standing::tripped) guarded.watch.arm(now);
+  }
+}
+
+void Sequencer::State::disarm_guards() {
+  for (auto& guarded : guards) guarded.watch.disarm();
+}
+
+void Sequencer::State::blank_guards() {
+  const auto now = clock.now_ns();
+  for (auto& guarded : guards) guarded.watch.blank(now);
+}
+
+void Sequencer::State::check_guards() {
+  if (!run_task || stop_demand || phase == RunPhase::making_safe) return;
+  for (auto& guarded : guards) {
+    if (const auto cause = guarded.watch.check(clock.now_ns())) trip(guarded.watch, *cause);
+    if (stop_demand) return;
+  }
+}
+
+void Sequencer::State::trip(const GuardWatch& guard, const GuardWatch::Cause& cause) {
+  const auto& name = guard.guard().name;
+  trips.push_back({clock.now_ns(), name, cause.text, std::string{name_of(cause.demand)}});
+  const auto why = "guard \"" + name + "\": " + cause.text;
+  switch (cause.demand) {
+    case GuardDemand::stop:
+      stop_now(why);
+      break;
+    case GuardDemand::hold:
+      if (!hold_demand) hold_demand = why;
+      break;
+    case GuardDemand::next:
+      if (!skip_demand) skip_demand = why;
+      break;
+  }
+  // After the demand: the safe state does not wait for the words.
+  event("guard", name, cause.text + "; action: " + std::string{name_of(cause.demand)});
+  wake.notify();
+}
+
+}  // namespace loadstair::sequencer
