@@ -2,6 +2,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <limits>
 
 #include "analysis/series/correlation.h"
 #include "analysis/series/line.h"
@@ -18,6 +19,21 @@ double greatest_magnitude(std::span<const double> value) {
   double out = 0;
   for (const double v : value) out = std::max(out, std::abs(v));
   return out;
+}
+
+/// Residuals of readings that are all alike, or lie on a line, are what double precision leaves; their
+/// pattern is no correlation.
+bool only_rounding(std::span<const double> residual, std::span<const double> value) {
+  return greatest_magnitude(residual) <=
+         16 * std::numeric_limits<double>::epsilon() * greatest_magnitude(value);
+}
+
+/// What the slope does beyond its own noise.
+double drift_of(const SteadyWindow& window) {
+  const double resolved =
+      window.slope_per_s * window.slope_per_s - window.slope_u_per_s * window.slope_u_per_s;
+  if (!(resolved > 0)) return 0;
+  return std::copysign(std::sqrt(resolved), window.slope_per_s) * window.duration_s / std::sqrt(12.0);
 }
 
 void judge_without_line(const TimeSeries& data, SteadyWindow& window) {
@@ -53,12 +69,13 @@ base::Outcome<SteadyWindow> steady_window(const TimeSeries& data, const SteadyWi
   const double count = static_cast<double>(line.count);
   window.value = line.at_middle;
   window.slope_per_s = line.slope_per_s;
-  window.drift_u = line.slope_per_s * line.duration_s / std::sqrt(12.0);
   window.deviation = line.residual_deviation;
   window.residual = residuals(data, line);
 
   const double interval_s = line.duration_s / (count - 1);
-  const Correlation found = integrated_correlation(window.residual);
+  const Correlation found = only_rounding(window.residual, data.value)
+                                ? Correlation{1, count, 0}
+                                : integrated_correlation(window.residual);
   window.correlation_time_s = std::max({found.inefficiency * interval_s, settings.declared_correlation_s,
                                         settings.stretch_correlation_s.value_or(0)});
   window.effective_count = found.effective_count;
@@ -67,6 +84,7 @@ base::Outcome<SteadyWindow> steady_window(const TimeSeries& data, const SteadyWi
         std::clamp(count * interval_s / window.correlation_time_s, 1.0, found.effective_count);
   }
   window.slope_u_per_s = line.slope_u_per_s * std::sqrt(count / window.effective_count);
+  window.drift_u = drift_of(window);
 
   if (line.count < kLeastReadings || window.effective_count < kLeastCorrelationTimes) {
     window.too_short = true;

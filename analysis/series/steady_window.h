@@ -29,8 +29,10 @@ struct SteadyWindow {
   double duration_s = 0;
   double value = 0;  ///< of the fitted line at mid-window
   double slope_per_s = 0;
-  double slope_u_per_s = 0;       ///< for the correlation found
-  double drift_u = 0;             ///< signed: slope * duration / sqrt(12)
+  double slope_u_per_s = 0;  ///< for the correlation found
+  /// Signed as the slope: sqrt(slope^2 - u(slope)^2) * duration / sqrt(12), zero for a slope within its own
+  /// uncertainty: that much slope is what noise gives, and noise is counted in u.
+  double drift_u = 0;
   double deviation = 0;           ///< standard deviation of the residuals about the line
   double correlation_time_s = 0;  ///< g * mean interval, at least the declared one
   double effective_count = 0;     ///< N_eff within [1, N]
