@@ -14,13 +14,14 @@ enum class Quality {
   good,
   overload,      ///< the instrument said so, in its own words or by a special number
   invalid,       ///< no number could be read
+  not_a_number,  ///< the instrument said that it has none (9.91E37)
   unit_changed,  ///< a number, but in another unit than the one expected
 };
 
 /// One number as the instrument said it.
 struct Field {
   Quality quality = Quality::invalid;
-  double value = 0.0;  ///< in the base unit of what was said ("12 mV" is 0.012); 0 for overload and invalid
+  double value = 0.0;  ///< in the base unit of what was said ("12 mV" is 0.012); 0 where there is no number
   std::string unit;    ///< base unit that was said or, where none was, expected
   std::string why;     ///< for a person, where the quality is not good
 

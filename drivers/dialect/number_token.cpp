@@ -48,7 +48,7 @@ bool is_scpi_not_a_number(double value) {
 }
 
 Quality judge(double value, const NumberRules& rules) {
-  if (is_scpi_not_a_number(value)) return Quality::invalid;
+  if (is_scpi_not_a_number(value)) return Quality::not_a_number;
   return std::abs(value) >= rules.overload_at ? Quality::overload : Quality::good;
 }
 
@@ -94,8 +94,12 @@ Field make_field(const NumberToken& token, std::string_view written_unit, std::s
     field.why = "overload";
     return field;
   }
+  if (token.quality == Quality::not_a_number) {
+    field.why = "not a number, says the instrument";
+    return field;
+  }
   if (token.quality == Quality::invalid) {
-    field.why = "not a number, in the instrument's own words";
+    field.why = "a number beyond all bounds";
     return field;
   }
   if (!written) {

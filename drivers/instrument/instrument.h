@@ -102,7 +102,7 @@ class Instrument {
 
  private:
   class Impl;
-  std::unique_ptr<Impl> impl_;
+  std::shared_ptr<Impl> impl_;  ///< coroutines that were never finished hold it too
 };
 
 }  // namespace loadstair::instrument

@@ -72,7 +72,7 @@ TEST_CASE("SCPI-1999: infinities and not-a-number are never values, their neighb
   for (const auto& row : special.at("examples")) {
     INFO(row);
     const auto meaning = row.at("meaning").get<std::string>();
-    const auto wanted = meaning.starts_with("not a number") ? Quality::invalid
+    const auto wanted = meaning.starts_with("not a number") ? Quality::not_a_number
                         : meaning == "an ordinary number"   ? Quality::good
                                                             : Quality::overload;
     const auto field = read(row.at("text"));
@@ -83,7 +83,7 @@ TEST_CASE("SCPI-1999: infinities and not-a-number are never values, their neighb
   CHECK(checked == 5);
   // The binary32 neighbours named in the rule, printed by an instrument that computes in single precision.
   CHECK(read_field("9.900000302096328e+37", "V", {}).quality == Quality::overload);
-  CHECK(read_field("9.909999530030929e+37", "V", {}).quality == Quality::invalid);
+  CHECK(read_field("9.909999530030929e+37", "V", {}).quality == Quality::not_a_number);
 }
 
 TEST_CASE("IEEE 488.2: identification has four fields; 0 means not known") {
