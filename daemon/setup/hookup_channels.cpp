@@ -119,11 +119,13 @@ std::string_view meter_unit_wanted(const Channel& channel) {
 void check_conversion(ObjectReader& reader, const Channel& channel, std::string_view meter_unit) {
   if (channel.conversion.shunt && channel.quantity != Quantity::current) {
     reader.complain("conversion", "a shunt turns a voltage into a current, but \"quantity\" is " +
-                                      std::string{name_of(channel.quantity)});
+                                      std::string{name_of(channel.quantity)} +
+                                      "; write current, or remove the shunt");
   }
   if (channel.conversion.thermocouple && channel.quantity != Quantity::temperature) {
     reader.complain("conversion", "a thermocouple gives a temperature, but \"quantity\" is " +
-                                      std::string{name_of(channel.quantity)});
+                                      std::string{name_of(channel.quantity)} +
+                                      "; write temperature, or remove the thermocouple");
   }
   if (channel.typed) return;
   const std::string_view wanted = meter_unit_wanted(channel);
@@ -145,7 +147,8 @@ void check_response(ObjectReader& reader, Channel& channel) {
   if (power != (channel.response == Response::wattmeter) &&
       (power || channel.quantity == Quantity::voltage || channel.quantity == Quantity::current)) {
     reader.complain("response", power ? "a power is read by a wattmeter: write \"response\": \"wattmeter\""
-                                      : "only a power has the response \"wattmeter\"");
+                                      : "only a power has the response wattmeter; write dc, true-rms-ac, "
+                                        "true-rms-ac-dc or average-responding");
   }
 }
 
@@ -207,7 +210,8 @@ void read_channel(ObjectReader& reader, Hookup& hookup) {
   if (reader.problem().found()) return;
   if (channel.unit != unit_of(channel.quantity)) {
     reader.complain("unit", "a " + std::string{name_of(channel.quantity)} + " has the unit " +
-                                std::string{unit_of(channel.quantity)} + ", not " + channel.unit);
+                                std::string{unit_of(channel.quantity)} + ", not " + channel.unit +
+                                "; correct \"unit\" or \"quantity\"");
   }
   check_response(reader, channel);
   channel.conversion = read_conversion(reader);
@@ -219,7 +223,8 @@ void read_channel(ObjectReader& reader, Hookup& hookup) {
   channel.high = reader.maybe_number("high", document::kAnyNumber);
   if (reader.problem().found()) return;
   if (channel.low && channel.high && *channel.low >= *channel.high) {
-    reader.complain("low", "\"low\" is not below \"high\"; no value could be plausible");
+    reader.complain("low",
+                    "\"low\" is not below \"high\", so no value would be plausible; the two may be swapped");
   }
   check_conversion(reader, channel, meter_unit_of(hookup, channel));
   check_other_channels(reader, hookup, channel);

@@ -39,7 +39,7 @@ std::string read_channel_of(ObjectReader& reader, const Hookup& hookup, const Po
   if (channel->quantity != wanted) {
     reader.complain(key, "the channel " + print_text(name) + " is a " +
                              std::string{name_of(channel->quantity)} + ", but " + print_text(key) +
-                             " takes a " + std::string{name_of(wanted)});
+                             " takes a " + std::string{name_of(wanted)} + "; name another channel");
   }
   check_response(reader, key, *channel, port.kind);
   return name;

@@ -57,14 +57,19 @@ void read_query(ObjectReader& reader, Profile& profile) {
   (void)reader.required("values", Type::list, "\"values\": [\"voltage\"]");
   query.values = reader.texts_or_empty("values");
   const auto known = names_of(profile.values);
-  for (const std::string& name : query.values) {
-    if (!name.empty()) require_known(reader, "values", "value", name, known);
+  for (std::size_t i = 0; i < query.values.size() && !reader.problem().found(); ++i) {
+    const std::string& name = query.values[i];
+    if (name.empty()) continue;
+    const document::Place place = reader.find("values")->items[i].place;
+    if (!contains(known, name)) {
+      reader.problem().report(place,
+                              "there is no value " + print_text(name) + document::suggest(name, known));
+    }
     for (const ProfileQuery& other : profile.queries) {
-      if (name.empty() || std::find(other.values.begin(), other.values.end(), name) == other.values.end())
-        continue;
-      reader.complain("values", "the value " + print_text(name) + " is asked twice, by " +
-                                    print_text(other.text) +
-                                    " too; leave one of them out, or skip the field with \"\"");
+      if (std::find(other.values.begin(), other.values.end(), name) == other.values.end()) continue;
+      reader.problem().report(place, "the value " + print_text(name) + " is asked twice, by " +
+                                         print_text(other.text) +
+                                         " too; leave one of them out, or skip the field with \"\"");
     }
   }
   profile.queries.push_back(std::move(query));

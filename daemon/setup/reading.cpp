@@ -4,6 +4,7 @@
 #include <iterator>
 #include <system_error>
 
+#include "analysis/base/number.h"
 #include "analysis/base/unit.h"
 
 namespace loadstair::setup {
@@ -14,7 +15,10 @@ using document::suggest;
 
 void read_format(ObjectReader& top) {
   const double format = top.number("format", document::kAnyNumber, "\"format\": 1");
-  if (format != 1.0) top.complain("format", "this program reads format 1; write \"format\": 1");
+  if (format == 1.0) return;
+  top.complain("format", "the format is " + base::print_number(format) +
+                             ", but this program reads format 1; write 1 if "
+                             "the file is of that kind, or use the program that it was written for");
 }
 
 base::Outcome<std::string> load_text(const std::string& file, std::string_view what) {

@@ -76,6 +76,11 @@ class Parser {
       while (end < text_.size() && end < at_ + 20 && (is_word(text_[end]) || is_digit(text_[end]))) ++end;
       return std::string{text_.substr(at_, end - at_)};
     }
+    if (now() == '"') {
+      const std::size_t end = text_.find_first_of("\"\r\n", at_ + 1);
+      const bool closed = end != std::string_view::npos && text_[end] == '"' && end - at_ < 40;
+      return closed ? std::string{text_.substr(at_, end + 1 - at_)} : "a text in quotes";
+    }
     const auto byte = static_cast<unsigned char>(now());
     if (byte < 0x20 || byte == 0x7F) return "a control character (code " + base::print_integer(byte) + ")";
     return "'" + std::string{text_.substr(at_, character_size(text_, at_))} + "'";
@@ -276,7 +281,9 @@ class Parser {
       if (!more()) {
         refuse_at(opened, "the " + what + " that begins here is never closed; add " + closing);
       } else {
-        refuse_at(after_last_, "a comma or " + std::string{closing} + " is missing here, before " + seen());
+        const bool unit = after_number_ && is_word(now());
+        refuse_at(after_last_, "a comma or " + std::string{closing} + " is missing here, before " + seen() +
+                                   (unit ? "; a number stands alone, its unit belongs to the key" : ""));
       }
       return false;
     }
@@ -304,6 +311,7 @@ class Parser {
       value.items.emplace_back();
       if (!read_value(value.items.back(), depth + 1)) return false;
       after_last_ = here();
+      after_number_ = value.items.back().type == Type::number;
     } while (another(']', opened));
     return !refusal_;
   }
@@ -323,6 +331,7 @@ class Parser {
       value.members.emplace_back();
       if (!read_member(value.members.back(), depth, seen_keys)) return false;
       after_last_ = here();
+      after_number_ = value.members.back().value.type == Type::number;
     } while (another('}', opened));
     return !refusal_;
   }
@@ -370,6 +379,7 @@ class Parser {
   int line_ = 1;
   int column_ = 1;
   Place after_last_;
+  bool after_number_ = false;
   std::optional<base::Refusal> refusal_;
 };
 

@@ -45,15 +45,35 @@ std::size_t distance(std::string_view a, std::string_view b) {
   return last[b.size()];
 }
 
+// Whole numbers without exponent: 4000000, not 4e+06.
+std::string plain(double value) {
+  constexpr double kPlainBelow = 1e9;
+  if (value == std::floor(value) && std::fabs(value) < kPlainBelow) {
+    return base::print_integer(static_cast<std::int64_t>(value));
+  }
+  return base::print_number(value);
+}
+
+// Keys end in their unit: "poll_s" is in seconds.
+std::string_view unit_of_key(std::string_view key) {
+  constexpr std::pair<std::string_view, std::string_view> kEndings[] = {
+      {"_s", " seconds"}, {"_percent", " %"}, {"_ohm", " ohm"}, {"_v", " V"},   {"_a", " A"},
+      {"_w", " W"},       {"_hz", " Hz"},     {"_k", " K"},     {"_c", " degC"}};
+  for (const auto& [ending, unit] : kEndings) {
+    if (key.ends_with(ending)) return unit;
+  }
+  return "";
+}
+
 std::string describe(const Bounds& bounds) {
   const bool has_low = std::isfinite(bounds.low);
   const bool has_high = std::isfinite(bounds.high);
-  const std::string low = base::print_number(bounds.low);
+  const std::string low = plain(bounds.low);
   if (has_low && has_high) {
     return (bounds.exclusive_low ? "above " + low + " and at most " : "from " + low + " to ") +
-           base::print_number(bounds.high);
+           plain(bounds.high);
   }
-  if (has_high) return "at most " + base::print_number(bounds.high);
+  if (has_high) return "at most " + plain(bounds.high);
   return (bounds.exclusive_low ? "greater than " : "at least ") + low;
 }
 
@@ -131,7 +151,8 @@ std::string ObjectReader::text_or(std::string_view key, std::string_view otherwi
 bool ObjectReader::within(std::string_view key, const Value& value, const Bounds& bounds) {
   const bool low_good = bounds.exclusive_low ? value.number > bounds.low : value.number >= bounds.low;
   if (low_good && value.number <= bounds.high) return true;
-  problem_->report(value.place, quoted(key) + " is " + show(value) + "; it must be " + describe(bounds));
+  problem_->report(value.place, quoted(key) + " is " + show(value) + "; it must be " + describe(bounds) +
+                                    std::string{unit_of_key(key)});
   return false;
 }
 
@@ -245,6 +266,7 @@ std::string join_words(std::span<const std::string_view> words) {
 std::string suggest(std::string_view written, std::span<const std::string_view> candidates) {
   if (const auto near = nearest(written, candidates)) return "; did you mean " + quoted(*near) + "?";
   if (candidates.empty()) return "; there are none";
+  if (candidates.size() == 1) return "; the only one is " + quoted(candidates.front());
   constexpr std::size_t kShown = 24;
   std::string out = "; known are ";
   for (std::size_t i = 0; i < candidates.size() && i < kShown; ++i) {

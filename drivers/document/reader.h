@@ -122,7 +122,8 @@ class ObjectReader {
 [[nodiscard]] std::optional<std::string_view> nearest(std::string_view written,
                                                       std::span<const std::string_view> candidates);
 
-/// "; did you mean "X"?" when one is near, else "; known are A, B, C" (or "; there are none").
+/// "; did you mean "X"?" when one is near, else "; known are A, B, C" ("; the only one is A", "; there are
+/// none").
 [[nodiscard]] std::string suggest(std::string_view written, std::span<const std::string_view> candidates);
 
 /// "voltage, current or power".

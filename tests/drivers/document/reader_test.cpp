@@ -53,10 +53,10 @@ TEST_CASE("complaints name the place, what came, and what would be right") {
   CHECK(complaint(R"({"poll_s": "1"})", [](ObjectReader& r) { (void)r.number_or("poll_s", kPositive, 1); }) ==
         "f:1:12: \"poll_s\" must be a number, not \"1\"");
   CHECK(complaint(R"({"poll_s": 0})", [](ObjectReader& r) { (void)r.number_or("poll_s", kPositive, 1); }) ==
-        "f:1:12: \"poll_s\" is 0; it must be greater than 0");
+        "f:1:12: \"poll_s\" is 0; it must be greater than 0 seconds");
   CHECK(complaint(R"({"poll_s": 10e6})", [](ObjectReader& r) {
           (void)r.number_or("poll_s", {0, 3600, true}, 1);
-        }) == "f:1:12: \"poll_s\" is 10e6; it must be above 0 and at most 3600");
+        }) == "f:1:12: \"poll_s\" is 10e6; it must be above 0 and at most 3600 seconds");
   CHECK(complaint(R"({"poll_s": 1.5})", [](ObjectReader& r) { (void)r.integer_or("poll_s", 0, 9, 1); }) ==
         "f:1:12: \"poll_s\" is 1.5; it must be a whole number");
   CHECK(complaint(R"({"kind": "DC"})", [](ObjectReader& r) { (void)r.one_of<int>("kind", kKinds); }) ==
@@ -72,7 +72,7 @@ TEST_CASE("the first problem is kept") {
   CHECK(complaint(R"({"poll_s": 0, "live": 1})", [](ObjectReader& r) {
           (void)r.number_or("poll_s", kPositive, 1);
           (void)r.flag_or("live", false);
-        }) == "f:1:12: \"poll_s\" is 0; it must be greater than 0");
+        }) == "f:1:12: \"poll_s\" is 0; it must be greater than 0 seconds");
 }
 
 TEST_CASE("asking for a key outside the form is a broken promise of our own") {
