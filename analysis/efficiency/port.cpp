@@ -1,6 +1,7 @@
 #include "analysis/efficiency/port.h"
 
 #include <cmath>
+#include <numbers>
 #include <utility>
 
 #include "analysis/base/number.h"
@@ -234,6 +235,23 @@ PortPower port_power(const Port& port, const PortReading& reading) {
       out.remarks.push_back(*remark);
   }
   return out;
+}
+
+Estimate ripple_bound(std::string_view port, double ripple_current_rms_a, double source_resistance_ohm) {
+  const double most = std::abs(source_resistance_ohm) * ripple_current_rms_a * ripple_current_rms_a;
+  estimate::Source source;
+  source.key = estimate::key::component(port, "ripple power");
+  source.name = std::string{port} + ": ripple power without a capture";
+  source.distribution = estimate::Distribution::rectangular;
+  source.owner.instrument = port;
+  source.remedy = estimate::Remedy::capture;
+  source.variance_left = 0;
+  return estimate::bounded(-most, 0, estimate::make_source(std::move(source)));
+}
+
+Estimate rms_from_average_responding(const Estimate& shown, const Estimate& form_factor) {
+  const double of_a_sine = std::numbers::pi / (2 * std::numbers::sqrt2);
+  return shown * form_factor / of_a_sine;
 }
 
 LeadEffect lead_effect(double voltage_v, double current_a, double lead_ohm) {

@@ -4,6 +4,7 @@
 
 #include <optional>
 #include <string>
+#include <string_view>
 #include <vector>
 
 #include "analysis/estimate/estimate.h"
@@ -96,6 +97,17 @@ struct PortPower {
 /// only" and active_power refused. A port given two ways is cross-checked: a difference beyond its own 95 %
 /// interval is a remark. The burden of an AC meter is taken as resistive.
 [[nodiscard]] PortPower port_power(const Port& port, const PortReading& reading);
+
+/// Ripple power of a DC port without a capture: behind a source resistance R a ripple current i lets the
+/// voltage dip while it flows, so mean(v i) lies between -R i^2 and zero: correct by half of it, rectangular
+/// (JCGM 100:2008 4.3.8). port                names the source of error ripple_current_rms_a,
+/// source_resistance_ohm   zero or more, as declared
+[[nodiscard]] Estimate ripple_bound(std::string_view port, double ripple_current_rms_a,
+                                    double source_resistance_ohm);
+
+/// RMS from an average-responding meter, which shows mean-rectified times 1.1107 (a sine's form factor pi /
+/// (2 sqrt 2)). form_factor  RMS / mean-rectified of this waveform, from a capture
+[[nodiscard]] Estimate rms_from_average_responding(const Estimate& shown, const Estimate& form_factor);
 
 /// By how much an undeclared lead resistance would move a port's power.
 struct LeadEffect {

@@ -244,3 +244,19 @@ TEST_CASE("ripple power is added to the product of DC means") {
   REQUIRE(found.active_power);
   CHECK(found.active_power->value() == Approx(384.6).epsilon(1e-14));
 }
+
+TEST_CASE("ripple behind a source resistance takes power, between none and all of R i^2") {
+  // v = -R i for a ripple of i: mean(v i) = -R i_rms^2, closed form; smoothing can only make it less.
+  const auto ripple = efficiency::ripple_bound("input", 1.5, 0.4);
+  CHECK(ripple.value() == Approx(-0.45).epsilon(1e-14));
+  CHECK(ripple.standard_uncertainty() == Approx(0.45 / std::sqrt(3)).epsilon(1e-12));
+  CHECK(ripple.terms()[0].source->remedy == estimate::Remedy::capture);
+}
+
+TEST_CASE("an average-responding meter is put right by the form factor") {
+  // A square wave of 10 V: the meter shows 10 * 1.1107, its form factor is 1; a sine stays as it is.
+  CHECK(efficiency::rms_from_average_responding(Estimate{11.107207345395915}, Estimate{1}).value() ==
+        Approx(10).epsilon(1e-14));
+  CHECK(efficiency::rms_from_average_responding(Estimate{10}, Estimate{M_PI / std::sqrt(8)}).value() ==
+        Approx(10).epsilon(1e-14));
+}
