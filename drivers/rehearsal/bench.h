@@ -49,14 +49,14 @@ enum class Knob {
 /// separated.
 struct ScpiQuery {
   std::string text;                    ///< "MEAS?"; compared without regard to case
-  std::vector<std::string> functions;  ///< MeterFunction names
+  std::vector<std::string> functions;  ///< MeterFunction names; "" gives a field of zero
 };
 
 /// A command that turns a knob. Out of [low, high]: not done, -222 in the error queue.
 struct ScpiSetting {
-  std::string command;  ///< "VOLT {value}"; a switch takes ON, OFF, 1 and 0
-  std::string query;    ///< "VOLT?"; empty: cannot be read back
-  Knob knob = Knob::none;
+  std::string command;     ///< "VOLT {value}"; a switch takes ON, OFF, 1 and 0
+  std::string query;       ///< "VOLT?"; empty: cannot be read back
+  Knob knob = Knob::none;  ///< none: kept and read back, without effect (a limit of its own, a display mode)
   double low = 0.0;
   double high = 1e9;
 };
@@ -145,6 +145,8 @@ struct TruthWindow {
   std::int64_t to_ns = 0;
 };
 
+class BenchCore;
+
 /// The bench. One executor, one thread; the executor's context and the clock outlive it.
 ///
 /// Control socket (FOLDER/control, a unix stream socket), one line each way; an answer is `error WHY`
@@ -199,8 +201,7 @@ class RehearsedBench {
   [[nodiscard]] const Plant& plant();
 
  private:
-  struct State;
-  std::shared_ptr<State> state_;
+  std::shared_ptr<BenchCore> core_;
 };
 
 }  // namespace loadstair::rehearsal

@@ -56,6 +56,11 @@ double rounded(double value, double digit) {
 
 }  // namespace
 
+int decimals_of(double digit) {
+  if (digit <= 0.0) return 6;
+  return std::clamp(static_cast<int>(std::ceil(-std::log10(digit) - 1e-9)), 0, 12);
+}
+
 Meter::Meter(MeterDescription description, std::uint64_t seed, std::uint64_t run)
     : description_{std::move(description)}, seed_{seed}, run_{run} {
   const double place = symmetric_draw(key_of(seed_, description_.name + " phase", {run_}));

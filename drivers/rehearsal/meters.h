@@ -91,6 +91,9 @@ struct DrawnError {
   double offset = 0.0;  ///< in the unit
 };
 
+/// Places after the point that show the last digit: 1 for 0.1, 0 for 1; 6 when nothing is rounded.
+[[nodiscard]] int decimals_of(double digit);
+
 class Meter {
  public:
   /// `seed`: which bench; `run`: which visit to it (redraws the run share).

@@ -92,7 +92,7 @@ struct LoadParameters {
   double greatest_current_a = 12.0;
   double least_voltage_share = 0.85;  ///< of the nominal output: below it constant power is a resistance, so
                                       ///< that a soft start does not meet the whole power at a few volts
-  double displacement_deg = 0.0;  ///< the fundamental current lags by this (inverter only)
+  double displacement_deg = 0.0;      ///< the fundamental current lags by this (inverter only)
   std::vector<Line> harmonics;
   double setting_gain = 0.0;
 };
