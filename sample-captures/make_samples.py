@@ -127,7 +127,7 @@ def stoat_ripple():
 
 def sixty_hertz():
     t_s = np.arange(2400) / 12000.0
-    rows = ["x-axis|1|2", "second|Volt|Ampere"]
+    rows = ["x-axis|CH A|CH B", "second|Volt|Ampere"]
     rows += ["%.9f|%.6f|%.8f" % row for row in zip(t_s, *marten(t_s, 60.0))]
     return text(rows).encode()
 

@@ -205,18 +205,24 @@ base::Outcome<ColumnRoles> find_roles(const Layout& layout, const Labels& labels
 }
 
 base::Outcome<std::size_t> find_column(const std::vector<std::string>& names, std::string_view wanted) {
+  const bool is_hash = wanted.starts_with('#');
+  const auto number = base::parse_integer(is_hash ? wanted.substr(1) : wanted);
+  const bool is_number = number && *number >= 1 && static_cast<std::size_t>(*number) <= names.size();
+  const std::size_t by_number = is_number ? static_cast<std::size_t>(*number - 1) : names.size();
   const auto count = static_cast<std::size_t>(std::count(names.begin(), names.end(), wanted));
-  if (count == 1) {
-    return static_cast<std::size_t>(std::find(names.begin(), names.end(), wanted) - names.begin());
-  }
   if (count > 1) {
     return base::Refusal{"", counted(count, "column") + " are named " + shown(wanted) +
-                                 "; give its number, from 1 to " + text_of(names.size())};
+                                 "; give its number, from #1 to #" + text_of(names.size())};
   }
-  const auto number = base::parse_integer(wanted);
-  if (number && *number >= 1 && static_cast<std::size_t>(*number) <= names.size()) {
-    return static_cast<std::size_t>(*number - 1);
+  if (count == 1) {
+    const auto by_name =
+        static_cast<std::size_t>(std::find(names.begin(), names.end(), wanted) - names.begin());
+    if (!is_number || is_hash || by_name == by_number) return by_name;
+    return base::Refusal{"", shown(wanted) + " is the name of column " + text_of(by_name + 1) +
+                                 " and the number of another; say #" + text_of(by_name + 1) + " or #" +
+                                 text_of(by_number + 1)};
   }
+  if (is_number) return by_number;
   std::string at_hand;
   for (std::size_t k = 0; k < std::min<std::size_t>(names.size(), 20); ++k) {
     at_hand += (k == 0 ? "" : ", ") + shown(names[k]);

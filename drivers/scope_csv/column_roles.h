@@ -28,8 +28,9 @@ struct ColumnRoles {
 [[nodiscard]] base::Outcome<ColumnRoles> find_roles(const Layout& layout, const Labels& labels,
                                                     std::string_view file_name, const Options& options);
 
-/// The column that a person names, by name or by number from 1, among `names` in the order of the file.
-/// Errors (no place): there is none, or several have the name.
+/// The column that a person names, by name or by number from 1 ("2" or "#2"), among `names` in the order of
+/// the file. Errors (no place): there is none, several have the name, or it is the name of one and the number
+/// of another.
 [[nodiscard]] base::Outcome<std::size_t> find_column(const std::vector<std::string>& names,
                                                      std::string_view wanted);
 

@@ -95,9 +95,10 @@ struct ScopeFile {
 [[nodiscard]] base::Outcome<ScopeFile> read_scope_csv_file(const std::filesystem::path& path,
                                                            const Options& options = {});
 
-/// The channel that a person names: by header name, or by the number of its column in the file, from 1.
-/// Returns: index into Samples::columns. Errors (no place): no such column, or the time column; the names at
-/// hand.
+/// The channel that a person names: by header name, or by the number of its column in the file, from 1 ("3"
+/// or "#3"). Returns: index into Samples::columns. Errors (no place): no such column; the time column; a name
+/// that several columns have; a number that is also the name of another column. The reason lists what there
+/// is.
 [[nodiscard]] base::Outcome<std::size_t> find_channel(const ScopeFile& file, std::string_view column);
 
 }  // namespace loadstair::scope_csv

@@ -256,7 +256,13 @@ TEST_CASE("a channel is named by its header or by its number in the file") {
   CHECK(*find_channel(file, "CH1") == 0);
   CHECK(*find_channel(file, "3") == 1);
   CHECK(find_channel(file, "CH2").refusal().reason ==
-        "2 columns are named \"CH2\"; give its number, from 1 to 4");
+        "2 columns are named \"CH2\"; give its number, from #1 to #4");
+  CHECK(*find_channel(file, "#4") == 2);
+  const auto numbered = read("x-axis,1,2\nsecond,Volt,Ampere\n0,1.5,2\n1e-3,2.5,3\n2e-3,3.5,4\n");
+  CHECK(*find_channel(numbered, "#2") == 0);
+  CHECK(*find_channel(numbered, "3") == 1);
+  CHECK(find_channel(numbered, "2").refusal().reason ==
+        "\"2\" is the name of column 3 and the number of another; say #3 or #2");
   CHECK(find_channel(file, "1").refusal().reason == "column 1, \"Time\", is the time, not a channel");
   CHECK(find_channel(file, "U").refusal().reason ==
         "there is no column \"U\"; there are \"Time\", \"CH1\", \"CH2\", \"CH2\", or numbers from 1 to 4");
