@@ -110,6 +110,8 @@ struct DecayFit {
   double residual_sum_of_squares = 0.0;
   double residual_standard_deviation = 0.0;
 };
+/// Terms come back slow first. Refuses spans of unequal length, too few points, values that are not finite,
+/// starts that are not above zero, terms that cannot be told apart.
 base::Outcome<DecayFit> fit_decays(std::span<const double> x, std::span<const double> y,
                                    std::span<const double> start_rates);
 /// y = b1 (1 - exp(-b2 x)): amplitude {b1}, rate {b2}. start_rate any positive number.

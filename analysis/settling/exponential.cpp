@@ -1,0 +1,212 @@
+#include "analysis/settling/exponential.h"
+
+#include <algorithm>
+#include <cmath>
+#include <string>
+
+#include "analysis/series/correlation.h"
+#include "analysis/settling/settling.h"
+
+namespace loadstair::settling {
+namespace {
+
+using base::Outcome;
+using base::Refusal;
+
+constexpr std::size_t kMostBlocks = 256;
+constexpr double kSlowest = 1e-3;  ///< slowest rate of the search, per span: tau = 1000 spans
+
+std::optional<Refusal> unfit(const Trace& trace, std::size_t least) {
+  if (trace.time_s.size() != trace.value.size())
+    return Refusal{"exponential fit", "times and values differ in number"};
+  if (trace.size() < least) {
+    return Refusal{"exponential fit", std::to_string(trace.size()) + " samples are too few; " +
+                                          std::to_string(least) + " are needed"};
+  }
+  for (std::size_t i = 0; i < trace.size(); ++i) {
+    if (!std::isfinite(trace.value[i]) || !std::isfinite(trace.time_s[i]) ||
+        (i > 0 && !(trace.time_s[i] > trace.time_s[i - 1]))) {
+      return Refusal{"exponential fit",
+                     "sample " + std::to_string(i + 1) + ": times must rise and values be finite"};
+    }
+  }
+  return std::nullopt;
+}
+
+/// Rates per span, slow to fast, evenly spaced in their logarithm.
+std::vector<double> rate_grid(double slow, double fast, int steps) {
+  std::vector<double> rates;
+  for (int i = 0; i < steps; ++i)
+    rates.push_back(slow * std::pow(fast / slow, i / static_cast<double>(steps - 1)));
+  return rates;
+}
+
+double sum_of_squares_about_mean(std::span<const double> y) {
+  double mean = 0.0;
+  for (const double value : y) mean += value / static_cast<double>(y.size());
+  double sum = 0.0;
+  for (const double value : y) sum += (value - mean) * (value - mean);
+  return sum;
+}
+
+Refusal flat() {
+  return {"exponential fit", "no rise stands out of the noise"};
+}
+
+}  // namespace
+
+ScaledTrace scaled(const Trace& trace) {
+  ScaledTrace out;
+  out.span_s = trace.time_s.back() - trace.time_s.front();
+  out.x.resize(trace.size());
+  for (std::size_t i = 0; i < trace.size(); ++i)
+    out.x[i] = (trace.time_s[i] - trace.time_s.front()) / out.span_s;
+  out.y.assign(trace.value.begin(), trace.value.end());
+  return out;
+}
+
+ScaledTrace block_means(const ScaledTrace& trace, std::size_t most) {
+  const std::size_t count = trace.x.size();
+  if (count <= most) return trace;
+  ScaledTrace out;
+  out.span_s = trace.span_s;
+  for (std::size_t b = 0; b < most; ++b) {
+    const std::size_t first = b * count / most;
+    const std::size_t past = (b + 1) * count / most;
+    double x = 0.0;
+    double y = 0.0;
+    for (std::size_t i = first; i < past; ++i) {
+      x += trace.x[i];
+      y += trace.y[i];
+    }
+    out.x.push_back(x / static_cast<double>(past - first));
+    out.y.push_back(y / static_cast<double>(past - first));
+  }
+  return out;
+}
+
+std::optional<ExponentialSolution> search_one(const ScaledTrace& trace) {
+  const ExponentialModel model{true, false, false};
+  const ScaledTrace coarse = block_means(trace, kMostBlocks);
+  const double fastest = 2.0 * static_cast<double>(coarse.x.size());
+  double best = 0.0;
+  double least = 0.0;
+  for (const double rate : rate_grid(kSlowest, fastest, 48)) {
+    const auto fit = at_rates(model, coarse.x, coarse.y, std::span{&rate, 1});
+    if (fit && (best == 0.0 || fit->residual_sum_of_squares < least)) {
+      best = rate;
+      least = fit->residual_sum_of_squares;
+    }
+  }
+  if (best == 0.0) return std::nullopt;
+  return descend(model, trace.x, trace.y, {best});
+}
+
+std::optional<ExponentialSolution> search_two(const ScaledTrace& trace, std::optional<double> fixed_rate) {
+  const ExponentialModel model{true, false, fixed_rate.has_value()};
+  const ScaledTrace coarse = block_means(trace, kMostBlocks / 2);
+  const auto grid = rate_grid(0.05, 0.5 * static_cast<double>(coarse.x.size()), 18);
+  std::vector<double> best;
+  double least = 0.0;
+  const auto consider = [&](double fast, double slow) {
+    const std::vector<double> rates = {fast, slow};
+    const auto fit = at_rates(model, coarse.x, coarse.y, rates);
+    if (fit && (best.empty() || fit->residual_sum_of_squares < least)) {
+      best = rates;
+      least = fit->residual_sum_of_squares;
+    }
+  };
+  for (std::size_t i = 0; i < grid.size(); ++i) {
+    if (fixed_rate) {
+      if (grid[i] > 1.5 * *fixed_rate) consider(grid[i], *fixed_rate);
+      continue;
+    }
+    for (std::size_t j = 0; j < i; ++j) consider(grid[i], grid[j]);
+  }
+  if (best.empty()) return std::nullopt;
+  return descend(model, trace.x, trace.y, best);
+}
+
+double ExponentialFit::at(double t_s) const {
+  double value = end;
+  for (std::size_t i = 0; i < tau_s.size(); ++i)
+    value -= amplitude[i] * std::exp(-(t_s - start_s) / tau_s[i]);
+  return value;
+}
+
+ExponentialFit to_fit(const ExponentialSolution& solution, const Trace& trace,
+                      const ScaledTrace& scaled_trace) {
+  ExponentialFit fit;
+  fit.start_s = trace.time_s.front();
+  fit.samples = trace.size();
+  const std::size_t terms = solution.rate.size();
+  fit.degrees_of_freedom = trace.size() - 1 - 2 * terms;
+  fit.residual_sum_of_squares = solution.residual_sum_of_squares;
+  fit.residual_standard_deviation =
+      std::sqrt(solution.residual_sum_of_squares /
+                static_cast<double>(std::max<std::size_t>(1, fit.degrees_of_freedom)));
+  const double s = fit.residual_standard_deviation;
+  fit.end = solution.linear[0];
+  fit.end_standard_error = s * std::sqrt(solution.linear_variance_factor[0]);
+  std::vector<std::size_t> order(terms);
+  for (std::size_t i = 0; i < terms; ++i) order[i] = i;
+  std::sort(order.begin(), order.end(),
+            [&](std::size_t a, std::size_t b) { return solution.rate[a] > solution.rate[b]; });
+  for (const std::size_t i : order) {
+    const double tau = scaled_trace.span_s / solution.rate[i];
+    fit.amplitude.push_back(-solution.linear[i + 1]);
+    fit.amplitude_standard_error.push_back(s * std::sqrt(solution.linear_variance_factor[i + 1]));
+    fit.tau_s.push_back(tau);
+    fit.tau_standard_error_s.push_back(tau * s * std::sqrt(solution.log_rate_variance_factor[i]));
+  }
+  fit.effective_samples = series::integrated_correlation(solution.residual).effective_count;
+  return fit;
+}
+
+base::Outcome<ExponentialFit> fit_exponential(const Trace& trace) {
+  if (const auto reason = unfit(trace, 5)) return *reason;
+  const ScaledTrace whole = scaled(trace);
+  const auto found = search_one(whole);
+  if (!found) return flat();
+  const double about_mean = sum_of_squares_about_mean(trace.value);
+  ExponentialFit fit = to_fit(*found, trace, whole);
+  // F test of two more parameters on as many samples as are independent; 10 is beyond the 0.1 % point for 15
+  // or more.
+  const double freedom = std::max(1.0, fit.effective_samples - 3.0);
+  constexpr double kStandsOut = 10.0;
+  if (!((about_mean - fit.residual_sum_of_squares) / 2.0 >
+        kStandsOut * fit.residual_sum_of_squares / freedom) ||
+      !(about_mean > 0.0)) {
+    return flat();
+  }
+  if (found->rate[0] < 2.0 * kSlowest) {
+    return Refusal{"exponential fit", "the trace does not bend: its end cannot be seen yet"};
+  }
+  if (found->rate[0] > static_cast<double>(trace.size())) {
+    return Refusal{"exponential fit", "the trace jumps within one sample: no time constant can be seen"};
+  }
+  return fit;
+}
+
+base::Outcome<ExponentialFit> fit_two_exponentials(const Trace& trace) {
+  if (const auto reason = unfit(trace, 8)) return *reason;
+  const ScaledTrace whole = scaled(trace);
+  const auto one = search_one(whole);
+  const auto two = search_two(whole, std::nullopt);
+  const Refusal unresolved{"exponential fit", "a second time constant is not resolved"};
+  if (!one || !two) return unresolved;
+  ExponentialFit fit = to_fit(*two, trace, whole);
+  const double freedom = std::max(1.0, fit.effective_samples - 5.0);
+  constexpr double kStandsOut = 10.0;
+  const bool better = (one->residual_sum_of_squares - two->residual_sum_of_squares) / 2.0 >
+                      kStandsOut * two->residual_sum_of_squares / freedom;
+  constexpr double kLeastRatio = 1.3, kMostSpans = 50.0, kMostRelativeError = 0.5;
+  const bool apart = fit.tau_s[1] > kLeastRatio * fit.tau_s[0] && fit.tau_s[1] < kMostSpans * whole.span_s;
+  const double inflation = std::sqrt(static_cast<double>(fit.samples) / fit.effective_samples);
+  const bool sharp = fit.tau_standard_error_s[0] * inflation < kMostRelativeError * fit.tau_s[0] &&
+                     fit.tau_standard_error_s[1] * inflation < kMostRelativeError * fit.tau_s[1];
+  if (!better || !apart || !sharp) return unresolved;
+  return fit;
+}
+
+}  // namespace loadstair::settling
