@@ -18,6 +18,15 @@ std::chrono::nanoseconds nanoseconds(double length_s) {
   return std::chrono::nanoseconds{std::llround(length_s * 1e9)};
 }
 
+/// As a person writes it: "600", "0.1".
+std::string plain(double value) {
+  std::string text = base::print_significant(value, 9);
+  if (text.find('.') == std::string::npos || text.find('e') != std::string::npos) return text;
+  while (text.back() == '0') text.pop_back();
+  if (text.back() == '.') text.pop_back();
+  return text;
+}
+
 /// The first free number from the station's last one on.
 std::string next_path(Station& station) {
   const ScopeDescription& scope = *station.description.scope;
@@ -90,8 +99,8 @@ net::awaitable<base::Outcome<TypedAnswer>> typed_answer(CorePtr core, std::strin
   answer.value = shown.overload ? station.description.overload_word
                                 : base::print_fixed(shown.value / scale, decimals_of(digit / scale));
   answer.unit = (turned ? "m" : "") + typed->unit;
-  answer.range = base::print_significant(shown.full_scale / scale, 9);
-  answer.digit = base::print_significant(digit / scale, 9);
+  answer.range = plain(shown.full_scale / scale);
+  answer.digit = plain(digit / scale);
   answer.read_ns = read_ns;
   core->note(station, "typed", number, fault ? std::string{name_of(fault->kind)} : "", channel,
              answer.value + " " + answer.unit + " " + answer.range + " " + answer.digit);
