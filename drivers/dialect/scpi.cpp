@@ -84,16 +84,17 @@ base::Outcome<Identity> read_identity(std::string_view reply) {
   return Identity{parts[0], parts[1], known(parts[2]), known(parts[3])};
 }
 
-base::Outcome<std::string> write_command(std::string_view command, double value) {
-  if (!std::isfinite(value)) return base::Refusal{std::string{command}, "the number to send is not finite"};
-  auto number = base::print_number(value);
+std::string write_number(double value) {
   for (int decimals = 0; decimals <= 9 && std::abs(value) < 1e15; ++decimals) {
     auto plain = base::print_fixed(value, decimals);
-    if (base::parse_number(plain) == value) {
-      number = std::move(plain);
-      break;
-    }
+    if (base::parse_number(plain) == value) return plain;
   }
+  return base::print_number(value);
+}
+
+base::Outcome<std::string> write_command(std::string_view command, double value) {
+  if (!std::isfinite(value)) return base::Refusal{std::string{command}, "the number to send is not finite"};
+  const auto number = write_number(value);
   constexpr std::string_view kPlace = "{value}";
   std::string text{command};
   for (auto at = text.find(kPlace); at != std::string::npos; at = text.find(kPlace, at + number.size())) {

@@ -38,9 +38,12 @@ struct Identity {
 /// Refusals: not exactly four elements, or bytes outside printable ASCII.
 [[nodiscard]] base::Outcome<Identity> read_identity(std::string_view reply);
 
-/// Puts a number into a command: "POW {value}" and 385.1 give "POW 385.1". Plain decimal notation where at
-/// most nine places show the number exactly (a switch: 0 or 1), else with an exponent; reads back to the same
-/// number. Refusals: a number that is not finite.
+/// A number in plain decimal notation where at most nine places show it exactly, else with an exponent; reads
+/// back to the same number.
+[[nodiscard]] std::string write_number(double value);
+
+/// Puts a number into a command: "POW {value}" and 385.1 give "POW 385.1". A switch takes 0 or 1. Refusals: a
+/// number that is not finite.
 [[nodiscard]] base::Outcome<std::string> write_command(std::string_view command, double value);
 
 }  // namespace loadstair::dialect

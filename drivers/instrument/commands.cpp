@@ -29,7 +29,7 @@ std::optional<double> read_switch(std::string_view text) {
 }
 
 std::string in_unit(double value, const std::string& unit) {
-  const auto number = base::print_significant(value, 6);
+  const auto number = dialect::write_number(value);
   return unit.empty() ? number : number + " " + unit;
 }
 

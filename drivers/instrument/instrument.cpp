@@ -5,6 +5,7 @@
 
 #include "analysis/base/number.h"
 #include "analysis/base/require.h"
+#include "drivers/dialect/scpi.h"
 #include "drivers/dialect/text.h"
 #include "drivers/instrument/instrument_impl.h"
 #include "drivers/instrument/profile_check.h"
@@ -31,7 +32,7 @@ std::int64_t ns_of(double seconds) {
 }
 
 std::string seconds(double s) {
-  return base::print_significant(s, 3) + " s";
+  return dialect::write_number(s) + " s";
 }
 
 /// Keeps `owner` for as long as the coroutine's frame exists, finished or not.

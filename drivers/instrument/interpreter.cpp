@@ -200,7 +200,7 @@ std::vector<Reading> Interpreter::silent_values(std::int64_t now_ns, std::int64_
     readings.push_back(
         {static_cast<std::int32_t>(index), now_ns - age_ns_, half_update_ns_, kNoNumber, kMissing, 0.0});
     tell_(EventKind::timeout, profile_.values[index].name + ": no line for " +
-                                  base::print_significant(static_cast<double>(limit_ns) * 1e-9, 3) +
+                                  dialect::write_number(static_cast<double>(limit_ns / 1'000'000) / 1e3) +
                                   " s; is it on, and does it send?");
   }
   return readings;
