@@ -24,6 +24,8 @@ enum class Speech { scpi, text_lines, none };
 constexpr std::array kSpeeches = {Choice<Speech>{"scpi", Speech::scpi},
                                   Choice<Speech>{"text-lines", Speech::text_lines},
                                   Choice<Speech>{"none", Speech::none}};
+// SCPI-1999 says 9.9e37; some say more.
+constexpr double kLargestSentinel = 1e300;
 constexpr std::string_view kSuffix = ".profile.json";
 
 void refuse_key(ObjectReader& reader, std::string_view key, std::string_view why) {
@@ -185,7 +187,7 @@ Profile read_top(const Value& document, Problem& problem) {
   if (speech == Speech::scpi) read_scpi(top, profile);
   if (speech == Speech::text_lines) read_text_lines(top, profile);
   profile.overload_words = top.texts_or_empty("overload_words");
-  profile.overload_at = top.number_or("overload_at", document::kPositive, profile.overload_at);
+  profile.overload_at = top.number_or("overload_at", {0.0, kLargestSentinel, true}, profile.overload_at);
   profile.timeout_s = top.number_or("timeout_s", {0.0, 60.0, true}, profile.timeout_s);
   profile.free_running = top.flag_or("free_running", profile.free_running);
   return profile;

@@ -18,6 +18,9 @@ using document::Type;
 // A day: a longer wait is a slip of the unit.
 constexpr document::Bounds kWait{0.0, 86400.0, false};
 constexpr document::Bounds kPositiveWait{0.0, 86400.0, true};
+// No bench that one person tests on is beyond these.
+constexpr document::Bounds kVoltage{0.0, 1e6, true};
+constexpr document::Bounds kPower{0.0, 1e9, true};
 constexpr document::Bounds kCelsius{-60.0, 200.0, false};
 
 constexpr std::array kActions = {Choice<GuardAction>{"stop", GuardAction::stop},
@@ -45,9 +48,9 @@ void read_prototype(ObjectReader& reader, Stair& stair) {
 
 void read_ratings(ObjectReader& reader, Stair& stair) {
   Ratings& ratings = stair.ratings;
-  ratings.input_voltage_v = reader.number("input_voltage_v", kPositive, "\"input_voltage_v\": 385");
-  ratings.output_voltage_v = reader.number("output_voltage_v", kPositive, "\"output_voltage_v\": 230");
-  ratings.output_power_w = reader.number("output_power_w", kPositive, "\"output_power_w\": 600");
+  ratings.input_voltage_v = reader.number("input_voltage_v", kVoltage, "\"input_voltage_v\": 385");
+  ratings.output_voltage_v = reader.number("output_voltage_v", kVoltage, "\"output_voltage_v\": 230");
+  ratings.output_power_w = reader.number("output_power_w", kPower, "\"output_power_w\": 600");
   ratings.output_frequency_hz = reader.number_or("output_frequency_hz", {0.0, 1000.0}, 0.0);
   ratings.highest_ambient_c = reader.number_or("highest_ambient_c", kCelsius, 40.0);
 }

@@ -65,9 +65,10 @@ std::string_view unit_of_key(std::string_view key) {
   return "";
 }
 
-std::string describe(const Bounds& bounds) {
-  const bool has_low = std::isfinite(bounds.low);
-  const bool has_high = std::isfinite(bounds.high);
+std::string describe(const Bounds& bounds, double value) {
+  // An end so far away goes without saying, unless it was passed.
+  const bool has_low = bounds.low > -kFarthest || value < bounds.low;
+  const bool has_high = bounds.high < kFarthest || value > bounds.high;
   const std::string low = plain(bounds.low);
   if (has_low && has_high) {
     return (bounds.exclusive_low ? "above " + low + " and at most " : "from " + low + " to ") +
@@ -151,8 +152,8 @@ std::string ObjectReader::text_or(std::string_view key, std::string_view otherwi
 bool ObjectReader::within(std::string_view key, const Value& value, const Bounds& bounds) {
   const bool low_good = bounds.exclusive_low ? value.number > bounds.low : value.number >= bounds.low;
   if (low_good && value.number <= bounds.high) return true;
-  problem_->report(value.place, quoted(key) + " is " + show(value) + "; it must be " + describe(bounds) +
-                                    std::string{unit_of_key(key)});
+  problem_->report(value.place, quoted(key) + " is " + show(value) + "; it must be " +
+                                    describe(bounds, value.number) + std::string{unit_of_key(key)});
   return false;
 }
 

@@ -4,7 +4,6 @@
 #pragma once
 
 #include <array>
-#include <limits>
 #include <optional>
 #include <span>
 #include <string>
@@ -42,15 +41,18 @@ class Problem {
   std::optional<base::Refusal> refusal_;
 };
 
+/// Magnitudes beyond this are slips, and would overflow in later arithmetic.
+inline constexpr double kFarthest = 1e15;
+
 /// The allowed span of a number. `exclusive_low`: the low end itself is not allowed.
 struct Bounds {
-  double low = -std::numeric_limits<double>::infinity();
-  double high = std::numeric_limits<double>::infinity();
+  double low = -kFarthest;
+  double high = kFarthest;
   bool exclusive_low = false;
 };
 inline constexpr Bounds kAnyNumber{};
-inline constexpr Bounds kPositive{0.0, std::numeric_limits<double>::infinity(), true};
-inline constexpr Bounds kNotNegative{0.0, std::numeric_limits<double>::infinity(), false};
+inline constexpr Bounds kPositive{0.0, kFarthest, true};
+inline constexpr Bounds kNotNegative{0.0, kFarthest, false};
 
 /// One word of a list to choose from, and what it stands for.
 template <class T>
