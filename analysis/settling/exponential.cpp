@@ -4,6 +4,7 @@
 #include <cmath>
 #include <string>
 
+#include "analysis/base/number.h"
 #include "analysis/series/correlation.h"
 #include "analysis/settling/settling.h"
 
@@ -16,18 +17,22 @@ using base::Refusal;
 constexpr std::size_t kMostBlocks = 256;
 constexpr double kSlowest = 1e-3;  ///< slowest rate of the search, per span: tau = 1000 spans
 
+std::string count_text(std::size_t count) {
+  return base::print_integer(static_cast<std::int64_t>(count));
+}
+
 std::optional<Refusal> unfit(const Trace& trace, std::size_t least) {
   if (trace.time_s.size() != trace.value.size())
     return Refusal{"exponential fit", "times and values differ in number"};
   if (trace.size() < least) {
-    return Refusal{"exponential fit", std::to_string(trace.size()) + " samples are too few; " +
-                                          std::to_string(least) + " are needed"};
+    return Refusal{"exponential fit",
+                   count_text(trace.size()) + " samples are too few; " + count_text(least) + " are needed"};
   }
   for (std::size_t i = 0; i < trace.size(); ++i) {
     if (!std::isfinite(trace.value[i]) || !std::isfinite(trace.time_s[i]) ||
         (i > 0 && !(trace.time_s[i] > trace.time_s[i - 1]))) {
       return Refusal{"exponential fit",
-                     "sample " + std::to_string(i + 1) + ": times must rise and values be finite"};
+                     "sample " + count_text(i + 1) + ": times must rise and values be finite"};
     }
   }
   return std::nullopt;
