@@ -44,7 +44,9 @@ Outcome<std::optional<double>> interval_of(const std::string& text) {
   if (!number || !unit || unit->unit != "s") {
     return Refusal{"--interval", "\"" + text + "\" is not a time; write it like 2e-05 or \"20 us\""};
   }
-  return std::optional<double>{*number * unit->scale};
+  // 50 us is 50 / 1e6 s to the last bit, which 50 * 1e-6 is not.
+  return std::optional<double>{unit->scale < 1.0 ? *number / std::round(1.0 / unit->scale)
+                                                 : *number * unit->scale};
 }
 
 Outcome<scope_csv::Options> options_of(const CaptureArguments& arguments) {

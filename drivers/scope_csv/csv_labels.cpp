@@ -242,7 +242,7 @@ class LabelReader {
     for (const std::string_view samples : {"Sa/s", "S/s", "samples/s", "Samples/s"}) {
       if (unit.ends_with(samples)) unit = unit.substr(0, unit.size() - samples.size()) + "Hz";
     }
-    if (const auto parsed = read_unit(unit)) return Quantity{*number * parsed->scale, parsed->unit};
+    if (const auto parsed = read_unit(unit)) return Quantity{in_base(*number, parsed->scale), parsed->unit};
     return std::nullopt;
   }
 

@@ -1,6 +1,7 @@
 // Inside the room: what stands above the rows: names, units, and the facts of the preamble.
 #pragma once
 
+#include <cmath>
 #include <cstddef>
 #include <optional>
 #include <string>
@@ -39,6 +40,11 @@ struct Labels {
 
 /// A unit as scopes write it: base's units, in brackets or none, and words such as "Volts" and "seconds".
 [[nodiscard]] std::optional<base::ParsedUnit> read_unit(std::string_view text);
+
+/// A value in base units. Division by 1000 is exact where multiplication by 0.001 is not.
+[[nodiscard]] inline double in_base(double value, double scale) {
+  return scale < 1.0 ? value / std::round(1.0 / scale) : value * scale;
+}
 
 /// Reads names, units and preamble above the data.
 /// Errors: a header or unit line that the options give and that does not fit the columns.

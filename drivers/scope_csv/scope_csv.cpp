@@ -22,15 +22,9 @@ namespace {
 
 constexpr std::size_t kChunkBytes = 1024 * 1024;
 
-/// Division by 1000 is exact where multiplication by 0.001 is not.
 void apply_scale(std::vector<double>& values, double scale) {
   if (scale == 1.0) return;
-  if (scale < 1.0) {
-    const double divisor = std::round(1.0 / scale);
-    for (double& value : values) value /= divisor;
-  } else {
-    for (double& value : values) value *= scale;
-  }
+  for (double& value : values) value = in_base(value, scale);
 }
 
 /// One file on its way from head to samples.
