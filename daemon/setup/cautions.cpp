@@ -93,6 +93,19 @@ void check_sensing(const Port& port, const Ratings& ratings, Findings& findings)
                           "\"lead_resistance_ohm\""});
 }
 
+// Above these a part is hazardous to touch in normal condition: 60 V DC, 30 V AC (IEC 61010-1:2010, 6.3.1;
+// from memory). Who forgets "live" would lose the isolation check.
+void check_declared_live(const Port& port, const Ratings& ratings, Findings& findings) {
+  const double voltage_v = rating_of(port, ratings).voltage_v;
+  if (port.live || voltage_v <= (port.kind == PortKind::ac ? 30.0 : 60.0)) return;
+  findings.push_back(
+      {Severity::warning,
+       "port " + quoted(port.name) + " is rated " + figures(voltage_v) + " V " +
+           (port.kind == PortKind::ac ? "AC" : "DC") +
+           " but not declared \"live\", so the isolation of what is connected to it was not checked; "
+           "write \"live\": true"});
+}
+
 void check_ac_power(const Hookup& hookup, const Port& port, Findings& findings) {
   if (port.kind != PortKind::ac || !port.power.empty() || !port.power_factor.empty() || port.power_factor_low)
     return;
@@ -209,7 +222,10 @@ std::vector<Finding> cautions(const Hookup& hookup, const Stair* stair) {
   check_live_nodes(hookup, findings);
   check_ports(hookup, findings);
   if (stair != nullptr) {
-    for (const Port& port : hookup.ports) check_sensing(port, stair->ratings, findings);
+    for (const Port& port : hookup.ports) {
+      check_declared_live(port, stair->ratings, findings);
+      check_sensing(port, stair->ratings, findings);
+    }
     check_guards(hookup, *stair, findings);
   }
   check_accuracy(hookup, findings);

@@ -11,6 +11,10 @@ namespace {
 std::string number(double value) {
   return base::print_number(value);
 }
+// Six digits at most, without trailing zeros.
+std::string short_number(double value) {
+  return number(base::parse_number(base::print_significant(value, 6)).value_or(value));
+}
 std::string count(std::size_t n) {
   return base::print_integer(static_cast<std::int64_t>(n));
 }
@@ -86,7 +90,7 @@ std::string describe(const Port& port) {
 std::string describe(const Step& step) {
   std::string line = step.label + ": " + number(step.load_w) + " W";
   for (const SetPoint& point : step.set) {
-    line += ", " + point.control + " " + point.setting + " " + base::print_significant(point.value, 6);
+    line += ", " + point.control + " " + point.setting + " " + short_number(point.value);
   }
   if (!step.prompt.empty()) line += ", by hand: " + step.prompt;
   line += "; soak " + number(step.soak_s) + " s";
@@ -150,7 +154,8 @@ std::vector<GuardForecast> forecast_guards(const Stair& stair, const Hookup& hoo
     const Instrument* instrument = channel == nullptr ? nullptr : hookup.find_instrument(channel->instrument);
     if (instrument != nullptr) {
       const bool asked = instrument->profile.dialect == instrument::Dialect::scpi;
-      const double period_s = asked ? instrument->poll_s : std::max(instrument->update_s, 0.0);
+      const double period_s =
+          asked || instrument->update_s == 0.0 ? instrument->poll_s : instrument->update_s;
       // A crossing just after a conversion began waits for the next one, which is read one period later.
       forecast.worst_s = period_s + (asked ? instrument->update_s : 0.0) + instrument->integration_s +
                          instrument->delay_s + guard.debounce_s;

@@ -128,6 +128,17 @@ TEST_CASE(
   CHECK(saying(cautions(hookup, &stair), Severity::warning, "can only tell you") == 0);
 }
 
+TEST_CASE("a dangerous voltage that nobody declared live is named") {
+  Hookup hookup = live_bench(Isolation::isolated);
+  Stair stair;
+  stair.ratings = {385.0, 230.0, 600.0, 50.0, 40.0};
+  CHECK(saying(cautions(hookup, &stair), Severity::warning,
+               "port \"input\" is rated 385 V DC but not declared \"live\"") == 1);
+  CHECK(saying(cautions(hookup, &stair), Severity::warning, "port \"output\" is rated") == 0);
+  stair.ratings.input_voltage_v = 48.0;
+  CHECK(saying(cautions(hookup, &stair), Severity::warning, "not declared \"live\"") == 0);
+}
+
 TEST_CASE("errors come before warnings, warnings before notes") {
   const auto findings = cautions(live_bench(Isolation::earthed), nullptr);
   CHECK(std::is_sorted(findings.begin(), findings.end(),
