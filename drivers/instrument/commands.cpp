@@ -119,7 +119,12 @@ net::awaitable<bool> Instrument::Impl::do_job() {
   at_work_ = waiting_.front();
   waiting_.pop_front();
   const auto job = at_work_;
-  const bool linked = job->setting != nullptr ? co_await do_set(job) : co_await do_switch_on(job);
+  bool linked = false;
+  if (job->setting != nullptr) {
+    linked = co_await do_set(job);
+  } else {
+    linked = co_await do_switch_on(job);
+  }
   if (at_work_ == job) at_work_.reset();
   if (!linked) finish(job, CommandState::unreachable, "the link was lost before it was confirmed");
   co_return linked;

@@ -211,7 +211,9 @@ net::awaitable<bool> Instrument::Impl::send_start_commands() {
     const auto answer = co_await ask_in_step(command);
     if (answer.end == End::closed) co_return false;
     deliver(answer, command, {});
-    if (answer.end != End::answered && !co_await back_in_step()) co_return false;
+    if (answer.end == End::answered) continue;
+    const bool in_step = co_await back_in_step();
+    if (!in_step) co_return false;
   }
   co_return true;
 }

@@ -17,8 +17,11 @@ using dialect::Quality;
 
 constexpr double kNoNumber = std::numeric_limits<double>::quiet_NaN();
 
-// An instrument with more forms of a number than it has ranges has no form.
-constexpr std::size_t kFixedShapes = 5;
+// A form of number is believed when it makes up this share of about the last 32 replies: after three in a
+// row. The first reply ever sets the standard with little weight. Common practice, no source.
+constexpr double kShareOfOne = 1.0 / 32.0;
+constexpr double kBelievedShare = 0.08;
+constexpr double kFirstShare = 0.1;
 
 std::int64_t ns_of(double seconds) {
   return static_cast<std::int64_t>(seconds * 1e9);
@@ -80,13 +83,12 @@ Instant Interpreter::instant_of_line(std::int64_t first_ns, std::int64_t last_ns
 }
 
 bool Interpreter::has_known_shape(Value& value, std::string_view element) {
-  auto& seen = value.shapes[dialect::shape_of(element)];
-  // The first ever sets the standard; another has to come twice before it is believed, unless the instrument
-  // has
-  // shown that it writes numbers as they come.
-  if (value.shapes.size() > kFixedShapes) return true;
-  seen += value.shapes.size() == 1 ? 2 : 1;
-  return seen >= 2;
+  const bool first = value.shapes.empty();
+  for (auto& [shape, share] : value.shapes) share *= 1.0 - kShareOfOne;
+  std::erase_if(value.shapes, [](const auto& entry) { return entry.second < kShareOfOne / 32.0; });
+  auto& share = value.shapes[dialect::shape_of(element)];
+  share += first ? kFirstShare : kShareOfOne;
+  return share >= kBelievedShare;
 }
 
 void Interpreter::tell_change(const ProfileValue& profile, Value& value, const Field& field) {

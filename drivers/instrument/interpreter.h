@@ -58,7 +58,7 @@ class Interpreter {
     std::string unit;
     dialect::Quality quality = dialect::Quality::good;  ///< of the last reading
     bool stuck = false;
-    std::map<dialect::NumberShape, int> shapes;  ///< seen so often
+    std::map<dialect::NumberShape, double> shapes;  ///< share among the replies of late
     StuckWatch watch;
     std::int64_t seen_ns = 0;
     bool silent = false;
