@@ -24,7 +24,8 @@ void add_sample(std::vector<Complex>& sums, double value, double angle) {
 
 /// Sums of orders 1 .. sums.size() over samples [first, past) by running products, eight samples side by
 /// side.
-void add_samples(std::vector<Complex>& sums, const Prepared& channel, double mean, std::size_t first,
+template <class Samples>
+void add_samples(std::vector<Complex>& sums, const Samples& samples, double mean, std::size_t first,
                  std::size_t past, double omega) {
   using Lane = std::array<double, kLanes>;
   const std::size_t orders = sums.size();
@@ -44,7 +45,7 @@ void add_samples(std::vector<Complex>& sums, const Prepared& channel, double mea
       }
     }
     for (std::size_t l = 0; l < kLanes; ++l) {
-      value[l] = channel[k + l] - mean;
+      value[l] = samples[k + l] - mean;
       power_real[l] = value[l] * base_real[l];
       power_imaginary[l] = value[l] * base_imaginary[l];
     }
@@ -66,8 +67,44 @@ void add_samples(std::vector<Complex>& sums, const Prepared& channel, double mea
   for (std::size_t h = 0; h < orders; ++h) {
     for (std::size_t l = 0; l < kLanes; ++l) sums[h] += Complex{real[h][l], imaginary[h][l]};
   }
-  for (; k < past; ++k)
-    add_sample(sums, channel[k] - mean, -std::fmod(static_cast<double>(k) * omega, kTwoPi));
+  for (; k < past; ++k) {
+    add_sample(sums, samples[k] - mean, -std::fmod(static_cast<double>(k) * omega, kTwoPi));
+  }
+}
+
+/// End-corrected amplitudes of all orders of any samples over a span.
+template <class Samples>
+std::vector<Complex> span_lines(const Samples& samples, const SpanSum& span, double period, double mean,
+                                std::size_t orders) {
+  std::vector<Complex> lines(orders);
+  const double omega = kTwoPi / period;
+  add_samples(lines, samples, mean, span.first, span.past, omega);
+  const auto correct = [&](std::size_t at, double weight) {
+    if (weight != 0.0) {
+      add_sample(lines, weight * (samples[at] - mean), -std::fmod(omega * static_cast<double>(at), kTwoPi));
+    }
+  };
+  for (std::size_t j = 0; j < kEndPoints; ++j) {
+    correct(span.head + j, span.head_correction[j]);
+    correct(span.tail + j, span.tail_correction[j]);
+  }
+  for (Complex& line : lines) line *= 2.0 / span.length();
+  return lines;
+}
+
+/// Takes the lines out of the samples.
+void subtract_lines(std::vector<double>& samples, const std::vector<Complex>& lines, double period) {
+  const double omega = kTwoPi / period;
+  for (std::size_t k = 0; k < samples.size(); ++k) {
+    const Complex base = std::polar(1.0, std::fmod(static_cast<double>(k) * omega, kTwoPi));
+    Complex sum = 0.0;  // Horner in exp(j w k)
+    for (std::size_t h = lines.size(); h-- > 0;) {
+      const Complex term = sum + lines[h];
+      sum = {term.real() * base.real() - term.imag() * base.imag(),
+             term.real() * base.imag() + term.imag() * base.real()};
+    }
+    samples[k] -= sum.real();
+  }
 }
 
 /// Weights of eight neighbouring samples at 0 .. 7 for a position among them (Lagrange).
@@ -87,16 +124,7 @@ std::array<double, 8> lagrange(double position) {
 }  // namespace
 
 Complex fundamental_sum(const Prepared& channel, const SpanSum& span, double period) {
-  const double omega = kTwoPi / period;
-  std::vector<Complex> sums(1);
-  add_samples(sums, channel, 0.0, span.first, span.past, omega);
-  for (std::size_t j = 0; j < kEndPoints; ++j) {
-    for (const auto& [at, weight] :
-         {std::pair{span.head + j, span.head_correction[j]}, {span.tail + j, span.tail_correction[j]}}) {
-      if (weight != 0.0) add_sample(sums, weight * channel[at], -omega * static_cast<double>(at));
-    }
-  }
-  return sums[0];
+  return span_lines(channel, span, period, 0.0, 1)[0];
 }
 
 std::vector<Complex> line_amplitudes(const Prepared& channel, const CycleWindow& window, double mean,
@@ -114,15 +142,20 @@ std::vector<Complex> line_amplitudes(const Prepared& channel, const CycleWindow&
     }
     return lines;
   }
-  const double omega = kTwoPi / window.period;
-  add_samples(lines, channel, mean, span.first, span.past, omega);
-  for (std::size_t j = 0; j < kEndPoints; ++j) {
-    for (const auto& [at, weight] :
-         {std::pair{span.head + j, span.head_correction[j]}, {span.tail + j, span.tail_correction[j]}}) {
-      add_sample(lines, weight * (channel[at] - mean), -std::fmod(omega * static_cast<double>(at), kTwoPi));
-    }
+  lines = span_lines(channel, span, window.period, mean, lines.size());
+  // Where a high order has few samples a cycle, its neighbours leak through the ends. What the lines leave of
+  // the samples is analysed again: lines that are there become exact, the rest is as before.
+  constexpr double kFineSampling = 50.0;
+  if (window.period >= kFineSampling * orders) return lines;
+  std::vector<double> rest(channel.size());
+  for (std::size_t k = 0; k < rest.size(); ++k) rest[k] = channel[k] - mean;
+  std::vector<Complex> correction = lines;
+  constexpr int kRounds = 3;
+  for (int round = 0; round < kRounds; ++round) {
+    subtract_lines(rest, correction, window.period);
+    correction = span_lines(rest, span, window.period, 0.0, lines.size());
+    for (std::size_t h = 0; h < lines.size(); ++h) lines[h] += correction[h];
   }
-  for (Complex& line : lines) line *= 2.0 / span.length();
   return lines;
 }
 

@@ -56,9 +56,11 @@ struct WaveformQuote {
   PowerQuote power;
 };
 
-/// Attaches gain, offset, delay, quantisation and noise by the chain rule (JCGM 100:2008 5.1). Gain, offset
-/// and delay of one channel are one source each for all its results, so that power factor and crest factor
-/// lose the gains. The delay enters the active power as the sum over orders of 2 pi f_h Q_h u(delay).
+/// Attaches gain, offset and delay by the chain rule (JCGM 100:2008 5.1), quantisation to the peak, the
+/// record's noise to THD. Gain, offset and delay of one channel are the same sources in all its results, so
+/// that power factor and crest factor lose the gains. The delay enters the active power as the sum over
+/// orders of 2 pi f_h Q_h u(delay). A clipped channel is refused: its results are bounds. Not contained:
+/// bandwidth, and what the caller did not declare.
 WaveformQuote quote(const WaveformResult& result, const CaptureAccuracy& accuracy);
 
 }  // namespace loadstair::waveform

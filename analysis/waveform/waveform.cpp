@@ -168,6 +168,8 @@ base::Outcome<WaveformResult> analyse(const Waveform& waveform, const AnalysisSe
   WaveformResult result;
   result.samples = prepared.front().size();
   result.interval_s = waveform.interval_s;
+  result.voltage = waveform.voltage;
+  result.current = waveform.current;
   const Outcome<CycleWindow> chosen = choose_window(waveform, prepared, settings, result);
   if (!chosen) return chosen.refusal();
   const CycleWindow& window = chosen.value();

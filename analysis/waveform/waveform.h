@@ -163,6 +163,8 @@ struct WaveformResult {
   /// Refusal "no fundamental": a direct record; its channels have mean, RMS and ripple.
   base::Outcome<Fundamental> fundamental = base::Refusal{};
   std::vector<ChannelResult> channels;  ///< in the order given
+  std::optional<std::size_t> voltage;   ///< which channels the power is of
+  std::optional<std::size_t> current;
   base::Outcome<Power> power = base::Refusal{};
   std::vector<std::string> remarks;  ///< for a person: clipped samples, unused cycles, low sampling rate
 };
