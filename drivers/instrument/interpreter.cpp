@@ -22,6 +22,8 @@ constexpr double kNoNumber = std::numeric_limits<double>::quiet_NaN();
 constexpr double kShareOfOne = 1.0 / 32.0;
 constexpr double kBelievedShare = 0.08;
 constexpr double kFirstShare = 0.1;
+// A range may change the decimals; nothing but a cut takes the exponent away.
+constexpr double kBelievedWithoutExponent = 0.5;
 
 std::int64_t ns_of(double seconds) {
   return static_cast<std::int64_t>(seconds * 1e9);
@@ -86,9 +88,13 @@ bool Interpreter::has_known_shape(Value& value, std::string_view element) {
   const bool first = value.shapes.empty();
   for (auto& [shape, share] : value.shapes) share *= 1.0 - kShareOfOne;
   std::erase_if(value.shapes, [](const auto& entry) { return entry.second < kShareOfOne / 32.0; });
-  auto& share = value.shapes[dialect::shape_of(element)];
+  const auto shape = dialect::shape_of(element);
+  auto& share = value.shapes[shape];
   share += first ? kFirstShare : kShareOfOne;
-  return share >= kBelievedShare;
+  const auto most = std::max_element(value.shapes.begin(), value.shapes.end(),
+                                     [](const auto& a, const auto& b) { return a.second < b.second; });
+  const bool lacks_exponent = shape.exponent_digits < most->first.exponent_digits;
+  return share >= (lacks_exponent ? kBelievedWithoutExponent : kBelievedShare);
 }
 
 void Interpreter::tell_change(const ProfileValue& profile, Value& value, const Field& field) {
