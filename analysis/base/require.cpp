@@ -4,9 +4,9 @@
 
 namespace loadstair::base {
 
-void require(bool holds, std::string_view promise, const std::source_location& where) {
+void require(bool holds, std::string_view promise, const char* file, int line) {
   if (holds) return;
-  throw BrokenPromise{std::string{where.file_name()} + ":" + std::to_string(where.line()) +
+  throw BrokenPromise{std::string{file} + ":" + std::to_string(line) +
                       ": broken promise: " + std::string{promise}};
 }
 
