@@ -12,7 +12,7 @@
 namespace loadstair::scope_csv {
 
 /// As much of a file as sniffing looks at, in bytes.
-inline constexpr std::size_t kHeadBytes = 128 * 1024;
+inline constexpr std::size_t kHeadBytes = std::size_t{128} * 1024;
 
 /// Lines, separator, decimal mark and the first row of numbers.
 struct Layout {

@@ -20,7 +20,7 @@
 namespace loadstair::scope_csv {
 namespace {
 
-constexpr std::size_t kChunkBytes = 1024 * 1024;
+constexpr std::size_t kChunkBytes = std::size_t{1024} * 1024;
 
 void apply_scale(std::vector<double>& values, double scale) {
   if (scale == 1.0) return;
