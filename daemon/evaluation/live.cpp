@@ -71,13 +71,6 @@ Judged judge_thermal(const setup::ThermalSettle& wanted, const LiveTraces& trace
   if (trace.size() == 0) return waits(wanted.channel, "no good reading yet");
   const std::vector<double> ambient = read_off(traces.ambient, trace.time_s);
   const auto verdict = settling::settled_thermally(trace, ambient, criterion_of(wanted, !at_last_step));
-  const auto change = change_over(trace, wanted.window_s);
-  if (!change) {
-    const double covered_s = trace.time_s.back() - trace.time_s.front();
-    const double left_s = wanted.window_s * wanted.count + wanted.hold_s - covered_s;
-    return waits(wanted.channel, shown(covered_s) + " s of its " + shown(wanted.window_s) + " s window read",
-                 std::max(0.0, left_s));
-  }
   if (!verdict) return waits(wanted.channel, verdict.refusal().reason);
   if (verdict->end) {
     end =
@@ -87,17 +80,14 @@ Judged judge_thermal(const setup::ThermalSettle& wanted, const LiveTraces& trace
     const std::string by = verdict->by == settling::SettledBy::prediction ? "prediction" : "rate";
     return {true, by, "settled by " + by, 0.0};
   }
-  if (std::abs(*change) > wanted.change_k) {
+  const auto change = change_over(trace, wanted.window_s);
+  if (change && std::abs(*change) > wanted.change_k) {
     return waits(wanted.channel,
                  "changes " + shown(std::abs(*change)) + " K in " + shown(wanted.window_s) + " s, wanted " +
                      shown(wanted.change_k) + " K",
                  verdict->wait_s);
   }
-  return waits(wanted.channel,
-               "changes little enough, but not yet " + base::print_integer(wanted.count) +
-                   " windows in a row" +
-                   (wanted.hold_s > 0.0 ? " and for " + shown(wanted.hold_s) + " s" : std::string{}),
-               verdict->wait_s);
+  return waits(wanted.channel, verdict->why, verdict->wait_s);
 }
 
 }  // namespace

@@ -1,0 +1,263 @@
+#include "daemon/evaluation/channel_value.h"
+
+#include <algorithm>
+#include <cmath>
+#include <numbers>
+#include <utility>
+
+#include "analysis/base/number.h"
+#include "analysis/series/statistics.h"
+#include "daemon/evaluation/live.h"
+#include "daemon/evaluation/sensor_of.h"
+#include "daemon/evaluation/typed_value.h"
+
+namespace loadstair::evaluation {
+namespace {
+
+using estimate::Distribution;
+using estimate::Estimate;
+using estimate::Quoted;
+
+/// How well the temperature of a shunt is known: 2 K, and 30 % of its own rise (common practice, no source).
+constexpr double kShuntTemperatureK = 2.0;
+constexpr double kShuntRiseShare = 0.3;
+constexpr double kRoomDegc = 23.0;
+
+Estimate half_width(double value, estimate::SourcePtr source) {
+  return Estimate{0.0, std::move(source), value / std::numbers::sqrt3};
+}
+
+estimate::SourcePtr component(const std::string& name, const std::string& part,
+                              estimate::Remedy remedy = estimate::Remedy::none) {
+  estimate::Source source;
+  source.key = estimate::key::component(name, part);
+  source.name = name + ": " + part;
+  source.distribution = Distribution::rectangular;
+  source.owner.instrument = name;
+  source.remedy = remedy;
+  return estimate::make_source(std::move(source));
+}
+
+void sort_into_ranges(ChannelValue& into) {
+  const Track& track = *into.stretch.track;
+  std::vector<series::CompensatedSum> sums;
+  std::vector<std::size_t> counts;
+  series::CompensatedSum all;
+  for (std::size_t i = into.stretch.first; i < into.stretch.last; ++i) {
+    all.add(track.raw[i]);
+    auto part = std::find_if(into.parts.begin(), into.parts.end(),
+                             [&](const RangePart& one) { return one.range == track.range[i]; });
+    if (part == into.parts.end()) {
+      into.parts.push_back({track.range[i], 0.0, 0.0});
+      sums.emplace_back();
+      counts.push_back(0);
+      part = into.parts.end() - 1;
+    }
+    const auto at = static_cast<std::size_t>(part - into.parts.begin());
+    sums[at].add(track.raw[i]);
+    ++counts[at];
+  }
+  const auto total = static_cast<double>(into.stretch.size());
+  into.raw = all.total() / total;
+  for (std::size_t i = 0; i < into.parts.size(); ++i) {
+    into.parts[i].share = static_cast<double>(counts[i]) / total;
+    into.parts[i].raw = sums[i].total() / static_cast<double>(counts[i]);
+  }
+}
+
+/// d value / d raw at the mean, and the errors of what converts.
+Estimate conversion_error(ChannelValue& of) {
+  const setup::Channel& channel = *of.channel;
+  const double value = of.middle;
+  const setup::Conversion& conversion = channel.conversion;
+  Estimate sum{0.0};
+  of.sensitivity = conversion.scale;
+  if (conversion.shunt) {
+    const sensors::Shunt shunt = shunt_of(*conversion.shunt);
+    const auto current = sensors::shunt_current(shunt, of.raw * conversion.scale);
+    if (current) {
+      of.sensitivity = conversion.scale * current->per_volt_a;
+      // One name with the burden that the shunt is to the circuit: one resistor, one source.
+      const std::string name = burden_name(channel, kNoRange);
+      sum = sum -
+            half_width(value * conversion.shunt->tolerance_percent / 100.0, component(name, "resistance"));
+      const double temperature_k = kShuntTemperatureK + kShuntRiseShare * std::abs(current->rise_k);
+      sum = sum - half_width(value * shunt.temperature_coefficient_per_k * temperature_k,
+                             component(name, "temperature"));
+    }
+  } else if (conversion.thermocouple) {
+    if (const auto type = thermocouple_of(*conversion.thermocouple)) {
+      if (!conversion.thermocouple->cold_junction.empty()) {
+        const double cold_degc = of.cold_junction ? of.cold_junction->value() : kRoomDegc;
+        const auto junction = sensors::thermocouple_temperature(*type, of.raw * conversion.scale, cold_degc);
+        if (junction) {
+          of.sensitivity = conversion.scale * junction->per_emf_k_per_v;
+          if (of.cold_junction) sum = sum + junction->per_cold_junction * of.cold_junction->with_value(0.0);
+        }
+        if (!of.cold_junction) of.unknown = "its cold junction's uncertainty is not known";
+      }
+      const auto tolerance =
+          sensors::thermocouple_tolerance_k(*type, conversion.thermocouple->tolerance_class, value);
+      const std::string name = "thermocouple of " + channel.name;
+      if (tolerance) {
+        sum = sum + half_width(*tolerance, component(name, "tolerance class"));
+      } else {
+        of.unknown = name + ": " + tolerance.refusal().reason;
+      }
+    }
+  }
+  if (conversion.scale_tolerance_percent > 0.0) {
+    const double error = of.sensitivity * of.raw * conversion.scale_tolerance_percent / 100.0;
+    sum = sum + half_width(error, component("scale of " + channel.name, "ratio"));
+  }
+  return sum;
+}
+
+/// The meter's instants are known within a half-width only: all of one instrument's lie off together.
+Estimate timing_error(const ChannelValue& of, const WindowContext& context) {
+  if (!of.window || of.window->slope_per_s == 0.0) return Estimate{0.0};
+  const Track& track = *of.stretch.track;
+  double half_width_s = 0.0;
+  for (std::size_t i = of.stretch.first; i < of.stretch.last; ++i) half_width_s += track.half_width_s[i];
+  half_width_s /= static_cast<double>(of.stretch.size());
+  const std::string& instrument = of.channel->instrument;
+  return half_width(
+      of.window->slope_per_s * half_width_s,
+      estimate::make_type_b(estimate::key::window(context.run, context.step, "instants of " + instrument),
+                            "instants of " + instrument + " while the step drifts", Distribution::rectangular,
+                            {instrument, "", ""}));
+}
+
+std::string why_nothing(const Track& track, const WindowContext& context) {
+  std::size_t count = 0;
+  std::string reason;
+  for (const Track::Unusable& one : track.unusable) {
+    if (one.time_s < context.from_s || one.time_s > context.to_s) continue;
+    ++count;
+    reason = one.reason;
+  }
+  if (count == 0) return track.index < 0 ? "the run has no such channel" : "no reading in the window";
+  return "no good reading in the window (" + base::print_integer(static_cast<std::int64_t>(count)) +
+         " not used, the last one since " + reason + ")";
+}
+
+void remark_unusable(ChannelValue& into, const WindowContext& context) {
+  std::size_t count = 0;
+  std::string reason;
+  for (const Track::Unusable& one : into.stretch.track->unusable) {
+    if (one.time_s < context.from_s || one.time_s > context.to_s) continue;
+    ++count;
+    reason = one.reason;
+  }
+  if (count == 0) return;
+  into.remarks.push_back(into.channel->name + ": " + base::print_integer(static_cast<std::int64_t>(count)) +
+                         " of " +
+                         base::print_integer(static_cast<std::int64_t>(count + into.stretch.size())) +
+                         " readings not used, the last one since " + reason);
+}
+
+void fill_linked(ChannelValue& into, const setup::Hookup& hookup, const Track& track,
+                 const WindowContext& context) {
+  into.stretch = stretch(track, context.from_s, context.to_s);
+  if (into.stretch.size() == 0) {
+    into.value = into.plain = base::Refusal{into.channel->name, why_nothing(track, context)};
+    return;
+  }
+  remark_unusable(into, context);
+  auto window = series::steady_window(into.stretch.values(),
+                                      {.declared_correlation_s = correlation_of(hookup, *into.channel)});
+  if (!window) {
+    into.value = into.plain = base::Refusal{into.channel->name, window.refusal().reason};
+    return;
+  }
+  into.window = *std::move(window);
+  into.deviation = std::hypot(into.window->deviation, into.window->drift_u);
+  sort_into_ranges(into);
+  if (into.parts.size() > 1)
+    into.remarks.push_back(into.channel->name + ": the meter changed its range in the window");
+  // Every channel's line is read off at the middle of the step's window: one instant for all of them.
+  into.middle = into.window->value + into.window->slope_per_s * (context.middle_s() - into.window->middle_s);
+  into.own = timing_error(into, context);
+  attach_meter_error(into, meter_error(into, hookup, context));
+}
+
+}  // namespace
+
+const setup::RangeSpec* ChannelValue::range() const {
+  const RangePart* most = nullptr;
+  for (const RangePart& part : parts) {
+    if (most == nullptr || part.share > most->share) most = &part;
+  }
+  if (most == nullptr || most->range == kNoRange) return nullptr;
+  return &channel->ranges[static_cast<std::size_t>(most->range)];
+}
+
+Quoted ChannelValue::with_noise(const WindowContext& context) const {
+  if (!value || !window) return value;
+  const auto noise = estimate::type_a_estimate(*window, context.id(), channel->name);
+  if (!noise)
+    return base::Refusal{channel->name, "too few readings in the window: " + noise.refusal().reason};
+  return *value + noise->with_value(0.0);
+}
+
+/// Each range's errors for the share of the readings that were taken on it: a new range is a new source.
+estimate::Quoted meter_error(const ChannelValue& of, const setup::Hookup& hookup,
+                             const WindowContext& context) {
+  const setup::Channel& channel = *of.channel;
+  Estimate sum{0.0};
+  for (const RangePart& part : of.parts) {
+    if (part.range == kNoRange) {
+      return base::Refusal{
+          channel.name,
+          channel.ranges.empty()
+              ? "uncertainty not known: no accuracy is declared"
+              : "uncertainty not known: read beyond the largest range whose accuracy is declared"};
+    }
+    const auto one =
+        estimate::with_meter_error(part.raw, meter_range(channel, part.range), occasion_of(context, channel),
+                                   shares_of(hookup, channel, part.range));
+    if (!one) return base::Refusal{channel.name, one.refusal().reason};
+    sum = sum + part.share * *one;
+  }
+  return sum.with_value(of.raw);
+}
+
+void attach_meter_error(ChannelValue& into, const Quoted& raw) {
+  into.unknown.clear();
+  const Estimate known = (conversion_error(into) + into.own).with_value(into.middle);
+  into.plain = known;
+  if (!raw) {
+    into.unknown = raw.refusal().text();
+    into.value = raw.refusal();
+    return;
+  }
+  into.plain = known + into.sensitivity * raw->with_value(0.0);
+  into.value = into.unknown.empty()
+                   ? into.plain
+                   : Quoted{base::Refusal{into.channel->name, "uncertainty not known: " + into.unknown}};
+}
+
+ChannelValue channel_value(const store::StoredRun& run, const setup::Hookup& hookup,
+                           const std::vector<Track>& tracks, std::size_t index,
+                           const WindowContext& context) {
+  ChannelValue into;
+  into.channel = &hookup.channels[index];
+  into.typed = into.channel->typed;
+  const auto& couple = into.channel->conversion.thermocouple;
+  for (std::size_t i = 0; couple && !couple->cold_junction.empty() && i < tracks.size(); ++i) {
+    const setup::Channel& other = hookup.channels[i];
+    // A cold junction that has one itself would be a chain without end.
+    const bool plain = !other.conversion.thermocouple || other.conversion.thermocouple->cold_junction.empty();
+    if (other.name != couple->cold_junction || !plain) continue;
+    const ChannelValue cold = channel_value(run, hookup, tracks, i, context);
+    if (const Quoted known = cold.with_noise(context)) into.cold_junction = *known;
+  }
+  if (into.typed) {
+    fill_typed(into, run, hookup, tracks[index], context);
+  } else {
+    fill_linked(into, hookup, tracks[index], context);
+  }
+  return into;
+}
+
+}  // namespace loadstair::evaluation

@@ -1,0 +1,166 @@
+#include "daemon/evaluation/evaluate.h"
+
+#include <algorithm>
+#include <cmath>
+#include <map>
+#include <optional>
+
+#include "analysis/base/number.h"
+#include "analysis/efficiency/loss_model.h"
+#include "analysis/efficiency/weighted.h"
+#include "daemon/evaluation/quantity.h"
+#include "daemon/evaluation/step_result.h"
+
+namespace loadstair::evaluation {
+namespace {
+
+/// A step at another input voltage than the rated one belongs to another curve.
+constexpr double kSameVoltage = 0.01;
+/// Where no resolution is known, no level is weighted as if its loss were known better than this share of its
+/// power.
+constexpr double kLeastShare = 1e-6;
+
+/// Labels, with their number where one stands twice: sources of two steps must not share a key.
+std::vector<std::string> unique_names(const std::vector<store::StoredStep>& steps) {
+  std::map<std::string, int> counts;
+  for (const store::StoredStep& step : steps) ++counts[step.label];
+  std::vector<std::string> names;
+  for (const store::StoredStep& step : steps) {
+    const bool twice = counts[step.label] > 1 || step.label.empty();
+    names.push_back(twice ? step.label + " (step " + base::print_integer(step.index + 1) + ")" : step.label);
+  }
+  return names;
+}
+
+bool at_rated_voltage(const setup::Stair& stair, std::int32_t index) {
+  const auto place = static_cast<std::size_t>(std::max(index, 0));
+  if (place >= stair.steps.size() || !stair.steps[place].input_voltage_v) return true;
+  const double rated = stair.ratings.input_voltage_v;
+  return std::abs(*stair.steps[place].input_voltage_v - rated) <= kSameVoltage * rated;
+}
+
+/// q / sqrt 12 of the power's resolution, as far as the sources tell.
+double floor_of(const std::vector<efficiency::CurvePoint>& points) {
+  double floor_w = 0.0;
+  double largest_w = 0.0;
+  for (const efficiency::CurvePoint& point : points) {
+    double variance = 0.0;
+    for (const estimate::Term& term : point.loss.terms()) {
+      const bool resolution = term.source->name.find(": resolution") != std::string::npos;
+      if (resolution) variance += term.contribution * term.contribution;
+    }
+    floor_w = std::max(floor_w, std::sqrt(variance));
+    largest_w = std::max(largest_w, std::abs(point.input_power.value()));
+  }
+  return std::max(floor_w, kLeastShare * largest_w);
+}
+
+/// Rated DC power: rated output plus the loss there (EN 50530 takes the rated AC power over the conversion
+/// efficiency where no rated DC power is given; from memory). Nullopt: no level near and no model.
+std::optional<double> rated_input(double rated_w, const std::vector<efficiency::CurvePoint>& points,
+                                  const efficiency::LossModel* model) {
+  for (const efficiency::CurvePoint& point : points) {
+    if (std::abs(point.output_power.value() - rated_w) <= efficiency::kNominalWithin * rated_w) {
+      return rated_w / point.efficiency.value();
+    }
+  }
+  if (model == nullptr || model->lack_of_fit || rated_w < model->least_w || rated_w > model->greatest_w) {
+    return std::nullopt;
+  }
+  return rated_w / model->efficiency_at(rated_w).value();
+}
+
+WeightedResult to_result(const efficiency::Weighted& weighted) {
+  WeightedResult out;
+  out.title = weighted.title;
+  out.efficiency = to_quantity(weighted.efficiency, "1");
+  for (const efficiency::WeightedUse& use : weighted.uses) {
+    out.uses.push_back({use.level.fraction, use.level.weight, use.from, to_quantity(use.efficiency, "1")});
+  }
+  return out;
+}
+
+std::vector<WeightedResult> weighted_of(const setup::Hookup& hookup, const setup::Stair& stair,
+                                        const std::vector<efficiency::CurvePoint>& points) {
+  const std::vector<std::string> titles = {"European efficiency", "CEC-weighted efficiency"};
+  const auto refuse = [&](const std::string& why) {
+    std::vector<WeightedResult> out;
+    for (const std::string& title : titles) out.push_back({title, missing("1", why), {}});
+    return out;
+  };
+  const bool inverter = std::any_of(hookup.ports.begin(), hookup.ports.end(), [](const setup::Port& port) {
+    return port.direction == setup::Direction::output && port.kind == setup::PortKind::ac;
+  });
+  if (!inverter)
+    return refuse("weighted efficiencies are defined for inverters: this bench has no AC output");
+  const double rated_w = stair.ratings.output_power_w;
+  if (!(rated_w > 0.0)) return refuse("the stair file gives no rated output power");
+  if (points.empty()) return refuse("no step has an efficiency");
+  const auto model = efficiency::fit_loss_model(points, floor_of(points));
+  const efficiency::LossModel* fitted = model ? &*model : nullptr;
+  std::vector<WeightedResult> out;
+  if (const auto rated_dc_w = rated_input(rated_w, points, fitted)) {
+    out.push_back(to_result(
+        efficiency::weighted_efficiency(efficiency::Scheme::european, *rated_dc_w, points, fitted)));
+  } else {
+    out.push_back({titles[0],
+                   missing("1", "the rated power was not measured, so the rated DC power is not known"),
+                   {}});
+  }
+  const std::string voltage = stair.ratings.input_voltage_v > 0.0
+                                  ? base::print_significant(stair.ratings.input_voltage_v, 4) + " V"
+                                  : std::string{};
+  out.push_back(
+      to_result(efficiency::weighted_efficiency(efficiency::Scheme::cec, rated_w, points, fitted, voltage)));
+  return out;
+}
+
+void add_remarks(const store::StoredRun& run, const setup::Stair& stair, RunResult& result) {
+  if (run.summary.state == store::RunState::interrupted) {
+    result.remarks.push_back("the run was interrupted: steps after the interruption are missing");
+  }
+  if (!run.end_reason.empty() && run.summary.state != store::RunState::done) {
+    result.remarks.push_back("the run ended because: " + run.end_reason);
+  }
+  if (run.steps.size() != stair.steps.size()) {
+    result.remarks.push_back(
+        "the record has " + base::print_integer(static_cast<std::int64_t>(run.steps.size())) +
+        " steps, its stair file " + base::print_integer(static_cast<std::int64_t>(stair.steps.size())));
+  }
+  if (!run.method_version.empty() && run.method_version != kMethodVersion) {
+    result.remarks.push_back("recorded with method version " + run.method_version + ", evaluated with " +
+                             std::string{kMethodVersion});
+  }
+}
+
+}  // namespace
+
+RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, const setup::Stair& stair) {
+  RunResult result;
+  result.run = run.summary.run;
+  result.prototype = run.summary.prototype;
+  result.revision = run.summary.revision;
+  result.unit = run.summary.unit;
+  result.state = store::name_of(run.summary.state);
+  result.method_version = kMethodVersion;
+  const std::vector<Track> tracks = tracks_of(run, hookup);
+  const std::vector<std::string> names = unique_names(run.steps);
+  std::vector<efficiency::StepResult> of_curve;
+  for (std::size_t i = 0; i < run.steps.size(); ++i) {
+    StepOutcome outcome = step_outcome(run, hookup, stair, tracks, run.steps[i], names[i]);
+    result.steps.push_back(std::move(outcome.result));
+    const bool finite =
+        result.steps.back().efficiency.known && result.steps.back().efficiency.uncertainty_known;
+    if (finite && at_rated_voltage(stair, run.steps[i].index)) of_curve.push_back(std::move(outcome.powers));
+  }
+  result.points = efficiency::curve(of_curve);
+  for (const efficiency::CurvePoint& point : result.points) {
+    result.curve.push_back({point.label, to_quantity(point.output_power, "W"),
+                            to_quantity(point.efficiency, "1"), to_quantity(point.loss, "W")});
+  }
+  result.weighted = weighted_of(hookup, stair, result.points);
+  add_remarks(run, stair, result);
+  return result;
+}
+
+}  // namespace loadstair::evaluation

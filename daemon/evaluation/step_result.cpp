@@ -1,0 +1,188 @@
+#include "daemon/evaluation/step_result.h"
+
+#include <algorithm>
+#include <utility>
+
+#include "analysis/base/number.h"
+#include "analysis/estimate/budget.h"
+#include "daemon/evaluation/port_step.h"
+#include "daemon/evaluation/quantity.h"
+#include "daemon/evaluation/temperature_result.h"
+
+namespace loadstair::evaluation {
+namespace {
+
+SettledResult settled_of(const store::StoredStep& step) {
+  SettledResult out;
+  out.by = step.settled_how;
+  out.settled = out.by == "slope" || out.by == "rate" || out.by == "prediction";
+  if (step.settled_ns && step.settle_begin_ns) {
+    out.after_s = static_cast<double>(*step.settled_ns - *step.settle_begin_ns) * 1e-9;
+  }
+  if (out.by.empty()) {
+    out.text = "not waited for yet";
+  } else if (out.settled) {
+    out.text = "settled by " + out.by;
+    if (out.after_s) out.text += " after " + base::print_significant(*out.after_s, 3) + " s";
+  } else if (out.by == "no criterion") {
+    out.text = "the stair file asks for no settling";
+  } else {
+    out.text = "not settled within its limit: the results are of a bench that still moves";
+  }
+  return out;
+}
+
+std::vector<BudgetEntry> budget_of(const estimate::Quoted& efficiency) {
+  std::vector<BudgetEntry> out;
+  if (!efficiency) return out;
+  for (const estimate::BudgetLine& line : estimate::budget(*efficiency).lines) {
+    if (!(line.share > 0.0)) continue;
+    out.push_back({line.name, line.owner.instrument, line.owner.function, line.owner.range,
+                   line.kind == estimate::Kind::type_a, line.standard_uncertainty, line.share, line.action,
+                   line.expanded_if_done});
+  }
+  return out;
+}
+
+/// A whole step without numbers: why.
+void refuse_all(StepOutcome& out, const setup::Hookup& hookup, const std::string& why) {
+  StepResult& result = out.result;
+  result.result_state = "not measured";
+  result.input_power = result.output_power = result.loss = missing("W", why);
+  result.efficiency = result.power_factor = result.thd_voltage = result.crest_factor = missing("1", why);
+  result.frequency = missing("Hz", why);
+  for (const setup::TemperaturePoint& point : hookup.temperatures) {
+    result.temperatures.push_back({point.place, point.channel, missing("degC", why), "", std::nullopt});
+  }
+  const base::Refusal refusal{result.label, why};
+  out.powers.label = result.label;
+  out.powers.input_power = out.powers.output_power = out.powers.loss = out.powers.efficiency = refusal;
+}
+
+std::string why_not_measured(const store::StoredStep& step) {
+  if (!step.reason.empty()) return "not measured: " + step.reason;
+  switch (step.state) {
+    case store::StepState::waiting:
+      return "not measured: the run has not come to this step";
+    case store::StepState::skipped:
+      return "not measured: the step was skipped";
+    case store::StepState::stopped:
+      return "not measured: the step was stopped before its window ended";
+    default:
+      return "not measured yet";
+  }
+}
+
+PortResult port_result(const setup::Port& declared, const efficiency::PortPower& real,
+                       const efficiency::PortPower& plain, const std::string& unknown) {
+  PortResult out;
+  out.name = declared.name;
+  out.direction = declared.direction == setup::Direction::input ? "input" : "output";
+  out.counted = declared.counted;
+  const bool only_unknown = !real.active_power.ok() && plain.active_power.ok();
+  out.state = only_unknown ? "uncertainty not known" : real.state_text;
+  out.method = only_unknown ? plain.method : real.method;
+  out.power = either(real.active_power, plain.active_power, "W", unknown);
+  out.apparent_power = either(real.apparent_power, plain.apparent_power, "VA", unknown);
+  out.power_factor = either(real.power_factor, plain.power_factor, "1", unknown);
+  out.voltage = either(real.voltage, plain.voltage, "V", unknown);
+  out.current = either(real.current, plain.current, "A", unknown);
+  out.corrections = only_unknown ? plain.correction_texts : real.correction_texts;
+  return out;
+}
+
+void fill_powers(StepOutcome& out, const StepValues& values) {
+  StepResult& result = out.result;
+  const std::string unknown = unknown_of(values);
+  const StepPowers real = step_powers(values, false);
+  const StepPowers plain = unknown.empty() ? real : step_powers(values, true);
+  const efficiency::StepResult& totals = real.totals;
+  result.result_state =
+      !totals.efficiency && plain.totals.efficiency ? "uncertainty not known" : totals.state;
+  result.input_power = either(totals.input_power, plain.totals.input_power, "W", unknown);
+  result.output_power = either(totals.output_power, plain.totals.output_power, "W", unknown);
+  result.loss = either(totals.loss, plain.totals.loss, "W", unknown);
+  result.efficiency = either(totals.efficiency, plain.totals.efficiency, "1", unknown);
+  result.power_factor = either(real.ports.power_factor, plain.ports.power_factor, "1", unknown);
+  result.budget = budget_of(totals.efficiency);
+  for (std::size_t i = 0; i < values.hookup->ports.size(); ++i) {
+    result.ports.push_back(
+        port_result(values.hookup->ports[i], real.ports.ports[i], plain.ports.ports[i], unknown));
+  }
+  result.remarks.insert(result.remarks.end(), totals.remarks.begin(), totals.remarks.end());
+  out.powers = totals;
+}
+
+/// A meter that measures frequency before a capture.
+Quantity frequency_of(const StepValues& values, const Quantity& of_capture) {
+  for (const ChannelValue& value : values.channels) {
+    if (value.channel->quantity != setup::Quantity::frequency || !value.plain) continue;
+    return either(value.with_noise(values.context), value.plain, "Hz", value.unknown);
+  }
+  return of_capture;
+}
+
+void remark_crest(const StepValues& values, std::vector<std::string>& remarks) {
+  for (const setup::Port& port : values.hookup->ports) {
+    const CaptureAnalysis* capture = capture_of(values.captures, port.name);
+    if (capture == nullptr || !capture->result) continue;
+    for (const std::string* name : {&port.voltage, &port.current}) {
+      const ChannelValue* value = values.find(*name);
+      const auto& place = name == &port.voltage ? capture->voltage : capture->current;
+      if (value == nullptr || !value->channel->crest_limit || !place) continue;
+      const auto& crest = capture->result->channels[*place].crest_factor;
+      if (!crest || crest->value <= *value->channel->crest_limit) continue;
+      remarks.push_back(value->channel->name + ": its signal has a crest factor of " +
+                        base::print_significant(crest->value, 3) + ", more than the " +
+                        base::print_significant(*value->channel->crest_limit, 3) +
+                        " that the meter's accuracy is declared for");
+    }
+  }
+}
+
+}  // namespace
+
+StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hookup, const setup::Stair& stair,
+                         const std::vector<Track>& tracks, const store::StoredStep& step,
+                         const std::string& name) {
+  StepOutcome out;
+  StepResult& result = out.result;
+  result.index = step.index;
+  result.label = step.label;
+  result.load_w = step.load_w;
+  result.state = store::name_of(step.state);
+  result.settled = settled_of(step);
+  const bool measured =
+      step.average_begin_ns && step.average_end_ns && *step.average_end_ns > *step.average_begin_ns;
+  if (!measured) {
+    refuse_all(out, hookup, why_not_measured(step));
+    return out;
+  }
+  StepValues values;
+  values.hookup = &hookup;
+  values.context = {base::print_integer(run.summary.started_ns), name, step.index,
+                    since_start(run, *step.average_begin_ns), since_start(run, *step.average_end_ns)};
+  for (std::size_t i = 0; i < hookup.channels.size(); ++i) {
+    values.channels.push_back(channel_value(run, hookup, tracks, i, values.context));
+    const std::vector<std::string>& remarks = values.channels.back().remarks;
+    result.remarks.insert(result.remarks.end(), remarks.begin(), remarks.end());
+  }
+  share_wattmeters(values);
+  values.captures = captures_of(run, hookup, stair, values.context, result.remarks);
+  fill_powers(out, values);
+  CaptureQuantities captured = quantities_of(values.captures);
+  result.thd_voltage = std::move(captured.thd_voltage);
+  result.crest_factor = std::move(captured.crest_factor);
+  result.frequency = frequency_of(values, captured.frequency);
+  remark_crest(values, result.remarks);
+  const auto place = static_cast<std::size_t>(std::max(step.index, 0));
+  const setup::Step* plan = place < stair.steps.size() ? &stair.steps[place] : nullptr;
+  const double begun_s =
+      since_start(run, step.soak_begin_ns.value_or(step.begun_ns.value_or(*step.average_begin_ns)));
+  result.temperatures = temperatures_of(hookup, plan, tracks, values.channels, values.context, begun_s,
+                                        place + 1 == stair.steps.size());
+  if (result.settled.by == "not settled") result.remarks.push_back(result.settled.text);
+  return out;
+}
+
+}  // namespace loadstair::evaluation
