@@ -11,7 +11,7 @@
 #include <vector>
 
 #include "drivers/rehearsal/lamps.h"
-#include "drivers/rehearsal/thermal.h"
+#include "drivers/rehearsal/two_nodes.h"
 
 namespace loadstair::rehearsal {
 

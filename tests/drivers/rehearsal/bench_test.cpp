@@ -4,10 +4,12 @@
 #include <boost/asio/io_context.hpp>
 #include <catch2/catch.hpp>
 #include <cmath>
+#include <cstdlib>
 #include <ctime>
 
 #include "analysis/base/number.h"
 #include "drivers/link/task_scope.h"
+#include "drivers/rehearsal/draws.h"
 
 namespace loadstair::rehearsal {
 namespace {
@@ -137,6 +139,8 @@ struct VirtualBench {
     return reply;
   }
   void tell(link::Link& link, const std::string& text) { CHECK(ask(link, text, 0.1) == "(none)"); }
+  /// Sends, whatever comes back.
+  void tell_any(link::Link& link, const std::string& text) { (void)ask(link, text, 0.02); }
   void run(double length_s) { clock->run(clock->now_ns() + static_cast<std::int64_t>(length_s * 1e9)); }
 
   net::io_context io;
@@ -215,6 +219,28 @@ TEST_CASE("what an instrument does not know goes into its error queue", "[rehear
   b.tell(*source, "OUTP 1");
   b.tell(*source, "*RST");
   CHECK(b.ask(*source, "OUTP?") == "0");
+}
+
+TEST_CASE("random bytes never silence an instrument", "[rehearsal]") {
+  const char* given = std::getenv("LOADSTAIR_TEST_SEED");
+  const auto seed =
+      static_cast<std::uint64_t>(base::parse_integer(given != nullptr ? given : "1").value_or(1));
+  INFO("LOADSTAIR_TEST_SEED=" << seed);
+  Pcg32 draw{seed, 11};
+  VirtualBench b;
+  const auto source = b.open("source");
+  const std::vector<std::string> scraps = {"VOLT", "VOLT ", "VOLT?", "OUTP", "{value}", "*", "?",
+                                           ";",    "\"",    " ",     "ON",   "1e999",   "\r"};
+  for (int message = 0; message < 200; ++message) {
+    std::string bytes;
+    for (std::uint32_t i = draw.next() % 8; i > 0; --i) {
+      bytes += scraps[draw.next() % scraps.size()];
+      if (draw.next() % 3 == 0) bytes += static_cast<char>(draw.next() & 0xffU);
+    }
+    b.tell_any(*source, bytes);
+  }
+  source->drain();
+  CHECK(b.ask(*source, "*IDN?") == "north bench,source,S-001,1.0");
 }
 
 TEST_CASE("bytes are paced to the declared rate", "[rehearsal]") {

@@ -241,6 +241,23 @@ TEST_CASE("a dcdc is solved by the same laws", "[rehearsal]") {
   CHECK(plant.last().output.current.mean == Approx(25.0).epsilon(1e-12));
 }
 
+TEST_CASE("cold lamps push the converter into fold-back for a moment, then it recovers", "[rehearsal]") {
+  PlantParameters p;
+  p.lamps.count = 3;
+  p.lamps.rated_power_w = 60.0;
+  p.lamps.rated_voltage_v = 230.0;
+  Plant plant{p};
+  plant.settings.source_on = true;
+  run(plant, 1.0);
+  plant.settings.lamps_on = 3;
+  plant.step();
+  CHECK(plant.last().folded_back);
+  CHECK(rms(plant.last().output.voltage[0]) < 120.0);
+  run(plant, 1.0);
+  CHECK_FALSE(plant.last().folded_back);
+  CHECK(plant.last().load_power_w == Approx(180.0).epsilon(0.01));
+}
+
 TEST_CASE("a source that cannot give the power makes the converter let go, and nothing breaks",
           "[rehearsal]") {
   PlantParameters p;

@@ -1,4 +1,4 @@
-#include "drivers/rehearsal/thermal.h"
+#include "drivers/rehearsal/two_nodes.h"
 
 #include <cmath>
 

@@ -1,8 +1,9 @@
+#include "drivers/rehearsal/two_nodes.h"
+
 #include <catch2/catch.hpp>
 #include <cmath>
 
 #include "drivers/rehearsal/lamps.h"
-#include "drivers/rehearsal/thermal.h"
 
 namespace loadstair::rehearsal {
 namespace {
