@@ -25,26 +25,26 @@ struct Piece {
   std::vector<double> residual;
 };
 
+/// A part with x in spans of the part, as the searches expect it.
 ScaledTrace part_of(const ScaledTrace& whole, std::size_t first, std::size_t past) {
   ScaledTrace part;
   part.span_s = whole.span_s;
+  const double length = whole.x[past - 1] - whole.x[first];
   for (std::size_t i = first; i < past; ++i) {
-    part.x.push_back(whole.x[i] - whole.x[first]);
+    part.x.push_back((whole.x[i] - whole.x[first]) / length);
     part.y.push_back(whole.y[i]);
   }
   return part;
 }
 
-/// Rates of a part count in spans of the part, as the searches expect it.
 Piece piece_of(const ScaledTrace& whole, std::size_t first, std::size_t past, bool two_constants) {
-  ScaledTrace part = part_of(whole, first, past);
-  const double length = part.x.back();
-  for (double& x : part.x) x /= length;
+  const ScaledTrace part = part_of(whole, first, past);
+  const double length = whole.x[past - 1] - whole.x[first];
   Piece out;
   out.points = past - first;
   auto found = search_one(part);
   if (two_constants) {
-    auto two = search_two(part, std::nullopt);
+    auto two = search_two(part);
     if (two && (!found || two->residual_sum_of_squares < found->residual_sum_of_squares))
       found = std::move(two);
   }
@@ -63,7 +63,9 @@ Piece piece_of(const ScaledTrace& whole, std::size_t first, std::size_t past, bo
   return out;
 }
 
-double split_sum(const ScaledTrace& whole, std::size_t first, std::size_t at, std::size_t past) {
+/// Coarse: the rates of a grid. Fine: the best rates.
+double split_sum(const ScaledTrace& whole, std::size_t first, std::size_t at, std::size_t past, bool fine) {
+  if (!fine) return coarse_sum_one(part_of(whole, first, at)) + coarse_sum_one(part_of(whole, at, past));
   return piece_of(whole, first, at, false).residual_sum_of_squares +
          piece_of(whole, at, past, false).residual_sum_of_squares;
 }
@@ -78,14 +80,16 @@ std::size_t best_split(const ScaledTrace& whole, std::size_t first, std::size_t 
   std::size_t from = low;
   std::size_t to = high;
   while (true) {
+    const bool fine = stride == 1;
+    least = std::numeric_limits<double>::infinity();
     for (std::size_t at = from; at <= to; at += stride) {
-      const double sum = split_sum(whole, first, at, past);
+      const double sum = split_sum(whole, first, at, past, fine);
       if (sum < least) {
         least = sum;
         best = at;
       }
     }
-    if (stride == 1) return best;
+    if (fine) return best;
     from = std::max(low, best - std::min(best - low, stride));
     to = std::min(high, best + stride);
     stride = std::max<std::size_t>(1, stride / 4);
@@ -95,6 +99,7 @@ std::size_t best_split(const ScaledTrace& whole, std::size_t first, std::size_t 
 void search(const ScaledTrace& whole, std::size_t first, std::size_t past,
             const ChangePointSettings& settings, std::vector<double>& found, int depth) {
   if (depth == 0 || past - first < 2 * kLeastPoints + 2) return;
+  if (random_signs(piece_of(whole, first, past, false).residual)) return;
   const Piece smooth = piece_of(whole, first, past, true);
   if (random_signs(smooth.residual)) return;
   const std::size_t at = best_split(whole, first, past);

@@ -27,10 +27,9 @@ void sort_terms(ExponentialSolution& solution) {
 
 /// Two rates that meet on the way down get stuck on each other. Starts spread about the geometric mean of the
 /// given one are tried beside it, and the least sum of squares wins.
-std::optional<ExponentialSolution> best_descent(const ExponentialModel& model, std::span<const double> x,
-                                                std::span<const double> y,
+std::optional<ExponentialSolution> best_descent(const ExponentialModel& model, const Points& points,
                                                 const std::vector<double>& start_rates) {
-  std::optional<ExponentialSolution> best = descend(model, x, y, start_rates);
+  std::optional<ExponentialSolution> best = descend(model, points, start_rates);
   if (start_rates.size() == 1) return best;
   double mean = 0.0;
   for (const double rate : start_rates) mean += std::log(rate) / static_cast<double>(start_rates.size());
@@ -40,7 +39,7 @@ std::optional<ExponentialSolution> best_descent(const ExponentialModel& model, s
       const double place = static_cast<double>(i) - 0.5 * static_cast<double>(start_rates.size() - 1);
       rates.push_back(std::exp(mean + place * std::log(ratio)));
     }
-    auto found = descend(model, x, y, rates);
+    auto found = descend(model, points, rates);
     if (found && (!best || found->residual_sum_of_squares < best->residual_sum_of_squares))
       best = std::move(found);
   }
@@ -60,7 +59,7 @@ base::Outcome<DecayFit> fit(const ExponentialModel& model, std::span<const doubl
   for (const double rate : start_rates) {
     if (!(rate > 0.0) || !std::isfinite(rate)) return Refusal{"decay fit", "start rates must be above zero"};
   }
-  const auto found = best_descent(model, x, y, start_rates);
+  const auto found = best_descent(model, Points{x, y, {}}, start_rates);
   if (!found)
     return Refusal{"decay fit", "the terms cannot be told apart from this start; choose other rates"};
   DecayFit out;

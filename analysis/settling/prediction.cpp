@@ -18,10 +18,10 @@ using base::Refusal;
 
 /// Residuals are correlated by the meter's filter and resolution: standard errors grow by sqrt(N / N_eff).
 double coverage_of(const ExponentialFit& fit) {
-  const double parameters = static_cast<double>(fit.samples - fit.degrees_of_freedom);
-  const double freedom = std::max(1.0, fit.effective_samples - parameters);
+  const double parameters = static_cast<double>(fit.points - fit.degrees_of_freedom);
+  const double freedom = std::max(1.0, fit.effective_points - parameters);
   return estimate::student_t(estimate::kLevel, freedom) *
-         std::sqrt(static_cast<double>(fit.samples) / fit.effective_samples);
+         std::sqrt(static_cast<double>(fit.points) / fit.effective_points);
 }
 
 Interval end_of(const ExponentialFit& fit) {
@@ -56,20 +56,20 @@ std::vector<double> residuals_of(const ExponentialFit& fit, const Trace& trace) 
   return residual;
 }
 
-/// Ends that fits with a slower constant beside the found ones allow: for constants from twice the longest
-/// found to the slowest, an end, a fast constant and the given slow one.
-void widen_for_hidden(Interval& end, const Trace& trace, double longest_tau_s, double slowest_tau_s) {
-  const ScaledTrace whole = scaled(trace);
+/// Ends that the readings allow when a slower constant is at work beside the found ones: for constants from
+/// twice the longest found to the slowest, the fit goes on from the found one with that constant given.
+void widen_for_hidden(Interval& end, const Trace& trace, const ExponentialFit& model, double slowest_tau_s) {
+  const ScaledTrace whole = fitting_points(trace);
+  std::vector<double> rates;
+  for (const double tau : model.tau_s) rates.push_back(whole.span_s / tau);
+  rates.push_back(0.0);
   constexpr int kSteps = 4;
-  const double first = std::min(2.0 * longest_tau_s, slowest_tau_s);
+  const double first = std::min(2.0 * model.longest_tau_s(), slowest_tau_s);
   for (int step = 0; step < kSteps; ++step) {
     const double tau = first * std::pow(slowest_tau_s / first, step / static_cast<double>(kSteps - 1));
-    const auto hidden = search_two(whole, whole.span_s / tau);
-    if (!hidden) continue;
-    const ExponentialFit fit = to_fit(*hidden, trace, whole);
-    // A slow part that pulls against the rise and is not significant adds nothing that a person would
-    // believe; its interval still counts.
-    widen(end, end_of(fit));
+    rates.back() = whole.span_s / tau;
+    const auto hidden = descend({true, false, true}, whole.points(), rates);
+    if (hidden) widen(end, end_of(to_fit(*hidden, trace, whole)));
   }
 }
 
@@ -161,7 +161,7 @@ base::Outcome<Prediction> predict_end(const Trace& trace, std::span<const double
   const double slowest = criterion.slowest_tau_s > 0.0
                              ? criterion.slowest_tau_s
                              : std::max(5.0 * model.longest_tau_s(), 3.0 * out.window_s);
-  if (slowest > model.longest_tau_s()) widen_for_hidden(out.end, rise, model.longest_tau_s(), slowest);
+  if (slowest > model.longest_tau_s()) widen_for_hidden(out.end, rise, model, slowest);
   const double present = model.at(trace.time_s.back());
   out.remaining = {out.end.value - present, out.end.low - present, out.end.high - present};
   judge(out, criterion, present, model.at(trace.time_s.front()));

@@ -213,7 +213,7 @@ base::Outcome<Verdict> settled_by_rate(const Trace& trace, const RateCriterion& 
   out.wait_s = 0.0;
   Interval end{now, now, now};
   if (fit) {
-    const double inflation = std::sqrt(static_cast<double>(fit->samples) / fit->effective_samples);
+    const double inflation = std::sqrt(static_cast<double>(fit->points) / fit->effective_points);
     const double half_width = 2.0 * fit->end_standard_error * inflation;
     end.low = std::min({now, fit->end - half_width});
     end.high = std::max({now, fit->end + half_width});

@@ -81,11 +81,13 @@ struct ExponentialFit {
   std::vector<double> amplitude_standard_error;
   std::vector<double> tau_s;
   std::vector<double> tau_standard_error_s;
-  double residual_sum_of_squares = 0.0;
-  double residual_standard_deviation = 0.0;  ///< sqrt(RSS / degrees of freedom)
-  std::size_t samples = 0;
-  std::size_t degrees_of_freedom = 0;
-  double effective_samples = 0.0;  ///< samples that are independent, from the residuals' lag-1 correlation
+  std::size_t samples = 0;  ///< readings of the trace
+  std::size_t points = 0;   ///< what was fitted: the readings, or 256 means of neighbours where they are many
+  std::size_t degrees_of_freedom = 0;        ///< of the points
+  double residual_sum_of_squares = 0.0;      ///< over the points
+  double residual_standard_deviation = 0.0;  ///< of a point: sqrt(RSS / degrees of freedom)
+  double effective_points =
+      0.0;  ///< how many of the points are independent, from their residuals' correlation
 
   [[nodiscard]] double at(double t_s) const;
   [[nodiscard]] double longest_tau_s() const { return tau_s.back(); }
