@@ -97,9 +97,9 @@ bool GuardWatch::missing(std::int64_t now_ns) const {
 
 std::string GuardWatch::limit_text() const {
   if (guard_.above && last_value_ > *guard_.above) {
-    return "above " + base::print_significant(*guard_.above, 6) + " " + unit_;
+    return "above " + brief(*guard_.above) + " " + unit_;
   }
-  return "below " + base::print_significant(guard_.below.value_or(0.0), 6) + " " + unit_;
+  return "below " + brief(guard_.below.value_or(0.0)) + " " + unit_;
 }
 
 std::optional<GuardWatch::Cause> GuardWatch::check(std::int64_t now_ns) {
@@ -111,9 +111,8 @@ std::optional<GuardWatch::Cause> GuardWatch::check(std::int64_t now_ns) {
         missing(now_ns) && now_ns - *beyond_since_ns_ >= std::max(debounce_ns, missing_after_ns_);
     if (long_enough || silent_beyond) {
       tripped_ = true;
-      std::string text = guard_.channel + " is " + base::print_significant(last_value_, 6) + " " + unit_ +
-                         ", " + limit_text();
-      if (debounce_ns > 0) text += " for " + base::print_significant(guard_.debounce_s, 3) + " s";
+      std::string text = guard_.channel + " is " + brief(last_value_) + " " + unit_ + ", " + limit_text();
+      if (debounce_ns > 0) text += " for " + brief(guard_.debounce_s) + " s";
       if (!long_enough) text += ", and silent since";
       return Cause{demand_of(guard_.action), text};
     }

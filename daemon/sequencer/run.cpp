@@ -350,7 +350,7 @@ awaitable<Go> Sequencer::State::settle(const setup::Step& plan) {
     if (now >= limit) {
       step.settled_how = "not settled";
       event("not settled", stair.steps[static_cast<std::size_t>(step_index)].label,
-            "not settled within " + base::print_significant(plan.settle_limit_s, 4) + " s: " + found.text);
+            "not settled within " + brief(plan.settle_limit_s) + " s: " + found.text);
       co_return co_await wait_until(0);
     }
     auto until = found.remaining_s ? std::optional{now + ticks_of(*found.remaining_s)} : std::nullopt;
@@ -394,7 +394,7 @@ awaitable<Go> Sequencer::State::capture(const setup::Step& plan) {
       co_await wait_for([this, had] { return bench.captures_of_step(step_index) > had; }, deadline);
   if (go == Go::on && bench.captures_of_step(step_index) == had) {
     event("capture missing", plan.label,
-          "no capture came within " + base::print_significant(options.capture_limit_s, 4) +
+          "no capture came within " + brief(options.capture_limit_s) +
               " s; the step has none. One can be added later from its file.");
   }
   co_return go;

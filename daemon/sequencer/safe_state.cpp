@@ -166,8 +166,7 @@ awaitable<void> Sequencer::State::cool_down() {
   if (!energised) co_return;
   co_await pass_time(stair.end.cool_down_s, "cools down");
   if (stair.end.discharge_s <= 0.0) co_return;
-  const auto text =
-      "discharges for " + base::print_significant(stair.end.discharge_s, 4) + " s; then " + kProveDead;
+  const auto text = "discharges for " + brief(stair.end.discharge_s) + " s; then " + kProveDead;
   event("discharge", "sequencer", text);
   co_await pass_time(stair.end.discharge_s, text);
 }

@@ -110,7 +110,7 @@ struct SequencerOptions {
   /// Asks for a capture of the running step (the rehearsal's scope, a trigger command). Empty: the person at
   /// the bench saves one.
   std::function<void(const std::string& step_label)> request_capture;
-  double capture_limit_s = 20.0;  ///< after this the step goes on without its capture
+  double capture_limit_s = 60.0;  ///< after this the step goes on without its capture
   double ready_limit_s = 15.0;    ///< for the instruments to be there before a start
 };
 

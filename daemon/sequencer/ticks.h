@@ -1,9 +1,12 @@
-// Seconds of files and people, nanoseconds of the clock.
+// Seconds of files and people, nanoseconds of the clock; numbers for messages.
 #pragma once
 
 #include <algorithm>
 #include <cmath>
 #include <cstdint>
+#include <string>
+
+#include "analysis/base/number.h"
 
 namespace loadstair::sequencer {
 
@@ -15,6 +18,11 @@ namespace loadstair::sequencer {
 
 [[nodiscard]] inline double seconds_of(std::int64_t ticks) {
   return static_cast<double>(ticks) * 1e-9;
+}
+
+/// At most six significant digits, without the zeros that nobody wrote: "95", "385.2".
+[[nodiscard]] inline std::string brief(double value) {
+  return base::print_number(base::parse_number(base::print_significant(value, 6)).value_or(value));
 }
 
 }  // namespace loadstair::sequencer

@@ -6,6 +6,7 @@
 
 #include "analysis/base/number.h"
 #include "analysis/base/unit.h"
+#include "daemon/sequencer/ticks.h"
 
 namespace loadstair::sequencer {
 namespace {
@@ -138,26 +139,26 @@ base::Outcome<TypedValue> read_typed(const setup::Channel& channel, const TypedE
 
 std::string why_implausible(const setup::Channel& channel, const TypedValue& typed, double converted,
                             std::optional<double> earlier) {
-  const auto printed = base::print_significant(converted, 6) + " " + channel.unit;
+  const auto printed = brief(converted) + " " + channel.unit;
   if (channel.low && converted < *channel.low) {
-    return printed + " is below " + base::print_significant(*channel.low, 6) + " " + channel.unit +
+    return printed + " is below " + brief(*channel.low) + " " + channel.unit +
            ", the least that the hook-up file expects";
   }
   if (channel.high && converted > *channel.high) {
-    return printed + " is above " + base::print_significant(*channel.high, 6) + " " + channel.unit +
+    return printed + " is above " + brief(*channel.high) + " " + channel.unit +
            ", the most that the hook-up file expects";
   }
   double full_scale = typed.range;
   if (full_scale == 0.0 && !channel.ranges.empty()) full_scale = channel.ranges.back().upto;
   // Many meters read up to a tenth beyond the range's name.
   if (full_scale > 0.0 && std::abs(typed.value) > 1.1 * full_scale) {
-    return base::print_significant(typed.value, 6) + " " + typed.unit + " does not fit on a range of " +
-           base::print_significant(full_scale, 6) + " " + typed.unit;
+    return brief(typed.value) + " " + typed.unit + " does not fit on a range of " + brief(full_scale) + " " +
+           typed.unit;
   }
   if (earlier && std::abs(typed.value - *earlier) >
                      std::max(kRoundsApart * std::abs(*earlier), 20.0 * typed.last_digit)) {
-    return base::print_significant(typed.value, 6) + " " + typed.unit + " is far from " +
-           base::print_significant(*earlier, 6) + " " + typed.unit + ", read before in this step";
+    return brief(typed.value) + " " + typed.unit + " is far from " + brief(*earlier) + " " + typed.unit +
+           ", read before in this step";
   }
   return {};
 }

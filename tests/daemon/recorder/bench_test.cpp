@@ -159,26 +159,28 @@ TEST_CASE("a stranger on the line is not read and not commanded") {
   CHECK(bench.bench->window(0).empty());
   CHECK_FALSE(bench.bench->instruments()[0].ready);
   CHECK(bench.bench->instruments()[0].state == "wrong identity");
-  CHECK(bench.has_event("identity_wrong"));
+  CHECK(bench.has_event("identity wrong"));
   CHECK_FALSE(bench.bench->channels()[0].value);
+}
+
+boost::asio::awaitable<void> command(FakeBench& on, bool& at_end) {
+  const auto set = co_await on.bench->apply("load", "power", 123.5);
+  CHECK(set.ok());
+  if (set.ok()) CHECK(set->value_or(0) == 123.5);
+  CHECK((co_await on.bench->switch_on("load")).ok());
+  CHECK(on.world.load_on);
+  CHECK((co_await on.bench->make_safe("load")).ok());
+  CHECK_FALSE(on.world.load_on);
+  CHECK_FALSE((co_await on.bench->apply("nobody", "power", 1)).ok());
+  CHECK_FALSE((co_await on.bench->apply("load", "colour", 1)).ok());
+  at_end = true;
 }
 
 TEST_CASE("commands by control; an unknown one is refused") {
   FakeBench bench;
   bench.run_for(1);
   bool done = false;
-  bench.finish([](FakeBench& on, bool& at_end) -> boost::asio::awaitable<void> {
-    const auto set = co_await on.bench->apply("load", "power", 123.5);
-    CHECK(set.ok());
-    if (set.ok()) CHECK(set->value_or(0) == 123.5);
-    CHECK((co_await on.bench->switch_on("load")).ok());
-    CHECK(on.world.load_on);
-    CHECK((co_await on.bench->make_safe("load")).ok());
-    CHECK_FALSE(on.world.load_on);
-    CHECK_FALSE((co_await on.bench->apply("nobody", "power", 1)).ok());
-    CHECK_FALSE((co_await on.bench->apply("load", "colour", 1)).ok());
-    at_end = true;
-  }(bench, done));
+  bench.finish(command(bench, done));
   CHECK(done);
 }
 

@@ -50,9 +50,11 @@ void begin(RunBench& bench, Fault fault) {
   }
 }
 
-void end(RunBench& bench) {
+/// Returns: the instant of the end.
+std::int64_t end(RunBench& bench) {
   bench.meter.fault = FakeInstrument::Fault::none;
   bench.meter.come_back();
+  return bench.clock->now_ns();
 }
 
 std::vector<Row> table() {
@@ -83,6 +85,7 @@ TEST_CASE("each fault against each action: the end state, no wrong value as good
   bench.run_for(1.0);
   begin(bench, row.fault);
   const auto fault_ns = bench.clock->now_ns();
+  std::int64_t back_ns = 0;
   bench.run_for(2.5);
 
   if (row.end == RunPhase::holding) {
@@ -91,20 +94,19 @@ TEST_CASE("each fault against each action: the end state, no wrong value as good
     CHECK_THAT(bench.now().waits_for, Catch::Contains("power stays on"));
     bench.run_for(20);
     CHECK(bench.now().phase == RunPhase::holding);
-    end(bench);
+    back_ns = end(bench);
     bench.run_for(8);  // it is found again
     REQUIRE(bench.sequencer->resume().ok());
   } else if (row.end == RunPhase::stopped) {
     bench.run_until([&] { return bench.off(); }, 3);
-    end(bench);
+    back_ns = end(bench);
   } else {
     if (row.end == RunPhase::done && row.missing == setup::MissingAction::next) {
       CHECK(bench.now().step == 1);
     }
     bench.run_for(1.0);
-    end(bench);
+    back_ns = end(bench);
   }
-  const auto back_ns = bench.clock->now_ns();
   bench.run_to_end();
   CHECK(bench.off());
   CHECK(bench.now().warnings.empty());
@@ -206,6 +208,10 @@ TEST_CASE("held, and then stopped or left by the person") {
   guard.above = 95;
   guard.action = setup::GuardAction::hold;
   stair.guards.push_back(guard);
+  auto overvoltage = guard_on("output voltage");
+  overvoltage.above = 264;
+  stair.guards.push_back(overvoltage);
+  stair.end.discharge_s = 0;
   const auto run = bench.start(stair);
   bench.run_to(StepPhase::average);
   bench.world.heat_c = 99;
@@ -230,10 +236,11 @@ TEST_CASE("held, and then stopped or left by the person") {
     CHECK(bench.stored(run).steps[1].state == store::StepState::done);
   }
   SECTION("a guard that stops wins over the hold") {
-    bench.sequencer->on_change({});
     bench.world.voltage = 300.0;
     bench.run_for(1);
-    CHECK(bench.now().phase == RunPhase::holding);  // nothing guards the voltage in this stair
+    CHECK(bench.now().phase == RunPhase::stopped);
+    CHECK(bench.off());
+    CHECK_THAT(bench.now().reason, Catch::Contains("output voltage is 299.998 V, above 264 V"));
   }
 }
 
@@ -241,7 +248,9 @@ TEST_CASE("blanking lets the inrush of a set-point change pass, and no longer") 
   const double sag_s = GENERATE(0.8, 3.0);
   CAPTURE(sag_s);
   RunBench bench;
-  auto stair = fake_stair({quick_step("first", 100), quick_step("second", 200)});
+  auto second = quick_step("second", 200);
+  second.average_s = 6;
+  auto stair = fake_stair({quick_step("first", 100), second});
   auto guard = guard_on("output voltage");
   guard.below = 195;
   guard.blanking_s = 1.5;
