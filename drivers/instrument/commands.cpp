@@ -85,6 +85,16 @@ net::awaitable<CommandOutcome> Instrument::Impl::enqueue(const ProfileSetting* s
 net::awaitable<CommandOutcome> Instrument::Impl::wait_for(JobPointer job) {
   const auto notice = std::make_shared<link::Notice>(clock_, executor_);
   job->waiters.push_back(notice);
+  // Whoever waited may be cancelled: what nobody expects any more is not sent. The safe state goes on.
+  struct Withdraw {
+    Impl& impl;
+    const JobPointer& job;
+    ~Withdraw() {
+      if (job->outcome || job == impl.safe_) return;
+      std::erase(impl.waiting_, job);
+      job->outcome = CommandOutcome{CommandState::unreachable, "withdrawn", {}};
+    }
+  } const withdraw{*this, job};
   while (!job->outcome && clock_.now_ns() < job->deadline_ns) co_await notice->wait_until(job->deadline_ns);
   if (!job->outcome) {
     // Never to be sent later, when nobody expects it any more.

@@ -144,7 +144,9 @@ net::awaitable<Conversation::Recognised> Conversation::ask_identity(std::int64_t
       co_return Recognised::matched;
     }
     ++thrown_away_;
-    if (!text.empty()) stranger_ = dialect::printable(text);
+    // Bytes that are no text are noise, or come at another rate; they name nobody.
+    const bool noise = std::any_of(text.begin(), text.end(), [](char c) { return c < ' ' || c > '~'; });
+    if (!text.empty() && !noise) stranger_ = dialect::printable(text);
   }
 }
 

@@ -116,6 +116,8 @@ class Stream : public std::enable_shared_from_this<Stream> {
       const auto count = ::read(descriptor_.native_handle(), bytes.data(), bytes.size());
       if (count > 0) {
         inbox_.append({bytes.data(), static_cast<std::size_t>(count)});
+        if (static_cast<std::size_t>(count) < bytes.size())
+          break;  // waiting tells of what comes, or of the end
         continue;
       }
       if (count < 0 && errno == EINTR) continue;

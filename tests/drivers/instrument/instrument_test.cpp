@@ -250,6 +250,49 @@ TEST_CASE("an instrument may be destroyed with its coroutines unfinished, and th
   CHECK(bench.sink.events.size() == told);
 }
 
+TEST_CASE("cancelling the task ends it, and whoever waits for a command hears of it") {
+  VirtualBench bench;
+  Instrument load{bench.io.get_executor(), *bench.clock,           bench.opener(),
+                  test_profile("load"),    settings_named("load"), bench.sink};
+  link::TaskScope polling{bench.io.get_executor(), rethrow};
+  polling.spawn(load.run());
+  bench.clock->run(kSecond_ns / 10);  // waiting for its identity, in vain
+  CommandOutcome outcome;
+  bench.tasks.spawn([](Instrument& i, CommandOutcome& out) -> net::awaitable<void> {
+    out = co_await i.apply("power", 300);
+  }(load, outcome));
+  bench.clock->run(kSecond_ns / 5);
+  bench.tasks.spawn(polling.close());
+  bench.clock->run(kSecond_ns / 5 + 1);
+  CHECK(polling.size() == 0);
+  CHECK(bench.tasks.size() == 0);
+  CHECK(load.state() == State::stopped);
+  CHECK(outcome.state == CommandState::unreachable);
+}
+
+TEST_CASE("a command whose waiter was cancelled is not sent") {
+  VirtualBench bench;
+  Instrument load{bench.io.get_executor(), *bench.clock,           bench.opener(),
+                  test_profile("load"),    settings_named("load"), bench.sink};
+  link::TaskScope commands{bench.io.get_executor(), rethrow};
+  bench.tasks.spawn(load.run());
+  bench.clock->run(kSecond_ns / 10);  // nobody has answered yet
+  commands.spawn([](Instrument& i) -> net::awaitable<void> {
+    const auto outcome = co_await i.apply("power", 300);
+    CHECK(outcome.state == CommandState::confirmed);  // never reached
+  }(load));
+  bench.clock->run(kSecond_ns / 5);
+  bench.tasks.spawn(commands.close());
+  bench.tasks.spawn(answer_when_open(bench, kMilli_ns, "0.1"));
+  bench.clock->run(3 * kSecond_ns);
+  CHECK(commands.size() == 0);
+  CHECK(load.state() == State::ready);
+  CHECK(bench.sink.count(EventKind::command_sent) == 0);
+  CHECK(bench.sink.exchanges.size() > 3);
+  load.stop();
+  bench.clock->run();
+}
+
 // The oracle of "no wrong value stored as good": every reply carries a number that says which query it
 // answers.
 namespace {
