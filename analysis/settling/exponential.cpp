@@ -16,8 +16,8 @@ namespace {
 using base::Outcome;
 using base::Refusal;
 
-constexpr std::size_t kMostReadings = 512;
-constexpr std::size_t kMostBlocks = 256;
+constexpr std::size_t kMostReadings = 256;
+constexpr std::size_t kMostBlocks = 128;
 constexpr double kSlowest = 1e-3;  ///< slowest rate of the search, per span: tau = 1000 spans
 
 std::string count_text(std::size_t count) {

@@ -29,7 +29,7 @@ ScaledTrace scaled(const Trace& trace);
 /// its mean.
 ScaledTrace block_means(const ScaledTrace& trace, std::size_t most);
 
-/// What the fits work on: readings up to 512, beyond that 256 means.
+/// What the fits work on: readings up to 256, beyond that 128 means.
 ScaledTrace fitting_points(const Trace& trace);
 
 /// An end and one constant: the best of 48 rates, then down.

@@ -63,7 +63,7 @@ void widen_for_hidden(Interval& end, const Trace& trace, const ExponentialFit& m
   std::vector<double> rates;
   for (const double tau : model.tau_s) rates.push_back(whole.span_s / tau);
   rates.push_back(0.0);
-  constexpr int kSteps = 4;
+  constexpr int kSteps = 3;
   const double first = std::min(2.0 * model.longest_tau_s(), slowest_tau_s);
   for (int step = 0; step < kSteps; ++step) {
     const double tau = first * std::pow(slowest_tau_s / first, step / static_cast<double>(kSteps - 1));

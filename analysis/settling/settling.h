@@ -82,7 +82,7 @@ struct ExponentialFit {
   std::vector<double> tau_s;
   std::vector<double> tau_standard_error_s;
   std::size_t samples = 0;  ///< readings of the trace
-  std::size_t points = 0;   ///< what was fitted: the readings, or 256 means of neighbours where they are many
+  std::size_t points = 0;   ///< what was fitted: the readings, or 128 means of neighbours where they are many
   std::size_t degrees_of_freedom = 0;        ///< of the points
   double residual_sum_of_squares = 0.0;      ///< over the points
   double residual_standard_deviation = 0.0;  ///< of a point: sqrt(RSS / degrees of freedom)
