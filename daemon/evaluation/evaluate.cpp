@@ -108,7 +108,7 @@ std::vector<WeightedResult> weighted_of(const setup::Hookup& hookup, const setup
                    {}});
   }
   const std::string voltage = stair.ratings.input_voltage_v > 0.0
-                                  ? base::print_significant(stair.ratings.input_voltage_v, 4) + " V"
+                                  ? base::print_number(stair.ratings.input_voltage_v) + " V"
                                   : std::string{};
   out.push_back(
       to_result(efficiency::weighted_efficiency(efficiency::Scheme::cec, rated_w, points, fitted, voltage)));

@@ -56,9 +56,18 @@ Estimate normal(double half_width, const WindowContext& context, const std::stri
                   half_width / kNormal95};
 }
 
+/// Greatest less least value of the step's approach: no more than was seen to move is claimed to move still.
+double observed_span(const Track& track, double begun_s, const WindowContext& context) {
+  const Stretch approach = stretch(track, begun_s, context.to_s);
+  if (approach.size() == 0) return 0.0;
+  const auto values = approach.values().value;
+  const auto [least, most] = std::minmax_element(values.begin(), values.end());
+  return *most - *least;
+}
+
 /// The end as measured: the line at the end of the window, and what may still come, one-sided.
 Estimate measured_end(const ChannelValue& value, const std::optional<settling::Verdict>& verdict,
-                      const WindowContext& context) {
+                      const WindowContext& context, double begun_s) {
   double end = value.middle;
   Estimate extra{0.0};
   if (value.window) {
@@ -68,9 +77,10 @@ Estimate measured_end(const ChannelValue& value, const std::optional<settling::V
                    "reading off the end of the window, " + value.channel->name);
   }
   Estimate out = extra.with_value(end);
-  if (verdict && verdict->end) {
-    const double low = std::min(0.0, verdict->end->low - end);
-    const double high = std::max(0.0, verdict->end->high - end);
+  if (verdict && verdict->end && value.stretch.track != nullptr) {
+    const double span = observed_span(*value.stretch.track, begun_s, context);
+    const double low = std::clamp(verdict->end->low - end, -span, 0.0);
+    const double high = std::clamp(verdict->end->high - end, 0.0, span);
     const std::string name = "remaining change of " + value.channel->name;
     out =
         out + estimate::bounded(low, high,
@@ -87,7 +97,8 @@ Estimate predicted_end(const ChannelValue& value, const settling::Interval& end,
 }
 
 TemperatureResult result_of(const setup::TemperaturePoint& point, const ChannelValue& value,
-                            const std::optional<settling::Verdict>& verdict, const WindowContext& context) {
+                            const std::optional<settling::Verdict>& verdict, const WindowContext& context,
+                            double begun_s) {
   TemperatureResult out;
   out.place = point.place;
   out.channel = point.channel;
@@ -98,8 +109,8 @@ TemperatureResult result_of(const setup::TemperaturePoint& point, const ChannelV
     return out;
   }
   const bool predicted = verdict && verdict->by == settling::SettledBy::prediction && verdict->end;
-  const Estimate end =
-      predicted ? predicted_end(value, *verdict->end, context) : measured_end(value, verdict, context);
+  const Estimate end = predicted ? predicted_end(value, *verdict->end, context)
+                                 : measured_end(value, verdict, context, begun_s);
   out.how = predicted ? "predicted" : "measured";
   out.end = unknown ? without_uncertainty(end.value(), "degC", value.unknown)
                     : to_quantity(end + errors->with_value(0.0), "degC");
@@ -117,7 +128,8 @@ std::vector<TemperatureResult> temperatures_of(const setup::Hookup& hookup, cons
   for (const setup::TemperaturePoint& point : hookup.temperatures) {
     const ChannelValue* value = find(channels, point.channel);
     if (value == nullptr) continue;
-    out.push_back(result_of(point, *value, verdict_of(plan, tracks, point, context, begun_s, last), context));
+    out.push_back(
+        result_of(point, *value, verdict_of(plan, tracks, point, context, begun_s, last), context, begun_s));
     if (const ChannelValue* ambient = find(channels, point.ambient_channel)) {
       out.back().ambient = either(ambient->with_noise(context), ambient->plain, "degC", ambient->unknown);
     }
