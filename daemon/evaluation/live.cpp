@@ -11,6 +11,9 @@
 namespace loadstair::evaluation {
 namespace {
 
+/// A temperature that stood still within this still has an end to show, K.
+constexpr double kLeastSpanK = 1.0;
+
 std::string shown(double value) {
   return base::print_significant(value, 2);
 }
@@ -65,6 +68,13 @@ Judged judge_electrical(const setup::ElectricalSettle& wanted, const LiveTraces&
   return waits(wanted.channel, what, verdict->wait_s);
 }
 
+/// Beyond as much again as the step has shown, an end says nothing to a person who waits for it.
+bool is_believable(const settling::Interval& end, const series::TimeSeries& trace) {
+  const auto [least, most] = std::minmax_element(trace.value.begin(), trace.value.end());
+  const double span = std::max(*most - *least, kLeastSpanK);
+  return end.low >= *least - span && end.high <= *most + span;
+}
+
 Judged judge_thermal(const setup::ThermalSettle& wanted, const LiveTraces& traces, bool at_last_step,
                      std::optional<WindowState::End>& end) {
   const series::TimeSeries& trace = traces.thermal;
@@ -72,7 +82,7 @@ Judged judge_thermal(const setup::ThermalSettle& wanted, const LiveTraces& trace
   const std::vector<double> ambient = read_off(traces.ambient, trace.time_s);
   const auto verdict = settling::settled_thermally(trace, ambient, criterion_of(wanted, !at_last_step));
   if (!verdict) return waits(wanted.channel, verdict.refusal().reason);
-  if (verdict->end) {
+  if (verdict->end && is_believable(*verdict->end, trace)) {
     end =
         WindowState::End{verdict->end->value, verdict->end->low, verdict->end->high, verdict->end_predicted};
   }
