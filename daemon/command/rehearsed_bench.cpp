@@ -160,7 +160,7 @@ rehearsal::MeterFunction function_of(const setup::Channel& channel, const Place&
     if (place.quantity == rehearsal::Quantity::voltage) function.impedance_ohm = range.impedance_ohm;
     function.burden_tolerance_percent = range.impedance_tolerance_percent.value_or(30.0);
     function.ranges.push_back(as_rehearsed);
-    function.noise = range.upto * noise_share;
+    if (function.noise == 0.0) function.noise = range.upto * noise_share;  // as on the smallest range
   }
   if (channel.conversion.shunt) {
     function.shunt = rehearsal::Shunt{channel.conversion.shunt->resistance_ohm,

@@ -45,7 +45,7 @@ bool same_secret(const std::string& a, const std::string& b) {
 /// The members of a request body, with a type each.
 class Members {
  public:
-  explicit Members(json body) : body_{std::move(body)} {}
+  explicit Members(json body) : body_(std::move(body)) {}  // in braces it would become a list
 
   [[nodiscard]] std::string text(const char* name, std::string otherwise = {}) const {
     const auto found = body_.find(name);
@@ -79,7 +79,7 @@ class Api {
     }
     json body = json::parse(request.body.empty() ? "{}" : request.body, nullptr, false);
     if (!body.is_object()) co_return refused(400, "the body is not a JSON object");
-    co_return change(path, Members{std::move(body)});
+    co_return change(path, Members(std::move(body)));
   }
 
  private:
