@@ -1,5 +1,5 @@
-// Records of older programs stay readable. schema_1.db was written once, by the program of the first schema, from
-// sample_run.h (one sealed run, one left running), and is never written again.
+// Records of older programs stay readable. schema_1.db was written once, by the program of the first schema,
+// from sample_run.h (one sealed run, one left running), and is never written again.
 #include <catch2/catch.hpp>
 #include <filesystem>
 
