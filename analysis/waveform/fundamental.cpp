@@ -119,10 +119,13 @@ base::Outcome<FoundFundamental> find_fundamental(const Prepared& channel, double
     const bool overlapping_fit = found.frequency * static_cast<double>(channel.size()) >= kLeastCycles;
     if (!overlapping_fit || found.frequency * kLeastPeriod > 1.0) break;
     const PhaseSlope slope = phase_slope(channel, found.frequency, cycles);
-    if (std::abs(slope.cycles_per_cycle) >= last_step) break;  // no longer shrinking: rounding or noise
+    if (!(std::abs(slope.cycles_per_cycle) < last_step)) break;  // no longer shrinking: rounding or noise
     last_step = std::abs(slope.cycles_per_cycle);
+    const double moved = found.frequency * (1.0 + slope.cycles_per_cycle);
+    // Beyond the line's own width the phase belongs to something else; the line's frequency stays.
+    if (!(std::abs(moved - line->frequency) * static_cast<double>(channel.size()) < 1.0)) break;
     found.standard_uncertainty = slope.standard_uncertainty * found.frequency;
-    found.frequency *= 1.0 + slope.cycles_per_cycle;
+    found.frequency = moved;
     if (last_step < 1e-15) break;
   }
   return found;

@@ -141,7 +141,10 @@ base::Outcome<Line> find_largest_line(std::span<const double> samples, double lo
   const double above = std::abs(spectrum[peak + 1]);
   const double ratio = std::max(below, above) / std::abs(spectrum[peak]);
   const double shift = (2.0 * ratio - 1.0) / (ratio + 1.0);
-  const double position = static_cast<double>(peak) + (above >= below ? shift : -shift);
+  // A drift's peak may be placed at nothing at all; half a cycle is the least that a record can show.
+  constexpr double kLeastCycles = 0.5;
+  const double position =
+      std::max(kLeastCycles, static_cast<double>(peak) + (above >= below ? shift : -shift));
   Line found{position / static_cast<double>(count), line / total};
   // Fisher's test of the largest of n ordinates at 1e-6; a Hann line spreads over about 1.6 times the share.
   const double ordinates = std::max(3.0, static_cast<double>(count) / 3.0);
