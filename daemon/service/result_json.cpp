@@ -1,7 +1,7 @@
 #include "daemon/service/result_json.h"
 
 #include <chrono>
-#include <ctime>
+#include <map>
 #include <nlohmann/json.hpp>
 
 #include "analysis/base/number.h"
@@ -166,7 +166,9 @@ std::string iso_time(std::int64_t utc_ns) {
 base::Outcome<evaluation::RunResult> results_of(const store::Reader& reader, store::RunId run) {
   const auto stored = reader.load_run(run);
   if (!stored) return stored.refusal();
-  const auto hookup = setup::read_hookup(stored->hookup_text, stored->hookup_file);
+  std::map<std::string, std::string> profiles;
+  for (const auto& profile : stored->profiles) profiles[profile.name] = profile.text;
+  const auto hookup = setup::read_hookup(stored->hookup_text, stored->hookup_file, profiles);
   if (!hookup) return hookup.refusal();
   const auto stair = setup::read_stair(stored->stair_text, stored->stair_file);
   if (!stair) return stair.refusal();

@@ -174,19 +174,18 @@ bool has_role(const Hookup& hookup, std::string_view role) {
 // The cautions of the trade that this bench gives occasion for; local codes and licensed practice come first.
 void add_usual_cautions(const Hookup& hookup, Findings& findings) {
   const auto note = [&](std::string text) { findings.push_back({Severity::note, std::move(text)}); };
+  note(
+      "Loadstair is not a safety device: have a hardware emergency stop within reach, and never work alone. "
+      "Local codes and licensed practice come first.");
+  note(
+      "Before touching anything: isolate, then prove dead with a tester (prove the tester, test, prove the "
+      "tester again), never by this screen. Let the timed discharge pass, then measure.");
   if (any_live(hookup)) {
-    note(
-        "Loadstair is not a safety device: have a hardware emergency stop within reach, and never work "
-        "alone.");
-    note(
-        "Before touching anything: isolate, then prove dead with a tester (prove the tester, test, prove the "
-        "tester "
-        "again), never by this screen. Let the timed discharge pass, then measure.");
     note(
         "Leads, probes and meters: rated in category and voltage for the working voltage to earth. Check the "
         "ammeter's jacks before every voltage reading; DC-rated fuses.");
     note("Computer, serial and USB shields tie an instrument to earth unless its interface is isolated.");
-    note("Residual-current devices may not trip on DC faults. Local codes and licensed practice come first.");
+    note("Residual-current devices may not trip on DC faults.");
   }
   const bool dc_input = std::any_of(hookup.ports.begin(), hookup.ports.end(), [](const Port& port) {
     return port.live && port.kind == PortKind::dc && port.direction == Direction::input;

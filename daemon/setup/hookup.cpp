@@ -48,9 +48,11 @@ void keep_needed_queries(Hookup& hookup) {
   }
 }
 
-Hookup read_top(const document::Value& document, const std::string& file, Problem& problem) {
+Hookup read_top(const document::Value& document, const std::string& file,
+                const std::map<std::string, std::string>& profiles, Problem& problem) {
   Hookup hookup;
   hookup.file = file;
+  hookup.kept_profiles = profiles;
   ObjectReader top{document, kHookupForm, problem};
   if (problem.found()) return hookup;
   read_format(top);
@@ -83,10 +85,15 @@ std::string beside(const std::string& file, const std::string& path) {
 }
 
 base::Outcome<Hookup> read_hookup(std::string_view text, const std::string& file) {
+  return read_hookup(text, file, {});
+}
+
+base::Outcome<Hookup> read_hookup(std::string_view text, const std::string& file,
+                                  const std::map<std::string, std::string>& profiles) {
   const auto document = document::parse(text, file);
   if (!document) return document.refusal();
   Problem problem{file};
-  Hookup hookup = read_top(*document, file, problem);
+  Hookup hookup = read_top(*document, file, profiles, problem);
   if (problem.found()) return problem.refusal();
   hookup.text = std::string{text};
   return hookup;

@@ -172,8 +172,9 @@ struct RehearsalSection {
 };
 
 struct Hookup {
-  std::string file;  ///< as given, for messages
-  std::string text;  ///< the whole file, for the record
+  std::map<std::string, std::string> kept_profiles;  ///< texts by name that a record kept; they come first
+  std::string file;                                  ///< as given, for messages
+  std::string text;                                  ///< the whole file, for the record
   std::string bench;
   std::vector<Instrument> instruments;
   std::vector<Channel> channels;
@@ -193,6 +194,9 @@ struct Hookup {
 /// Reads a hook-up file's text. `file` is used in messages and to find profiles beside it.
 /// Refusal: place "FILE:line:column", reason with what would be right; the first problem only.
 [[nodiscard]] base::Outcome<Hookup> read_hookup(std::string_view text, const std::string& file);
+/// The same for a text out of a record: profiles come from `profiles` (text by name), not from today's files.
+[[nodiscard]] base::Outcome<Hookup> read_hookup(std::string_view text, const std::string& file,
+                                                const std::map<std::string, std::string>& profiles);
 [[nodiscard]] base::Outcome<Hookup> load_hookup(const std::string& file);
 
 /// A path that stands in a file, as the program may open it: relative ones are relative to the file's folder.

@@ -134,7 +134,9 @@ void read_calibration(ObjectReader& reader, Instrument& one) {
 void read_profile_of(ObjectReader& reader, const Hookup& hookup, Instrument& one) {
   one.profile_name = reader.text("profile", "\"profile\": \"scpi-meter\"");
   if (reader.problem().found()) return;
-  auto profile = find_profile(one.profile_name, hookup.file);
+  const auto kept = hookup.kept_profiles.find(one.profile_name);
+  auto profile = kept != hookup.kept_profiles.end() ? read_profile(kept->second, one.profile_name)
+                                                    : find_profile(one.profile_name, hookup.file);
   if (profile) {
     one.profile = *std::move(profile);
   } else if (profile.refusal().place.empty()) {
