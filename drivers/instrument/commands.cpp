@@ -15,7 +15,7 @@ namespace {
 using End = Conversation::End;
 
 constexpr int kTries = 2;
-constexpr std::int64_t kSafeRetry_ns = 100'000'000;
+constexpr std::int64_t kSafeRetryNs = 100'000'000;
 
 std::int64_t ns_of(double seconds) {
   return static_cast<std::int64_t>(seconds * 1e9);
@@ -296,11 +296,11 @@ net::awaitable<bool> Instrument::Impl::do_safe() {
     job->written = false;
     // An answer that is none of ours may belong to another query.
     job->resynchronise_first = true;
-    if (clock_.now_ns() + kSafeRetry_ns >= job->deadline_ns) {
+    if (clock_.now_ns() + kSafeRetryNs >= job->deadline_ns) {
       finish(job, CommandState::refused, "NOT CONFIRMED: " + last_said + ". Make it safe by hand");
       co_return true;
     }
-    co_await clock_.sleep_for(std::chrono::nanoseconds{kSafeRetry_ns});
+    co_await clock_.sleep_for(std::chrono::nanoseconds{kSafeRetryNs});
   }
   co_return !stopping_;
 }

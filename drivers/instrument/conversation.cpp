@@ -12,13 +12,13 @@ namespace {
 namespace net = boost::asio;
 using link::Status;
 
-constexpr std::int64_t kMilli_ns = 1'000'000;
+constexpr std::int64_t kMilliNs = 1'000'000;
 // Three characters at 9600 baud: the second of two equal lines has begun by then.
-constexpr std::int64_t kPauseBetween_ns = 4 * kMilli_ns;
+constexpr std::int64_t kPauseBetweenNs = 4 * kMilliNs;
 // A line is silent after half a timeout, within these bounds.
-constexpr std::int64_t kSilenceLeast_ns = 20 * kMilli_ns;
-constexpr std::int64_t kSilenceMost_ns = 500 * kMilli_ns;
-constexpr std::int64_t kWriteLeast_ns = 1000 * kMilli_ns;
+constexpr std::int64_t kSilenceLeastNs = 20 * kMilliNs;
+constexpr std::int64_t kSilenceMostNs = 500 * kMilliNs;
+constexpr std::int64_t kWriteLeastNs = 1000 * kMilliNs;
 // An instrument that is far too slow for its timeout still gets this many timeouts to say who it is.
 constexpr std::int64_t kIdentityPatience = 5;
 
@@ -48,7 +48,7 @@ void Conversation::close() {
 }
 
 std::int64_t Conversation::timeout_ns() const {
-  return std::max<std::int64_t>(static_cast<std::int64_t>(profile_.timeout_s * 1e9), kMilli_ns);
+  return std::max<std::int64_t>(static_cast<std::int64_t>(profile_.timeout_s * 1e9), kMilliNs);
 }
 
 bool Conversation::is_wanted(std::string_view line) const {
@@ -64,7 +64,7 @@ bool Conversation::is_wanted(std::string_view line) const {
 net::awaitable<bool> Conversation::write(std::string bytes) {
   const auto link = link_;
   if (!link) co_return false;
-  const auto deadline_ns = clock_.now_ns() + std::max(kWriteLeast_ns, timeout_ns());
+  const auto deadline_ns = clock_.now_ns() + std::max(kWriteLeastNs, timeout_ns());
   while (writing_ && clock_.now_ns() < deadline_ns) co_await write_ended_.wait_until(deadline_ns);
   if (writing_) co_return false;
   writing_ = true;
@@ -86,7 +86,7 @@ net::awaitable<bool> Conversation::interject(std::string bytes) {
 }
 
 link::Wait Conversation::pause_between() {
-  return clock_.sleep_until(clock_.now_ns() + kPauseBetween_ns);
+  return clock_.sleep_until(clock_.now_ns() + kPauseBetweenNs);
 }
 
 net::awaitable<Conversation::Answer> Conversation::ask(std::string query) {
@@ -151,7 +151,7 @@ net::awaitable<Conversation::Recognised> Conversation::ask_identity(std::int64_t
 }
 
 net::awaitable<Conversation::Recognised> Conversation::identify() {
-  const auto patience_ns = std::max(2 * timeout_ns(), 1000 * kMilli_ns);
+  const auto patience_ns = std::max(2 * timeout_ns(), 1000 * kMilliNs);
   auto recognised = Recognised::silent;
   // A second time where something else came: it may have been the end of an old reply, or a greeting.
   for (int round = 0; round < 2; ++round) {
@@ -167,7 +167,7 @@ net::awaitable<Conversation::Recognised> Conversation::identify() {
 
 net::awaitable<bool> Conversation::await_silence() {
   const auto link = link_;
-  const auto silence_ns = std::clamp(timeout_ns() / 2, kSilenceLeast_ns, kSilenceMost_ns);
+  const auto silence_ns = std::clamp(timeout_ns() / 2, kSilenceLeastNs, kSilenceMostNs);
   const auto give_up_ns = clock_.now_ns() + 20 * silence_ns;
   while (clock_.now_ns() < give_up_ns) {
     const auto line = co_await link->read_line(profile_.terminator, clock_.now_ns() + silence_ns);

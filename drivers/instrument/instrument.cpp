@@ -17,15 +17,15 @@ using End = Conversation::End;
 using Recognised = Conversation::Recognised;
 using link::Status;
 
-constexpr std::int64_t kMilli_ns = 1'000'000;
-constexpr std::int64_t kSecond_ns = 1'000'000'000;
+constexpr std::int64_t kMilliNs = 1'000'000;
+constexpr std::int64_t kSecondNs = 1'000'000'000;
 // An instrument without queries is asked who it is this often, so that a lost link is noticed.
-constexpr std::int64_t kPresence_ns = kSecond_ns;
+constexpr std::int64_t kPresenceNs = kSecondNs;
 // Lines are missing after five of their periods, and the link is opened anew after five times that.
 constexpr std::int64_t kSilentPeriods = 5;
 constexpr int kSilencesToLoss = 5;
-constexpr std::int64_t kSilenceLeast_ns = 2 * kSecond_ns;
-constexpr std::int64_t kSilenceUnknown_ns = 10 * kSecond_ns;
+constexpr std::int64_t kSilenceLeastNs = 2 * kSecondNs;
+constexpr std::int64_t kSilenceUnknownNs = 10 * kSecondNs;
 
 std::int64_t ns_of(double seconds) {
   return static_cast<std::int64_t>(seconds * 1e9);
@@ -219,8 +219,8 @@ net::awaitable<bool> Instrument::Impl::send_start_commands() {
 }
 
 net::awaitable<void> Instrument::Impl::serve_queries() {
-  const auto period_ns = profile_.queries.empty() ? std::max(ns_of(settings_.poll_s), kPresence_ns)
-                                                  : std::max(ns_of(settings_.poll_s), kMilli_ns);
+  const auto period_ns = profile_.queries.empty() ? std::max(ns_of(settings_.poll_s), kPresenceNs)
+                                                  : std::max(ns_of(settings_.poll_s), kMilliNs);
   // The next multiple of the period from an instant on: a slow round leaves some out and never shifts the
   // rest.
   const auto next_tick = [period_ns](std::int64_t from_ns) {
@@ -324,7 +324,7 @@ net::awaitable<bool> Instrument::Impl::ask_query(std::size_t query) {
 
 net::awaitable<bool> Instrument::Impl::serve_lines() {
   const auto period_ns = ns_of(settings_.update_s) * kSilentPeriods;
-  const auto silence_ns = period_ns > 0 ? std::max(period_ns, kSilenceLeast_ns) : kSilenceUnknown_ns;
+  const auto silence_ns = period_ns > 0 ? std::max(period_ns, kSilenceLeastNs) : kSilenceUnknownNs;
   const auto name = talk_.link()->name();
   bool first = true;
   bool recognised = false;

@@ -203,12 +203,12 @@ std::vector<Reading> Interpreter::silent_values(std::int64_t now_ns, std::int64_
   std::vector<Reading> readings;
   for (std::size_t index = 0; index < values_.size(); ++index) {
     auto& value = values_[index];
-    if (value.silent || now_ns - value.seen_ns < limit_ns) continue;
+    if (!profile_.values[index].expected || value.silent || now_ns - value.seen_ns < limit_ns) continue;
     value.silent = true;
     readings.push_back(
         {static_cast<std::int32_t>(index), now_ns - age_ns_, half_update_ns_, kNoNumber, kMissing, 0.0});
     tell_(EventKind::timeout, profile_.values[index].name + ": no line for " +
-                                  dialect::write_number(static_cast<double>(limit_ns / 1'000'000) / 1e3) +
+                                  dialect::write_number(static_cast<double>(limit_ns) / 1e9) +
                                   " s; is it on, and does it send?");
   }
   return readings;

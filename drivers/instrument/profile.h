@@ -15,6 +15,7 @@ struct ProfileValue {
   std::string name;          ///< "reading", "voltage", "power", "heatsink"
   std::string unit;          ///< in which the value is stored: "V", "A", "W", "degC", "mV" is stored as V
   std::string line_pattern;  ///< text lines only: see dialect/text_line.h
+  bool expected = true;      ///< text lines: its silence is told; false for values that nobody uses
 };
 
 /// A query (SCPI) and the values its reply holds, in order; "" skips a field.

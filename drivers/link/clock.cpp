@@ -31,14 +31,14 @@ class RealClock final : public Clock {
   }
 
   [[nodiscard]] std::unique_ptr<Timer> make_timer(boost::asio::any_io_executor executor) override {
-    return std::make_unique<RealTimer>(std::move(executor));
+    return std::make_unique<RealTimer>(executor);
   }
 
  private:
   class RealTimer final : public Timer {
    public:
-    explicit RealTimer(boost::asio::any_io_executor executor)
-        : inner_{std::move(executor), steady_timer::time_point::max()} {}
+    explicit RealTimer(const boost::asio::any_io_executor& executor)
+        : inner_{executor, steady_timer::time_point::max()} {}
 
     void expires_at(std::int64_t t_ns) override {
       t_ns_ = t_ns;

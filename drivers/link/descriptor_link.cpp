@@ -20,9 +20,9 @@ namespace {
 namespace net = boost::asio;
 
 // Above this nothing more is taken from the system: a peer that talks to nobody waits, as on any line.
-constexpr std::size_t kInboxLimit = 256 * 1024;
+constexpr std::size_t kInboxLimit = std::size_t{256} * 1024;
 // How often a pty master without a slave looks for one; the system gives no notice of it.
-constexpr std::int64_t kAbsentSlavePoll_ns = 20'000'000;
+constexpr std::int64_t kAbsentSlavePollNs = 20'000'000;
 
 /// Reads as soon as bytes arrive, so that their instant is theirs and not that of the reader's turn. Handlers
 /// and coroutines hold it by shared_ptr: the link may be destroyed while they wait.
@@ -133,7 +133,7 @@ class Stream : public std::enable_shared_from_this<Stream> {
   }
 
   void look_for_slave_later() {
-    slave_poll_->expires_at(clock_.now_ns() + kAbsentSlavePoll_ns);
+    slave_poll_->expires_at(clock_.now_ns() + kAbsentSlavePollNs);
     slave_poll_->inner().async_wait([self = shared_from_this()](const boost::system::error_code&) {
       if (!self->closed()) self->read_available();
     });

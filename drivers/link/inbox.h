@@ -14,7 +14,7 @@
 namespace loadstair::link {
 
 /// The most that a line may hold (Link::read_line).
-inline constexpr std::size_t kLineLimit = 64 * 1024;
+inline constexpr std::size_t kLineLimit = std::size_t{64} * 1024;
 
 class Inbox {
  public:

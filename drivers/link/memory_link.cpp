@@ -10,7 +10,7 @@ namespace loadstair::link {
 namespace {
 
 // Like a system's buffer: who writes without being read waits.
-constexpr std::size_t kCapacity = 256 * 1024;
+constexpr std::size_t kCapacity = std::size_t{256} * 1024;
 // Paced bytes arrive in pieces of this size, after the first alone (its instant is asked for).
 constexpr std::size_t kPiece = 16;
 

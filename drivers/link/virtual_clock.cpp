@@ -21,8 +21,8 @@ struct Agenda {
 /// A steady_timer that Asio never expires: it is parked far away and released when virtual time comes.
 class ParkedTimer final : public Clock::Timer {
  public:
-  ParkedTimer(std::shared_ptr<Agenda> agenda, boost::asio::any_io_executor executor)
-      : agenda_{std::move(agenda)}, inner_{std::move(executor), kParked} {}
+  ParkedTimer(std::shared_ptr<Agenda> agenda, const boost::asio::any_io_executor& executor)
+      : agenda_{std::move(agenda)}, inner_{executor, kParked} {}
   ~ParkedTimer() override { leave_queue(); }
   ParkedTimer(const ParkedTimer&) = delete;
   ParkedTimer& operator=(const ParkedTimer&) = delete;
@@ -80,7 +80,7 @@ class ParkedClock final : public VirtualClock {
   void step_utc(std::chrono::nanoseconds by) override { utc_offset_ns_ += by.count(); }
 
   [[nodiscard]] std::unique_ptr<Timer> make_timer(boost::asio::any_io_executor executor) override {
-    return std::make_unique<ParkedTimer>(agenda_, std::move(executor));
+    return std::make_unique<ParkedTimer>(agenda_, executor);
   }
 
   void run(std::int64_t until_ns) override {

@@ -19,7 +19,7 @@ namespace {
 
 namespace net = boost::asio;
 
-constexpr std::int64_t kPatience_ns = 100'000'000'000;
+constexpr std::int64_t kPatienceNs = 100'000'000'000;
 
 std::string flag_words(std::uint32_t flags) {
   const std::vector<std::pair<Flag, const char*>> words{
@@ -178,7 +178,7 @@ class Player {
 
   net::awaitable<void> act(Instrument& instrument, const std::string& action) {
     if (action.starts_with("> ")) {
-      const auto query = co_await far_->read_line("\n", clock_->now_ns() + kPatience_ns);
+      const auto query = co_await far_->read_line("\n", clock_->now_ns() + kPatienceNs);
       if (query.bytes != action.substr(2)) complain("'" + query.bytes + "' came instead of '" + action + "'");
     } else if (action.starts_with("<< ")) {
       co_await far_->write(unescape(action.substr(3)), clock_->now_ns());

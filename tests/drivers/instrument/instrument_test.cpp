@@ -31,8 +31,8 @@ using namespace loadstair;
 using namespace loadstair::instrument;
 using namespace std::chrono_literals;
 
-constexpr std::int64_t kMilli_ns = 1'000'000;
-constexpr std::int64_t kSecond_ns = 1'000'000'000;
+constexpr std::int64_t kMilliNs = 1'000'000;
+constexpr std::int64_t kSecondNs = 1'000'000'000;
 
 void rethrow(const std::exception_ptr& failure) {
   std::rethrow_exception(failure);
@@ -102,29 +102,29 @@ TEST_CASE("a reading stands for the middle of query and reply, less delay and ha
   settings.integration_s = 0.02;
   settings.delay_s = 0.007;
   auto profile = test_profile("meter");
-  std::int64_t half_width_ns = 15 * kMilli_ns + 50 * kMilli_ns;
+  std::int64_t half_width_ns = 15 * kMilliNs + 50 * kMilliNs;
   SECTION("free-running: half an update period wider") {}
   SECTION("triggered by the query") {
     profile.free_running = false;
-    half_width_ns = 15 * kMilli_ns;
+    half_width_ns = 15 * kMilliNs;
   }
   Instrument meter{bench.io.get_executor(), *bench.clock, bench.opener(), profile, settings, bench.sink};
   bench.tasks.spawn(meter.run());
-  bench.tasks.spawn(answer_when_open(bench, 30 * kMilli_ns, "+3.85012E+02"));
-  bench.clock->run(10 * kSecond_ns);
+  bench.tasks.spawn(answer_when_open(bench, 30 * kMilliNs, "+3.85012E+02"));
+  bench.clock->run(10 * kSecondNs);
   meter.stop();
   bench.clock->run();
   CHECK(bench.tasks.size() == 0);
   REQUIRE(bench.sink.exchanges.size() == 19);  // 0.5 s to 9.5 s: the grid does not drift
   for (std::size_t i = 0; i < bench.sink.exchanges.size(); ++i) {
     const auto& exchange = bench.sink.exchanges[i];
-    const auto asked_ns = static_cast<std::int64_t>(i + 1) * kSecond_ns / 2;
+    const auto asked_ns = static_cast<std::int64_t>(i + 1) * kSecondNs / 2;
     CHECK(exchange.sent_ns == asked_ns);
-    CHECK(exchange.received_ns == asked_ns + 30 * kMilli_ns);
+    CHECK(exchange.received_ns == asked_ns + 30 * kMilliNs);
     CHECK(exchange.query == "MEAS:VOLT?");
     CHECK(exchange.reply == "+3.85012E+02");
     REQUIRE(exchange.readings.size() == 1);
-    CHECK(exchange.readings[0].t_ns == asked_ns + 15 * kMilli_ns - 7 * kMilli_ns - 10 * kMilli_ns);
+    CHECK(exchange.readings[0].t_ns == asked_ns + 15 * kMilliNs - 7 * kMilliNs - 10 * kMilliNs);
     CHECK(exchange.readings[0].half_width_ns == half_width_ns);
   }
 }
@@ -136,13 +136,13 @@ TEST_CASE("a round that lasts longer than the period leaves instants out and doe
   Instrument meter{bench.io.get_executor(), *bench.clock, bench.opener(), profile,
                    settings_named("meter"), bench.sink};
   bench.tasks.spawn(meter.run());
-  bench.tasks.spawn(answer_when_open(bench, 700 * kMilli_ns, "1.0"));
-  bench.clock->run(10 * kSecond_ns);
+  bench.tasks.spawn(answer_when_open(bench, 700 * kMilliNs, "1.0"));
+  bench.clock->run(10 * kSecondNs);
   meter.stop();
   bench.clock->run();
   REQUIRE(bench.sink.exchanges.size() >= 8);
   for (std::size_t i = 0; i < bench.sink.exchanges.size(); ++i) {
-    CHECK(bench.sink.exchanges[i].sent_ns == (static_cast<std::int64_t>(i) + 1) * kSecond_ns);
+    CHECK(bench.sink.exchanges[i].sent_ns == (static_cast<std::int64_t>(i) + 1) * kSecondNs);
   }
 }
 
@@ -152,16 +152,16 @@ TEST_CASE("at a real rate the reading's half-width covers query and delay, not t
   Instrument meter{bench.io.get_executor(), *bench.clock, bench.opener(), test_profile("meter"),
                    settings_named("meter"), bench.sink};
   bench.tasks.spawn(meter.run());
-  bench.tasks.spawn(answer_when_open(bench, 5 * kMilli_ns, "+3.85012E+02"));
-  bench.clock->run(3 * kSecond_ns);
+  bench.tasks.spawn(answer_when_open(bench, 5 * kMilliNs, "+3.85012E+02"));
+  bench.clock->run(3 * kSecondNs);
   meter.stop();
   bench.clock->run();
   REQUIRE_FALSE(bench.sink.exchanges.empty());
   const auto& exchange = bench.sink.exchanges[0];
-  constexpr std::int64_t kByte_ns = 10'000'000'000 / 9600;
+  constexpr std::int64_t kByteNs = 10'000'000'000 / 9600;
   // "MEAS:VOLT?" and its line end, 5 ms, the first byte of the reply.
-  CHECK(exchange.readings.at(0).half_width_ns == (11 * kByte_ns + 5 * kMilli_ns + kByte_ns) / 2);
-  CHECK(exchange.received_ns - exchange.sent_ns == 11 * kByte_ns + 5 * kMilli_ns + 13 * kByte_ns);
+  CHECK(exchange.readings.at(0).half_width_ns == (11 * kByteNs + 5 * kMilliNs + kByteNs) / 2);
+  CHECK(exchange.received_ns - exchange.sent_ns == 11 * kByteNs + 5 * kMilliNs + 13 * kByteNs);
 }
 
 TEST_CASE("the safe commands are on the wire at the instant they are asked for, a reply outstanding or not") {
@@ -180,7 +180,7 @@ TEST_CASE("the safe commands are on the wire at the instant they are asked for, 
           if (line.bytes == "*IDN?") co_await b.far->write("north bench,load,N-002,1.0\n", INT64_MAX);
         }
       }(bench, received));
-  bench.clock->run(500 * kMilli_ns + 1);  // the first query has just gone out
+  bench.clock->run(500 * kMilliNs + 1);  // the first query has just gone out
   REQUIRE(received.back().second == "MEAS:POW?");
   bench.tasks.spawn([](Instrument& i) -> net::awaitable<void> {
     const auto outcome = co_await i.make_safe();
@@ -189,8 +189,8 @@ TEST_CASE("the safe commands are on the wire at the instant they are asked for, 
   bench.clock->run(bench.clock->now_ns());
   REQUIRE(received.size() >= 2);
   CHECK(received.back().second == "POW 0");
-  CHECK(received.back().first == 500 * kMilli_ns + 1);
-  bench.clock->run(30 * kSecond_ns);
+  CHECK(received.back().first == 500 * kMilliNs + 1);
+  bench.clock->run(30 * kSecondNs);
   load.stop();
   bench.clock->run();
   CHECK(bench.tasks.size() == 0);
@@ -214,7 +214,7 @@ TEST_CASE("commands to an instrument that is not served end in time and send not
   }(load, states));
   bench.clock->run();
   CHECK(states == std::vector<CommandState>(4, CommandState::unreachable));
-  CHECK(bench.clock->now_ns() == 15 * kSecond_ns);  // 5 s for the set point, 10 s for the safe state
+  CHECK(bench.clock->now_ns() == 15 * kSecondNs);  // 5 s for the set point, 10 s for the safe state
   CHECK_FALSE(bench.far);
 }
 
@@ -223,8 +223,8 @@ TEST_CASE("two that ask for the safe state share one, and both hear of it") {
   Instrument load{bench.io.get_executor(), *bench.clock,           bench.opener(),
                   test_profile("load"),    settings_named("load"), bench.sink};
   bench.tasks.spawn(load.run());
-  bench.tasks.spawn(answer_when_open(bench, 5 * kMilli_ns, "0"));
-  bench.clock->run(2 * kSecond_ns + 300 * kMilli_ns);
+  bench.tasks.spawn(answer_when_open(bench, 5 * kMilliNs, "0"));
+  bench.clock->run(2 * kSecondNs + 300 * kMilliNs);
   int confirmed = 0;
   for (int i = 0; i < 2; ++i) {
     bench.tasks.spawn([](Instrument& instrument, int& count) -> net::awaitable<void> {
@@ -232,7 +232,7 @@ TEST_CASE("two that ask for the safe state share one, and both hear of it") {
       count += outcome.state == CommandState::confirmed ? 1 : 0;
     }(load, confirmed));
   }
-  bench.clock->run(4 * kSecond_ns);
+  bench.clock->run(4 * kSecondNs);
   CHECK(confirmed == 2);
   CHECK(bench.sink.count(EventKind::command_sent) == 2);  // INP OFF and POW 0, once
   load.stop();
@@ -244,7 +244,7 @@ TEST_CASE("an instrument may be destroyed with its coroutines unfinished, and th
   auto load = std::make_unique<Instrument>(bench.io.get_executor(), *bench.clock, bench.opener(),
                                            test_profile("load"), settings_named("load"), bench.sink);
   bench.tasks.spawn(load->run());
-  bench.clock->run(kSecond_ns / 10);
+  bench.clock->run(kSecondNs / 10);
   const auto told = bench.sink.events.size();
   load.reset();
   CHECK(bench.sink.events.size() == told);
@@ -256,14 +256,14 @@ TEST_CASE("cancelling the task ends it, and whoever waits for a command hears of
                   test_profile("load"),    settings_named("load"), bench.sink};
   link::TaskScope polling{bench.io.get_executor(), rethrow};
   polling.spawn(load.run());
-  bench.clock->run(kSecond_ns / 10);  // waiting for its identity, in vain
+  bench.clock->run(kSecondNs / 10);  // waiting for its identity, in vain
   CommandOutcome outcome;
   bench.tasks.spawn([](Instrument& i, CommandOutcome& out) -> net::awaitable<void> {
     out = co_await i.apply("power", 300);
   }(load, outcome));
-  bench.clock->run(kSecond_ns / 5);
+  bench.clock->run(kSecondNs / 5);
   bench.tasks.spawn(polling.close());
-  bench.clock->run(kSecond_ns / 5 + 1);
+  bench.clock->run(kSecondNs / 5 + 1);
   CHECK(polling.size() == 0);
   CHECK(bench.tasks.size() == 0);
   CHECK(load.state() == State::stopped);
@@ -276,15 +276,15 @@ TEST_CASE("a command whose waiter was cancelled is not sent") {
                   test_profile("load"),    settings_named("load"), bench.sink};
   link::TaskScope commands{bench.io.get_executor(), rethrow};
   bench.tasks.spawn(load.run());
-  bench.clock->run(kSecond_ns / 10);  // nobody has answered yet
+  bench.clock->run(kSecondNs / 10);  // nobody has answered yet
   commands.spawn([](Instrument& i) -> net::awaitable<void> {
     const auto outcome = co_await i.apply("power", 300);
     CHECK(outcome.state == CommandState::confirmed);  // never reached
   }(load));
-  bench.clock->run(kSecond_ns / 5);
+  bench.clock->run(kSecondNs / 5);
   bench.tasks.spawn(commands.close());
-  bench.tasks.spawn(answer_when_open(bench, kMilli_ns, "0.1"));
-  bench.clock->run(3 * kSecond_ns);
+  bench.tasks.spawn(answer_when_open(bench, kMilliNs, "0.1"));
+  bench.clock->run(3 * kSecondNs);
   CHECK(commands.size() == 0);
   CHECK(load.state() == State::ready);
   CHECK(bench.sink.count(EventKind::command_sent) == 0);
@@ -311,16 +311,16 @@ struct Faulty {
   double chance() { return static_cast<double>(engine() >> 11) * 0x1p-53; }
 };
 
-constexpr std::int64_t kFaultyUntil_ns = 3000 * kSecond_ns;
+constexpr std::int64_t kFaultyUntilNs = 3000 * kSecondNs;
 
 /// Replies in the order of the queries, as instruments do; each reply may suffer.
 net::awaitable<void> be_faulty(VirtualBench& bench, Faulty& faulty) {
   while (true) {
-    while (!bench.far && bench.clock->now_ns() < kFaultyUntil_ns) co_await bench.clock->sleep_for(1ms);
+    while (!bench.far && bench.clock->now_ns() < kFaultyUntilNs) co_await bench.clock->sleep_for(1ms);
     if (!bench.far) co_return;
     auto link = std::move(bench.far);
     while (true) {
-      const auto query = co_await link->read_line("\n", bench.clock->now_ns() + 30 * kSecond_ns);
+      const auto query = co_await link->read_line("\n", bench.clock->now_ns() + 30 * kSecondNs);
       if (query.status != link::Status::done) break;
       std::string reply = "north bench,meter,N-001,1.0";
       if (query.bytes != "*IDN?") {
@@ -360,7 +360,7 @@ net::awaitable<void> be_faulty(VirtualBench& bench, Faulty& faulty) {
       co_await link->write(reply + "\n", INT64_MAX);
     }
     link->close();
-    if (bench.clock->now_ns() > kFaultyUntil_ns) co_return;
+    if (bench.clock->now_ns() > kFaultyUntilNs) co_return;
   }
 }
 
@@ -378,9 +378,9 @@ TEST_CASE("whatever goes wrong, a good reading is the reply to its own query") {
                    settings_named("meter"), bench.sink};
   bench.tasks.spawn(meter.run());
   bench.tasks.spawn(be_faulty(bench, faulty));
-  bench.clock->run(kFaultyUntil_ns);
+  bench.clock->run(kFaultyUntilNs);
   meter.stop();
-  bench.clock->run(3600 * kSecond_ns);
+  bench.clock->run(3600 * kSecondNs);
   CHECK(bench.tasks.size() == 0);
 
   std::size_t good = 0;
@@ -415,7 +415,7 @@ TEST_CASE("whatever goes wrong, a good reading is the reply to its own query") {
 namespace {
 
 net::awaitable<void> watch(link::Clock& clock, Instrument& meter, Collector& sink, std::size_t readings) {
-  const auto limit_ns = clock.now_ns() + 20 * kSecond_ns;
+  const auto limit_ns = clock.now_ns() + 20 * kSecondNs;
   while (clock.now_ns() < limit_ns && sink.exchanges.size() < readings) co_await clock.sleep_for(1ms);
   meter.stop();
 }
@@ -460,7 +460,7 @@ TEST_CASE("an instrument on a pty is polled in real time") {
       io.get_executor(),     *clock,   [&clock, port] { return link::open_serial(*clock, port); },
       test_profile("meter"), settings, sink};
   tasks.spawn(meter.run());
-  tasks.spawn(answer(*clock, *far, kMilli_ns, "+3.85012E+02"));
+  tasks.spawn(answer(*clock, *far, kMilliNs, "+3.85012E+02"));
   tasks.spawn([](link::Clock& c, Instrument& i, Collector& s, link::Link& other) -> net::awaitable<void> {
     co_await watch(c, i, s, 20);
     other.close();

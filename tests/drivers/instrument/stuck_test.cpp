@@ -10,7 +10,7 @@ namespace {
 
 using loadstair::instrument::StuckWatch;
 
-constexpr std::int64_t kConversion_ns = 100'000'000;
+constexpr std::int64_t kConversionNs = 100'000'000;
 
 /// Roughly normal, from our own arithmetic: the sum of twelve uniform draws.
 double noise(std::mt19937_64& engine) {
@@ -25,12 +25,12 @@ double rounded(double value, double digit) {
 
 struct Meter {
   std::mt19937_64 engine{20260917};
-  StuckWatch watch{kConversion_ns};
+  StuckWatch watch{kConversionNs};
   std::int64_t t_ns = 0;
   int stuck = 0;
 
   void show(double value) {
-    t_ns += kConversion_ns;
+    t_ns += kConversionNs;
     stuck += watch.observe(value, t_ns) ? 1 : 0;
   }
 };

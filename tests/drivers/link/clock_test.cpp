@@ -15,7 +15,7 @@ namespace net = boost::asio;
 using namespace loadstair::link;
 using namespace std::chrono_literals;
 
-constexpr std::int64_t kSecond_ns = 1'000'000'000;
+constexpr std::int64_t kSecondNs = 1'000'000'000;
 
 void rethrow(const std::exception_ptr& failure) {
   std::rethrow_exception(failure);
@@ -25,7 +25,7 @@ void rethrow(const std::exception_ptr& failure) {
 
 TEST_CASE("an hour of virtual waiting passes in order of time, then of arming") {
   net::io_context io;
-  const auto clock = VirtualClock::make(io, 5 * kSecond_ns);
+  const auto clock = VirtualClock::make(io, 5 * kSecondNs);
   TaskScope scope{io.get_executor(), rethrow};
   std::string order;
   const auto sleeper = [](Clock& c, std::int64_t t_ns, char letter,
@@ -35,16 +35,16 @@ TEST_CASE("an hour of virtual waiting passes in order of time, then of arming") 
     co_await c.sleep_until(t_ns);  // already passed: returns at once
     log += letter;
   };
-  scope.spawn(sleeper(*clock, 3600 * kSecond_ns, 'c', order));
-  scope.spawn(sleeper(*clock, 2 * kSecond_ns, 'a', order));
-  scope.spawn(sleeper(*clock, 2 * kSecond_ns, 'b', order));
+  scope.spawn(sleeper(*clock, 3600 * kSecondNs, 'c', order));
+  scope.spawn(sleeper(*clock, 2 * kSecondNs, 'a', order));
+  scope.spawn(sleeper(*clock, 2 * kSecondNs, 'b', order));
   clock->run();
   CHECK(order == "aabbcc");
-  CHECK(clock->now_ns() == 3600 * kSecond_ns);
+  CHECK(clock->now_ns() == 3600 * kSecondNs);
   CHECK(scope.size() == 0);
-  CHECK(clock->utc_offset_ns() == 5 * kSecond_ns);
+  CHECK(clock->utc_offset_ns() == 5 * kSecondNs);
   clock->step_utc(-1s);
-  CHECK(clock->utc_offset_ns() == 4 * kSecond_ns);
+  CHECK(clock->utc_offset_ns() == 4 * kSecondNs);
 }
 
 TEST_CASE("virtual time stops at the limit asked for and can go on") {
@@ -53,19 +53,19 @@ TEST_CASE("virtual time stops at the limit asked for and can go on") {
   TaskScope scope{io.get_executor(), rethrow};
   int ticks = 0;
   scope.spawn([](Clock& c, int& count) -> net::awaitable<void> {
-    for (std::int64_t t_ns = 0; t_ns <= 10 * kSecond_ns; t_ns += kSecond_ns) {
+    for (std::int64_t t_ns = 0; t_ns <= 10 * kSecondNs; t_ns += kSecondNs) {
       co_await c.sleep_until(t_ns);
       ++count;
     }
   }(*clock, ticks));
-  clock->run(4 * kSecond_ns + 500'000'000);
+  clock->run(4 * kSecondNs + 500'000'000);
   CHECK(ticks == 5);
-  CHECK(clock->now_ns() == 4 * kSecond_ns + 500'000'000);
-  clock->run(5 * kSecond_ns);  // an instant equal to the limit belongs to it
+  CHECK(clock->now_ns() == 4 * kSecondNs + 500'000'000);
+  clock->run(5 * kSecondNs);  // an instant equal to the limit belongs to it
   CHECK(ticks == 6);
   clock->run();
   CHECK(ticks == 11);
-  CHECK(clock->now_ns() == 10 * kSecond_ns);
+  CHECK(clock->now_ns() == 10 * kSecondNs);
 }
 
 TEST_CASE("a notice ends a wait early and its deadline ends it in time, on both clocks") {
@@ -121,6 +121,6 @@ TEST_CASE("an io_context may outlive the virtual clock whose timers it still hol
   TaskScope scope{io.get_executor(), rethrow};
   const auto clock = VirtualClock::make(io, 0);
   scope.spawn([](Clock& c) -> net::awaitable<void> { co_await c.sleep_for(1h); }(*clock));
-  clock->run(kSecond_ns);
+  clock->run(kSecondNs);
   CHECK(scope.size() == 1);
 }

@@ -20,7 +20,7 @@ namespace net = boost::asio;
 using namespace loadstair::link;
 using namespace std::chrono_literals;
 
-constexpr std::int64_t kSecond_ns = 1'000'000'000;
+constexpr std::int64_t kSecondNs = 1'000'000'000;
 constexpr std::int64_t kNever = INT64_MAX;
 
 // g++ 12 awaits a co_await inside CHECK more than once; as an argument it is awaited once.
@@ -85,9 +85,9 @@ struct Pty {
 
 TEST_CASE("lines come whole, in order, without terminator, with the instants of their first and last byte") {
   VirtualBench bench;
-  bench.scope.spawn(say_later(*bench.clock, *bench.far, 1 * kSecond_ns, "+3.8"));
-  bench.scope.spawn(say_later(*bench.clock, *bench.far, 2 * kSecond_ns, "5E+02\r\n1\n\n2"));
-  bench.scope.spawn(say_later(*bench.clock, *bench.far, 3 * kSecond_ns, "3\n"));
+  bench.scope.spawn(say_later(*bench.clock, *bench.far, 1 * kSecondNs, "+3.8"));
+  bench.scope.spawn(say_later(*bench.clock, *bench.far, 2 * kSecondNs, "5E+02\r\n1\n\n2"));
+  bench.scope.spawn(say_later(*bench.clock, *bench.far, 3 * kSecondNs, "3\n"));
   std::vector<Received> log;
   bench.scope.spawn([](Link& link, std::vector<Received>& out) -> net::awaitable<void> {
     for (int i = 0; i < 4; ++i) co_await read_line_into(link, kNever, out);
@@ -95,26 +95,26 @@ TEST_CASE("lines come whole, in order, without terminator, with the instants of 
   bench.clock->run();
   REQUIRE(log.size() == 4);
   CHECK(log[0].bytes == "+3.85E+02");
-  CHECK(log[0].first_ns == 1 * kSecond_ns);
-  CHECK(log[0].last_ns == 2 * kSecond_ns);
+  CHECK(log[0].first_ns == 1 * kSecondNs);
+  CHECK(log[0].last_ns == 2 * kSecondNs);
   CHECK(log[1].bytes == "1");
-  CHECK(log[1].first_ns == 2 * kSecond_ns);
+  CHECK(log[1].first_ns == 2 * kSecondNs);
   CHECK(log[2].bytes.empty());
   CHECK(log[3].bytes == "23");
-  CHECK(log[3].first_ns == 2 * kSecond_ns);
-  CHECK(log[3].last_ns == 3 * kSecond_ns);
+  CHECK(log[3].first_ns == 2 * kSecondNs);
+  CHECK(log[3].last_ns == 3 * kSecondNs);
 }
 
 TEST_CASE("a deadline passes in virtual time and what came before it stays for the next read") {
   VirtualBench bench;
-  bench.scope.spawn(say_later(*bench.clock, *bench.far, 1 * kSecond_ns, "half"));
-  bench.scope.spawn(say_later(*bench.clock, *bench.far, 5 * kSecond_ns, " and half\n"));
+  bench.scope.spawn(say_later(*bench.clock, *bench.far, 1 * kSecondNs, "half"));
+  bench.scope.spawn(say_later(*bench.clock, *bench.far, 5 * kSecondNs, " and half\n"));
   std::vector<Received> log;
   bench.scope.spawn([](Clock& clock, Link& link, std::vector<Received>& out) -> net::awaitable<void> {
-    co_await read_line_into(link, 2 * kSecond_ns, out);
-    CHECK(clock.now_ns() == 2 * kSecond_ns);
-    co_await read_line_into(link, 1 * kSecond_ns, out);  // already passed
-    CHECK(clock.now_ns() == 2 * kSecond_ns);
+    co_await read_line_into(link, 2 * kSecondNs, out);
+    CHECK(clock.now_ns() == 2 * kSecondNs);
+    co_await read_line_into(link, 1 * kSecondNs, out);  // already passed
+    CHECK(clock.now_ns() == 2 * kSecondNs);
     co_await read_line_into(link, kNever, out);
   }(*bench.clock, *bench.near, log));
   bench.clock->run();
@@ -219,24 +219,24 @@ TEST_CASE(
     "bytes are paced at ten bits each: first and last byte of a line come when a wire would bring them") {
   VirtualBench bench{9600};
   std::vector<Received> log;
-  bench.scope.spawn(say_later(*bench.clock, *bench.far, kSecond_ns, std::string(95, 'x') + "\n"));
+  bench.scope.spawn(say_later(*bench.clock, *bench.far, kSecondNs, std::string(95, 'x') + "\n"));
   bench.scope.spawn(read_line_into(*bench.near, kNever, log));
   bench.clock->run();
   REQUIRE(log.size() == 1);
-  constexpr std::int64_t kByte_ns = 10'000'000'000 / 9600;
-  CHECK(log[0].first_ns == kSecond_ns + kByte_ns);
-  CHECK(log[0].last_ns == kSecond_ns + 96 * kByte_ns);
+  constexpr std::int64_t kByteNs = 10'000'000'000 / 9600;
+  CHECK(log[0].first_ns == kSecondNs + kByteNs);
+  CHECK(log[0].last_ns == kSecondNs + 96 * kByteNs);
 }
 
 TEST_CASE("a writer whose peer does not read waits, and gives up at its deadline") {
   VirtualBench bench;
   int written = 0;
   bench.scope.spawn([](VirtualBench& b, int& count) -> net::awaitable<void> {
-    while (co_await b.near->write(std::string(10'000, 'x') + "\n", kSecond_ns) == Status::done) ++count;
-    CHECK(b.clock->now_ns() == kSecond_ns);
+    while (co_await b.near->write(std::string(10'000, 'x') + "\n", kSecondNs) == Status::done) ++count;
+    CHECK(b.clock->now_ns() == kSecondNs);
     std::vector<Received> log;
     co_await read_line_into(*b.far, kNever, log);
-    expect(co_await b.near->write("room again\n", 2 * kSecond_ns), Status::done);
+    expect(co_await b.near->write("room again\n", 2 * kSecondNs), Status::done);
   }(bench, written));
   bench.clock->run();
   CHECK(written > 0);
@@ -249,7 +249,7 @@ TEST_CASE(
   REQUIRE(::write(pty.master, "before the open\n", 16) == 16);
   net::io_context io;
   const auto clock = make_real_clock();
-  const auto limit_ns = clock->now_ns() + 20 * kSecond_ns;
+  const auto limit_ns = clock->now_ns() + 20 * kSecondNs;
   TaskScope scope{io.get_executor(), rethrow};
   bool finished = false;
   scope.spawn([](Clock& c, Pty& p, std::int64_t deadline_ns, bool& done) -> net::awaitable<void> {
@@ -323,7 +323,7 @@ TEST_CASE(
     "a socket on loopback: a conversation, a burst larger than the system's buffers, and the peer's end") {
   net::io_context io;
   const auto clock = make_real_clock();
-  const auto limit_ns = clock->now_ns() + 20 * kSecond_ns;
+  const auto limit_ns = clock->now_ns() + 20 * kSecondNs;
   TaskScope scope{io.get_executor(), rethrow};
   net::ip::tcp::acceptor acceptor{io, {net::ip::address_v4::loopback(), 0}};
   const std::string burst(3'000'000, 'y');
