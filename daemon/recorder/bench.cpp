@@ -15,8 +15,10 @@ using base::Outcome;
 using base::Refusal;
 using boost::asio::awaitable;
 
-/// The profile with the queries whose values are used; the first one stays, so that a loss is noticed.
+/// The profile with the queries whose values are used; the first one stays, so that a loss is noticed. Lines
+/// that nobody uses may stay away.
 instrument::Profile asked_only(instrument::Profile profile, const std::set<std::string>& used) {
+  for (auto& value : profile.values) value.expected = used.empty() || used.contains(value.name);
   if (profile.queries.size() < 2) return profile;
   std::vector<instrument::ProfileQuery> kept;
   for (const auto& query : profile.queries) {

@@ -8,8 +8,9 @@ namespace loadstair::testing {
 
 class RunBench : public FakeBench {
  public:
-  explicit RunBench(setup::Hookup hookup = fake_hookup(false), sequencer::SequencerOptions options = {})
-      : FakeBench{std::move(hookup)} {
+  explicit RunBench(setup::Hookup hookup = fake_hookup(false), sequencer::SequencerOptions options = {},
+                    recorder::BenchOptions bench_options = {})
+      : FakeBench{std::move(hookup), std::move(bench_options)} {
     options.program_version = "test";
     sequencer = std::make_unique<sequencer::Sequencer>(*bench, std::move(options));
   }

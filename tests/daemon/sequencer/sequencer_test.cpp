@@ -3,6 +3,8 @@
 #include "daemon/sequencer/sequencer.h"
 
 #include <catch2/catch.hpp>
+#include <stdexcept>
+#include <thread>
 
 #include "daemon/sequencer/run_bench.h"
 
@@ -322,6 +324,45 @@ TEST_CASE("captures: taken in with their step; a missing one is an event, no fai
   CHECK(stored.captures[0].bytes == "t,v\n0,1\n1e-3,2\n2e-3,3\n");
   CHECK(bench.has_event("capture missing"));
   CHECK(stored.steps[1].state == store::StepState::done);
+}
+
+TEST_CASE("work off the I/O thread: settling and captures come back to it") {
+  recorder::BenchOptions pool;
+  std::size_t jobs = 0;
+  // Joined at once: virtual time must not run away from the thread.
+  pool.background = [&jobs](std::function<void()> job) {
+    ++jobs;
+    std::thread{std::move(job)}.join();
+  };
+  auto hookup = fake_hookup(false);
+  hookup.captures.push_back({});
+  hookup.captures.back().instrument = "scope";
+  recorder::Bench* scope = nullptr;
+  sequencer::SequencerOptions options;
+  options.request_capture = [&scope](const std::string&) {
+    scope->take_capture("scope", "a.csv", "t,v\n0,1\n1e-3,2\n2e-3,3\n");
+  };
+  RunBench bench{hookup, options, pool};
+  scope = bench.bench.get();
+  auto step = quick_step("a", 100);
+  step.electrical = setup::ElectricalSettle{"output power", 5.0, 2.0};
+  step.settle_limit_s = 30;
+  step.capture = true;
+  const auto run = bench.start(fake_stair({step}));
+  bench.run_to_end();
+  const auto stored = bench.stored(run);
+  CHECK(stored.steps[0].settled_how == "slope");
+  CHECK(stored.captures.size() == 1);
+  CHECK(jobs >= 2);
+}
+
+TEST_CASE("what breaks in the background is told and ends nothing") {
+  RunBench bench;
+  bool done = false;
+  bench.bench->in_background([] { throw std::runtime_error{"the pool is on fire"}; },
+                             [&done] { done = true; });
+  CHECK(done);
+  CHECK(bench.has_event("broken"));
 }
 
 TEST_CASE("cool down and discharge are waited for, with the caution to prove dead") {
