@@ -115,7 +115,12 @@ std::vector<WeightedResult> weighted_of(const setup::Hookup& hookup, const setup
   return out;
 }
 
-void add_remarks(const store::StoredRun& run, const setup::Stair& stair, RunResult& result) {
+void add_remarks(const store::StoredRun& run, const setup::Hookup& hookup, const setup::Stair& stair,
+                 RunResult& result) {
+  if (!run.amendments.empty() && hookup.text == run.hookup_text && stair.text == run.stair_text) {
+    result.remarks.push_back(base::print_integer(static_cast<std::int64_t>(run.amendments.size())) +
+                             " amendments of this run are not applied to these results");
+  }
   if (run.summary.state == store::RunState::interrupted) {
     result.remarks.push_back("the run was interrupted: steps after the interruption are missing");
   }
@@ -159,7 +164,7 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
                             to_quantity(point.efficiency, "1"), to_quantity(point.loss, "W")});
   }
   result.weighted = weighted_of(hookup, stair, result.points);
-  add_remarks(run, stair, result);
+  add_remarks(run, hookup, stair, result);
   return result;
 }
 

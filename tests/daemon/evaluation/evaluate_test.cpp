@@ -327,6 +327,63 @@ TEST_CASE("steps without a window say why, and the rest of the run stands") {
   check_no_nan(result);
 }
 
+TEST_CASE(
+    "a wattmeter's voltage, current and power share sources: most of them drop out of the power factor") {
+  HandBench bench = stoat_bench({.reading_percent = 0.0});
+  setup::Port& output = bench.hookup.ports[1];
+  output.kind = setup::PortKind::ac;
+  output.power = "output power";
+  bench.link("output power", setup::Quantity::power, "W", {.reading_percent = 0.1, .upto = 1500.0}).response =
+      setup::Response::wattmeter;
+  bench.read_window("output power", 0, 30.8);
+  for (const std::size_t i : {std::size_t{2}, std::size_t{3}, std::size_t{4}}) {
+    setup::Channel& channel = bench.hookup.channels[i];
+    channel.ranges[0].reading_percent = 0.1;
+    channel.instrument = "output wattmeter";
+    channel.value = i == 2 ? "voltage" : i == 3 ? "current" : "power";
+    if (i < 4) channel.response = setup::Response::true_rms_ac_dc;
+  }
+  const StepResult step = bench.evaluate().steps.at(0);
+  REQUIRE(step.power_factor.known);
+  CHECK(step.power_factor.value == Approx(0.8).epsilon(1e-12));
+  // The power's 0.1 % is carried by the gains of voltage and current, each scaled by 1/sqrt 2; of their own
+  // 0.1 % in V I that much drops out. Per level (a tenth of each variance) nothing does.
+  const double u = 0.001 / std::sqrt(3.0);
+  const double left = 1.0 - 1.0 / std::sqrt(2.0);
+  const double relative = std::sqrt(2.0 * left * left * 0.9 + 3.0 * 0.1) * u;
+  CHECK(*step.power_factor.expanded == Approx(kNormal95 * relative * 0.8).epsilon(1e-9));
+  CHECK(*step.output_power.expanded == Approx(kNormal95 * u * 30.8).epsilon(1e-9));
+}
+
+TEST_CASE("two steps of one label keep their noise apart, and meters at two levels share their gain") {
+  HandBench bench = stoat_bench();
+  const int again = bench.step("40 W", 40.0);
+  bench.read_window("input voltage", again, 48.0);
+  bench.read_window("input current", again, 39.9 / 48.0);
+  bench.read_window("output voltage", again, 12.0);
+  bench.read_window("output current", again,
+                    [](int i) { return 38.5 / 12.0 * (i % 2 == 0 ? 1.0001 : 0.9999); });
+  const RunResult result = bench.evaluate();
+  bool named = false;
+  for (const BudgetEntry& entry : result.steps.at(1).budget) {
+    named = named || entry.source == "noise in the window of 40 W (step 2)";
+  }
+  CHECK(named);
+  // Correlation of the two efficiencies: all but the per-level tenth of the gains is common.
+  REQUIRE(result.points.size() == 2);
+  CHECK(estimate::correlation(result.points[0].efficiency, result.points[1].efficiency) ==
+        Approx(0.9).epsilon(1e-3));
+}
+
+TEST_CASE("amendments that were not applied are told") {
+  HandBench bench = stoat_bench();
+  bench.hookup.text = bench.run.hookup_text = "{}";
+  bench.run.amendments.emplace_back();
+  CHECK(mentions(bench.evaluate().remarks, "1 amendments of this run are not applied"));
+  bench.hookup.text = "{ }";
+  CHECK_FALSE(mentions(bench.evaluate().remarks, "amendments"));
+}
+
 TEST_CASE("the same record gives the same bits") {
   CHECK(fingerprint(stoat_bench().evaluate()) == fingerprint(stoat_bench().evaluate()));
 }
