@@ -53,8 +53,8 @@ void Bench::State::take_exchange(const Owned& one, const instrument::Exchange& e
   item.exchange = exchange;
   for (const auto& reading : exchange.readings) {
     const auto value = static_cast<std::size_t>(reading.value_index);
-    static const std::vector<std::int32_t> kNobody;
-    const auto& users = value < one.channels_of.size() ? one.channels_of[value] : kNobody;
+    static const std::vector<std::int32_t> nobody;
+    const auto& users = value < one.channels_of.size() ? one.channels_of[value] : nobody;
     item.channels.push_back(users.empty() ? -1 : users.front());
   }
   // A value that two channels use counts for both.

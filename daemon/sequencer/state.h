@@ -1,7 +1,8 @@
 // The sequencer's inside: one object on one executor, its work split over several files.
-//   sequencer.cpp  what the public functions do        run.cpp     the stair, phase by phase
-//   prompts.cpp    hand prompts and typed rounds       watch.cpp   guards, the record's health
-//   safe_state.cpp safe state, cool down, after a crash snapshot.cpp what is shown
+//   sequencer.cpp   what the public functions do    run.cpp       the stair, phase by phase
+//   settle.cpp      is a step settled yet?          prompts.cpp   hand prompts and typed rounds
+//   watch.cpp       guards, the record's health     snapshot.cpp  what is shown
+//   safe_state.cpp  safe state, cool down, after a crash
 //
 // How a run is interrupted: stop(), skip(), hold come as demands. The run's coroutine looks at them whenever
 // it waits (wait_until) and after every command; the safe state does not wait for it but starts at once

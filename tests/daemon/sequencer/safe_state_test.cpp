@@ -1,6 +1,7 @@
 // The safe state where things go wrong: instruments gone, strangers, a crash before, a record that cannot be
 // written.
 #include <catch2/catch.hpp>
+#include <stdexcept>
 
 #include "daemon/sequencer/run_bench.h"
 #include "daemon/store/faulty_disk.h"
@@ -115,6 +116,24 @@ TEST_CASE("a record that cannot be written stops the run, and never delays the s
   const auto stored = bench.stored(1);
   CHECK(stored.summary.state == store::RunState::stopped);
   CHECK(stored.channels[0].t_ns.size() > 5);
+}
+
+TEST_CASE("a fault of the program ends the run in its safe state") {
+  auto hookup = fake_hookup(false);
+  hookup.captures.push_back({});
+  sequencer::SequencerOptions options;
+  options.request_capture = [](const std::string&) { throw std::logic_error{"a promise was broken"}; };
+  RunBench bench{hookup, options};
+  auto step = quick_step("a", 100);
+  step.capture = true;
+  const auto run = bench.start(fake_stair({step}));
+  bench.run_to_end();
+  CHECK(bench.off());
+  CHECK(bench.now().phase == RunPhase::stopped);
+  CHECK_THAT(bench.now().reason, Catch::Contains("a promise was broken"));
+  CHECK(bench.stored(run).summary.state == store::RunState::stopped);
+  CHECK(bench.stored(run).steps[0].state == store::StepState::stopped);
+  CHECK(bench.has_event("broken"));
 }
 
 TEST_CASE("a command that is under way when the run is stopped does not have the last word") {
