@@ -136,7 +136,8 @@ std::string why_nothing(const Track& track, const WindowContext& context) {
     ++count;
     reason = one.reason;
   }
-  if (count == 0) return track.index < 0 ? "the run has no such channel" : "no reading in the window";
+  if (count == 0)
+    return track.index < 0 ? "the run has no such channel" : "no reading that lies wholly in the window";
   return "no good reading in the window (" + base::print_integer(static_cast<std::int64_t>(count)) +
          " not used, the last one since " + reason + ")";
 }
@@ -158,7 +159,9 @@ void remark_unusable(ChannelValue& into, const WindowContext& context) {
 
 void fill_linked(ChannelValue& into, const setup::Hookup& hookup, const Track& track,
                  const WindowContext& context) {
-  into.stretch = stretch(track, context.from_s, context.to_s);
+  const setup::Instrument* instrument = hookup.find_instrument(into.channel->instrument);
+  into.stretch = whole_within(track, context.from_s, context.to_s,
+                              instrument == nullptr ? 0.0 : instrument->integration_s);
   if (into.stretch.size() == 0) {
     into.value = into.plain = base::Refusal{into.channel->name, why_nothing(track, context)};
     return;

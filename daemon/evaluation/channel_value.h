@@ -21,7 +21,6 @@ struct WindowContext {
   std::string step;  ///< label, made unique within the run: part of keys and names
   std::int32_t step_index = 0;
   double from_s = 0.0, to_s = 0.0;
-  std::size_t most_readings = 0;  ///< 0: no bound
 
   [[nodiscard]] double middle_s() const { return (from_s + to_s) / 2.0; }
   [[nodiscard]] estimate::WindowId id() const { return {run, step}; }

@@ -84,6 +84,14 @@ Stretch stretch(const Track& track, double from_s, double to_s) {
   return {&track, static_cast<std::size_t>(first - begin), static_cast<std::size_t>(last - begin)};
 }
 
+Stretch whole_within(const Track& track, double from_s, double to_s, double integration_s) {
+  Stretch part = stretch(track, from_s, to_s);
+  const auto reach_s = [&](std::size_t i) { return track.half_width_s[i] + integration_s / 2.0; };
+  while (part.first < part.last && track.time_s[part.first] - reach_s(part.first) < from_s) ++part.first;
+  while (part.first < part.last && track.time_s[part.last - 1] + reach_s(part.last - 1) > to_s) --part.last;
+  return part;
+}
+
 double since_start(const store::StoredRun& run, std::int64_t t_ns) {
   return static_cast<double>(t_ns - run.summary.started_ns) * 1e-9;
 }

@@ -40,6 +40,9 @@ struct Stretch {
 };
 /// Readings with instants in [from_s, to_s].
 [[nodiscard]] Stretch stretch(const Track& track, double from_s, double to_s);
+/// Readings that stand for nothing outside [from_s, to_s]: their half-width and half the integration time lie
+/// inside too. A reading at the edge may already be of the next set point.
+[[nodiscard]] Stretch whole_within(const Track& track, double from_s, double to_s, double integration_s);
 
 /// One track per channel of the hook-up file, in its order.
 [[nodiscard]] std::vector<Track> tracks_of(const store::StoredRun& run, const setup::Hookup& hookup);

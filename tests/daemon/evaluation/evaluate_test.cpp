@@ -236,6 +236,18 @@ TEST_CASE("readings outside the averaging window change nothing") {
   CHECK(fingerprint(bench.evaluate()) == fingerprint(stoat_bench().evaluate()));
 }
 
+TEST_CASE(
+    "a reading at the window's edge may be of the next set point: what is not wholly inside is left out") {
+  HandBench bench = stoat_bench();
+  bench.hookup.instruments[3].integration_s = 0.1;
+  // Half-width 20 ms and half the integration 50 ms: 60 ms from the edge is too near, 80 ms is not.
+  bench.read("output current", kStart + 10 * kSecond + 60'000'000, 1.0);
+  bench.read("output current", kStart + 20 * kSecond - 60'000'000, 1.0);
+  CHECK(bench.evaluate().steps.at(0).output_power.value == Approx(38.5).epsilon(1e-12));
+  bench.read("output current", kStart + 20 * kSecond - 80'000'000, 1.0);
+  CHECK(bench.evaluate().steps.at(0).output_power.value < 38.4);
+}
+
 TEST_CASE("whatever channel is missing, every result has a value or a reason") {
   for (const char* dropped : {"input voltage", "input current", "output voltage", "output current"}) {
     for (const bool flagged : {false, true}) {
