@@ -3,7 +3,8 @@
 # a file in the folder belongs to the room.
 function(add_room path)
   cmake_parse_arguments(PARSE_ARGV 1 R "" "" "DEPS;LIBS;PUBLIC_LIBS")
-  set_property(GLOBAL APPEND PROPERTY LOADSTAIR_ALL_ROOMS "${path}: ${R_DEPS}")
+  list(JOIN R_DEPS " " deps_as_text)
+  set_property(GLOBAL APPEND PROPERTY LOADSTAIR_ALL_ROOMS "${path}: ${deps_as_text}")
   if(LOADSTAIR_ROOMS AND NOT path IN_LIST LOADSTAIR_ROOMS)
     return()
   endif()

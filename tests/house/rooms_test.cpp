@@ -34,7 +34,13 @@ TEST_CASE("rooms have no circle") { CHECK(find_circle(read_rooms(kRoot / "tests/
 
 TEST_CASE("what CMake links is what rooms.txt allows") {
   const Rooms linked = read_rooms(LOADSTAIR_ROOMS_OF_CMAKE);
-  CHECK(linked == read_rooms(kRoot / "tests/house/rooms.txt"));
+  const Rooms allowed = read_rooms(kRoot / "tests/house/rooms.txt");
+  CHECK(linked.size() == allowed.size());
+  for (const auto& [room, below] : allowed) {
+    INFO(room);
+    REQUIRE(linked.contains(room));
+    CHECK(linked.at(room) == below);
+  }
 }
 
 TEST_CASE("banned words are absent") { CHECK(joined(banned_word_breaches(kRoot)) == ""); }
