@@ -20,8 +20,7 @@ double period_of(const setup::Hookup& hookup, const setup::Channel& channel) {
   const auto* instrument = hookup.find_instrument(channel.instrument);
   if (instrument == nullptr) return 1.0;
   const bool unsolicited = instrument->profile.dialect == instrument::Dialect::text_lines;
-  if (unsolicited) return instrument->update_s > 0.0 ? instrument->update_s : instrument->poll_s;
-  return std::max(instrument->poll_s, instrument->update_s);
+  return unsolicited && instrument->update_s > 0.0 ? instrument->update_s : instrument->poll_s;
 }
 
 store::RunStart run_start_of(const setup::Hookup& hookup, const setup::Stair& stair,
@@ -116,9 +115,10 @@ void Sequencer::State::event(std::string kind, std::string source, std::string t
 void Sequencer::State::listen() {
   listeners.push_back(bench.on_reading([this](const recorder::ChannelUpdate& update) {
     for (auto& guarded : guards) {
-      if (guarded.channel == update.channel) guarded.watch.see(update.point);
+      if (guarded.channel != update.channel) continue;
+      guarded.watch.see(update.point);
+      check_guard(guarded);
     }
-    check_guards();
   }));
   listeners.push_back(bench.on_capture([this](const recorder::CaptureArrived&) { wake.notify(); }));
   listeners.push_back(bench.on_event([this](const recorder::BenchEvent&) { changed(); }));

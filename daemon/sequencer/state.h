@@ -76,12 +76,16 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   [[nodiscard]] std::vector<std::size_t> typed_channels() const;
 
   // --- watch.cpp
+  struct Guarded {
+    GuardWatch watch;
+    std::size_t channel = 0;
+  };
   boost::asio::awaitable<void> watch();
   void arm_guards();
   void rearm_tripped();
   void disarm_guards();
   void blank_guards();
-  void check_guards();
+  void check_guard(Guarded& guarded);
   void trip(const GuardWatch& guard, const GuardWatch::Cause& cause);
 
   // --- safe_state.cpp
@@ -129,10 +133,6 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   bool resume_demand = false;
 
   // guards
-  struct Guarded {
-    GuardWatch watch;
-    std::size_t channel = 0;
-  };
   std::vector<Guarded> guards;
   std::vector<Trip> trips;
 
