@@ -194,41 +194,6 @@ const ChannelValue* StepValues::find(const std::string& channel) const {
   return nullptr;
 }
 
-void share_wattmeters(StepValues& values) {
-  const auto find = [&](const std::string& name) -> ChannelValue* {
-    for (ChannelValue& value : values.channels) {
-      if (!name.empty() && value.channel->name == name) return &value;
-    }
-    return nullptr;
-  };
-  for (const setup::Port& port : values.hookup->ports) {
-    ChannelValue* voltage = find(port.voltage);
-    ChannelValue* current = find(port.current);
-    ChannelValue* power = find(port.power);
-    if (voltage == nullptr || current == nullptr || power == nullptr) continue;
-    const std::string& instrument = power->channel->instrument;
-    const bool one = !instrument.empty() && voltage->channel->instrument == instrument &&
-                     current->channel->instrument == instrument;
-    if (!one || !voltage->value || !current->value || !power->value) continue;
-    // A meter that changed its range in the window keeps its plain sources.
-    if (voltage->parts.size() != 1 || current->parts.size() != 1 || power->parts.size() != 1) continue;
-    estimate::WattmeterReading reading;
-    reading.voltage = voltage->raw;
-    reading.current = current->raw;
-    reading.active_power = power->raw;
-    reading.voltage_range = meter_range(*voltage->channel, voltage->parts[0].range);
-    reading.current_range = meter_range(*current->channel, current->parts[0].range);
-    reading.power_range = meter_range(*power->channel, power->parts[0].range);
-    const auto shared =
-        estimate::with_wattmeter_error(reading, occasion_of(values.context, *power->channel),
-                                       shares_of(*values.hookup, *power->channel, power->parts[0].range));
-    if (!shared) continue;
-    attach_meter_error(*voltage, shared->voltage);
-    attach_meter_error(*current, shared->current);
-    attach_meter_error(*power, shared->active_power);
-  }
-}
-
 StepPowers step_powers(const StepValues& values, bool plain) {
   StepPowers powers;
   powers.ports = efficiency::step_result(input_of(values, plain, Noise::in_readings));

@@ -20,10 +20,6 @@ struct StepValues {
   [[nodiscard]] const ChannelValue* find(const std::string& channel) const;
 };
 
-/// Shares the sources of a wattmeter's voltage, current and power where one instrument reads all three of a
-/// port.
-void share_wattmeters(StepValues& values);
-
 /// The step's powers, loss and efficiency.
 struct StepPowers {
   efficiency::StepResult totals;  ///< with the statistical parts of the aligned series

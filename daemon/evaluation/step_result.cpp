@@ -167,7 +167,9 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
     const std::vector<std::string>& remarks = values.channels.back().remarks;
     result.remarks.insert(result.remarks.end(), remarks.begin(), remarks.end());
   }
-  share_wattmeters(values);
+  // A wattmeter's functions are taken as independent. In a real one their gains are partly common and drop
+  // out of the power factor, but a specification does not promise it, and the hook-up file cannot declare it
+  // yet.
   values.captures = captures_of(run, hookup, stair, values.context, result.remarks);
   fill_powers(out, values);
   CaptureQuantities captured = quantities_of(values.captures);
