@@ -1,5 +1,7 @@
 #include "daemon/store/schema.h"
 
+#include "analysis/base/number.h"
+
 namespace loadstair::store {
 namespace {
 
@@ -149,7 +151,7 @@ std::string schema_1() {
     add_refusal(sql, table, "UPDATE", "", "never changed");
     add_refusal(sql, table, "DELETE", "", "never deleted");
   }
-  sql += "PRAGMA application_id = " + std::to_string(kApplicationId) + ";\nPRAGMA user_version = 1;\n";
+  sql += "PRAGMA application_id = " + base::print_integer(kApplicationId) + ";\nPRAGMA user_version = 1;\n";
   return sql;
 }
 

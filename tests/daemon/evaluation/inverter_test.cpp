@@ -149,6 +149,23 @@ TEST_CASE("the end temperature as measured, with its junction's class") {
         Approx(kNormal95 * 1.5 / std::sqrt(3.0)).epsilon(1e-6));
 }
 
+TEST_CASE("a bare thermocouple: its cold junction counts as emf, with its own uncertainty") {
+  HandBench bench = inverter_bench({300.0});
+  setup::Channel& heatsink = bench.hookup.channels[3];
+  heatsink.conversion.thermocouple = setup::Thermocouple{'K', 1, "block"};
+  heatsink.ranges[0] = {.upto = 0.1};
+  bench.link("block", setup::Quantity::temperature, "degC", {.reading_percent = 2.0, .upto = 100.0});
+  bench.read_window("block", 0, 25.0);
+  // Type K, mV: 4.096 at 100 degC, 1.000 at 25 degC (NIST Monograph 175, table of type K; three decimals).
+  for (double& value : bench.stored("heatsink").value) value = 0.004096 - 0.001000;
+  const TemperatureResult result = bench.evaluate().steps.at(0).temperatures.at(0);
+  CHECK(result.end.value == Approx(100.0).margin(0.03));
+  // Class 1: +-1.5 K. The block: +-0.5 K times the ratio of the emf's slopes at 25 and at 100 degC, 0.0405
+  // mV/K over 0.0414 mV/K (the same table, differences of neighbouring degrees).
+  const double expected = std::hypot(1.5, 0.5 * 0.0405 / 0.0414) / std::sqrt(3.0);
+  CHECK((result.end.high - result.end.low) / 2.0 == Approx(kNormal95 * expected).epsilon(2e-3));
+}
+
 TEST_CASE("a predicted end temperature says so and holds what comes") {
   HandBench bench = inverter_bench({300.0, 600.0});
   setup::ThermalSettle settle;
