@@ -1,6 +1,7 @@
 // The stair, phase by phase.
 #include <algorithm>
 #include <exception>
+#include <memory>
 #include <utility>
 
 #include "analysis/base/number.h"
@@ -141,9 +142,33 @@ awaitable<Go> Sequencer::State::wait_for_instruments() {
   }
 }
 
+/// Nothing is commanded before the run is on the disk: after a crash it is what tells that the bench may be
+/// live.
+awaitable<Go> Sequencer::State::put_on_disk() {
+  enter(StepPhase::start, "waits until the run is on the disk");
+  struct Flush {
+    base::Outcome<void> outcome;
+    bool done = false;
+  };
+  const auto flush = std::make_shared<Flush>();
+  bench.in_background([&writer = bench.writer(), flush] { flush->outcome = writer.flush(); },
+                      [self = shared_from_this(), flush] {
+                        flush->done = true;
+                        self->wake.notify();
+                      });
+  const auto go = co_await wait_for([flush] { return flush->done; }, INT64_MAX);
+  if (go != Go::on) co_return go;
+  if (!flush->outcome) {
+    stop_now("the run cannot be recorded, so nothing was switched on: " + flush->outcome.refusal().text());
+    co_return Go::stop;
+  }
+  co_return Go::on;
+}
+
 /// Everything that comes before the first step: instruments there, settings set and read back, then power.
 awaitable<Go> Sequencer::State::prepare() {
   if (const auto go = co_await wait_for_instruments(); go != Go::on) co_return go;
+  if (const auto go = co_await put_on_disk(); go != Go::on) co_return go;
   std::vector<setup::SetPoint> points;
   for (const auto& control : bench.hookup().controls) {
     for (const auto& [setting, value] : control.at_start) points.push_back({control.name, setting, value});

@@ -50,6 +50,7 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   boost::asio::awaitable<Go> all_steps();
   boost::asio::awaitable<Go> prepare();
   boost::asio::awaitable<Go> wait_for_instruments();
+  boost::asio::awaitable<Go> put_on_disk();
   boost::asio::awaitable<Go> run_step(std::int32_t index);
   boost::asio::awaitable<Go> measure(const setup::Step& plan);
   boost::asio::awaitable<Go> apply_all(const std::vector<setup::SetPoint>& points);

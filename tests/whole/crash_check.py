@@ -87,7 +87,7 @@ def main():
             bench.wait(lambda: all(i["ready"] or i["state"] == "watching folder"
                                    for i in bench.call("state")["instruments"]), "the instruments")
             before = len(read_log(bench.log_path))
-            run = bench.begin(stair)
+            run = bench.begin(stair)  # answered before the run is on the disk, and before anything is commanded
             if how == "commit":
                 killed_at = kill_inside_commit(bench, chance)
             elif how == "set point":
