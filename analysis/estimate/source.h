@@ -12,7 +12,7 @@ namespace loadstair::estimate {
 /// Evaluated from repeated readings (A), or from anything else (B). JCGM 100:2008 4.2, 4.3.
 enum class Kind { type_a, type_b };
 
-/// Of a Type B source; Type A is Student's t with its degrees of freedom. Used by the Monte Carlo check.
+/// Of a Type B source; Type A is Student's t with its degrees of freedom. Kept for a validation by JCGM 101; the linear method needs its variance only.
 enum class Distribution { normal, rectangular, triangular, arcsine };
 
 /// What would shrink a source's contribution; a budget words it and recomputes U as if it had been done.
@@ -69,7 +69,7 @@ using SourcePtr = std::shared_ptr<const Source>;
 
 /// Half-width of a distribution over its standard deviation: sqrt 3 rectangular, sqrt 6 triangular, sqrt 2
 /// arcsine. For normal: the coverage factor at which the limits were declared. Source: JCGM
-/// 100:2008 4.3.4-4.3.9.
+/// 100:2008 4.3.4-4.3.9; the arcsine in annex H.1 (from memory).
 [[nodiscard]] double half_width_per_u(Distribution distribution, double coverage_factor);
 
 /// Keys. Every key is built here, so that a cause has one key whoever meets it. Parts may hold any text; a

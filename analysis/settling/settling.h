@@ -50,7 +50,7 @@ struct SlopeCriterion {
 };
 /// Settled when the whole 95 % interval of the slope lies within the limit. Where noise is wider than the
 /// limit the slope is not resolved, and that is not settled. The slope's uncertainty includes the correlation
-/// of the residuals (lag-1, Bartlett 1935 effective number).
+/// of the residuals (initial positive sequence, Geyer 1992).
 base::Outcome<Verdict> settled_by_slope(const Trace& trace, const SlopeCriterion& criterion);
 
 // --- thermal by rate
@@ -64,8 +64,8 @@ struct RateCriterion {
   bool rise_only = false;   ///< true: only an upward change counts
 };
 /// Settled when the value changed by at most `change` between the ends of the last window, `count` windows in
-/// a row, and did so for `hold_s`. Values at window ends are means over window/20, so that noise does not
-/// decide. `wait_s` comes from the closed form of one time constant where a fit exists: -tau
+/// a row, and did so for `hold_s`. A line over the window/20 at each end gives the value there, so that
+/// noise does not decide. `wait_s` comes from the closed form of one time constant where a fit exists: -tau
 /// ln(d/(D(exp(w/tau)-1))).
 base::Outcome<Verdict> settled_by_rate(const Trace& trace, const RateCriterion& criterion);
 
@@ -95,7 +95,7 @@ struct ExponentialFit {
 
 /// One time constant by variable projection (Golub and Pereyra 1973): linear in end and amplitude, a search
 /// in tau. Refuses fewer than 5 samples, times that do not rise, values that are not finite, a trace without
-/// curvature (tau runs beyond 1000 times the span or below the sampling).
+/// curvature (tau runs beyond 500 times the span or below the sampling).
 base::Outcome<ExponentialFit> fit_exponential(const Trace& trace);
 
 /// Two time constants, the same way. Refuses fewer than 8 samples, or when the second constant is not
@@ -158,7 +158,7 @@ base::Outcome<Prediction> predict_end(const Trace& trace, std::span<const double
 
 struct ChangePointSettings {
   double least_jump = 0.0;  ///< smallest change of slope*time or level that counts; 0: from noise alone
-  std::size_t least_samples = 10;  ///< between two change points
+  std::size_t least_samples = 10;  ///< of the record; change points themselves are at least 8 blocks apart
 };
 /// Times at which the trace bends or jumps in a way one exponential approach does not (a fan that starts, a
 /// load that moved); empty when none. The window of a prediction starts at the last one.

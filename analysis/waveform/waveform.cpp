@@ -143,11 +143,6 @@ void add_remarks(WaveformResult& result, const std::vector<Prepared>& prepared, 
     }
   }
   if (window.cycles == 0) return;
-  const double unused = static_cast<double>(result.samples) - window.span.length();
-  if (unused >= 1.0) {
-    result.remarks.push_back(base::print_integer(window.cycles) + " whole cycles; the last " +
-                             base::print_fixed(unused, 1) + " samples are not used");
-  }
   const auto orders = static_cast<int>(result.channels.front().harmonics.size());
   if (orders < settings.harmonics) {
     result.remarks.push_back("sampling resolves orders up to " + base::print_integer(orders) + " of " +

@@ -68,9 +68,9 @@ std::string temperature_text(const json& step) {
 }
 
 std::string settled_text(const json& settled) {
+  if (settled["by"] == "no criterion") return "not asked for";
   if (!settled["settled"].get<bool>()) return "NO";
   std::string text = "by " + settled["by"].get<std::string>();
-  if (settled["by"] == "no criterion") text = "no criterion";
   if (settled["after_s"].is_number())
     text += ", " + base::print_fixed(settled["after_s"].get<double>(), 1) + " s";
   return text;
@@ -96,9 +96,6 @@ std::string step_notes(const json& step) {
   const std::string label = step["label"].get<std::string>() + ": ";
   if (!step["efficiency"]["value"].is_number()) {
     text += "  " + label + step["efficiency"].value("why", std::string{"no efficiency"}) + "\n";
-  }
-  if (!step["settled"]["settled"].get<bool>() && !step["settled"]["text"].get<std::string>().empty()) {
-    text += "  " + label + step["settled"]["text"].get<std::string>() + "\n";
   }
   for (const auto& remark : step["remarks"]) text += "  " + label + remark.get<std::string>() + "\n";
   if (!step["budget"].empty()) {
@@ -134,11 +131,13 @@ std::string result_table(const json& result) {
       prototype["name"].get<std::string>() + " revision " + prototype["revision"].get<std::string>() +
       ", unit " + prototype["unit"].get<std::string>() + ", run " +
       base::print_integer(result["run"].get<std::int64_t>()) + ", " + result["state"].get<std::string>() +
-      ". Intervals: 95 %. (?): uncertainty not known.\n\n";
+      ". Intervals: 95 %.\n\n";
   std::vector<Row> rows = {{"step", "load W", "input W", "output W", "efficiency %", "loss W", "PF", "THD %",
                             "crest", "end temperature \u00b0C", "settled"}};
   for (const auto& step : result["steps"]) rows.push_back(step_row(step));
-  text += table_of(rows);
+  const std::string table = table_of(rows);
+  text += table;
+  if (table.find("(?)") != std::string::npos) text += "\n(?): indicated, uncertainty not known\n";
   std::string weighted;
   for (const auto& figure : result["weighted"]) {
     const auto& efficiency = figure["efficiency"];

@@ -52,8 +52,7 @@ struct WindowState {
 
 /// The step's criteria on what has been read until now. Cheap enough for twice a second (the exponential fits
 /// take well under 2 ms for some thousand readings). `ambient` is read off at the instants of `thermal`.
-/// at_last_step   the last step of a run goes on to the rate criterion: its prediction never ends it (methods
-/// 5)
+/// at_last_step   the last step of a run goes on to the rate criterion: its prediction never ends it
 [[nodiscard]] WindowState live_window(const setup::Step& step, const LiveTraces& traces,
                                       bool at_last_step = false);
 

@@ -224,7 +224,8 @@ std::vector<InstrumentNow> Bench::instruments() const {
     if (one->instrument) {
       const auto state = one->instrument->state();
       now.state = instrument::name_of(state);
-      now.ready = state == instrument::State::ready;
+      // Out of step for a moment, it still takes commands: they wait until the line is in step again.
+      now.ready = state == instrument::State::ready || state == instrument::State::resynchronising;
       now.identity = one->instrument->identity();
     } else {
       now.state = "watching folder";

@@ -164,7 +164,7 @@ class Sequencer {
   std::shared_ptr<State> state_;
 };
 
-/// The cautions that go with anything done by hand on this bench (job.md, Safety).
+/// The cautions that go with anything done by hand on this bench.
 /// live   a port at a dangerous voltage is among the hook-up's.
 [[nodiscard]] std::vector<std::string> hand_cautions(const setup::Hookup& hookup);
 

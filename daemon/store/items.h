@@ -148,7 +148,7 @@ struct AmendmentItem {
   std::string path, old_value, new_value;
 };
 
-/// A check of the bench itself: zero, tie, closure (methods 8).
+/// A check of the bench itself: zero, tie, closure.
 struct BenchCheckItem {
   RunId run = 0;
   std::string kind;

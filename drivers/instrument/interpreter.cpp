@@ -75,9 +75,11 @@ Interpreter::Interpreter(const Profile& profile, const InstrumentSettings& setti
   }
 }
 
+// A free-running meter answers with the last finished conversion, which is between nothing and a whole update
+// period old: the middle of that range goes into the instant, half its length into the half-width.
 Instant Interpreter::instant_of_reply(std::int64_t sent_ns, std::int64_t first_ns) const {
   const auto half_ns = (first_ns - sent_ns) / 2;
-  return {sent_ns + half_ns - age_ns_, half_ns + half_update_ns_};
+  return {sent_ns + half_ns - age_ns_ - half_update_ns_, half_ns + half_update_ns_};
 }
 
 Instant Interpreter::instant_of_line(std::int64_t first_ns, std::int64_t last_ns) const {

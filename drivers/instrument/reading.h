@@ -29,10 +29,13 @@ inline constexpr std::uint32_t kUnusable =
 /// One value from one instrument, as the instrument said it, in the unit that the profile declares for it.
 struct Reading {
   std::int32_t value_index = 0;  ///< index into Profile::values
-  std::int64_t t_ns = 0;  ///< monotonic instant the value stands for: middle of request and reply, minus
-                          ///< the declared delay and half the integration time
-  std::int64_t half_width_ns = 0;  ///< half of request-to-reply, plus half the update period
-  double value = 0.0;              ///< NaN exactly when there is no number (kInvalid, kMissing, kOverload)
+  /// Monotonic instant the value stands for. A reply: the middle between the query's first byte out and the
+  /// reply's first byte in, minus the declared delay, half the integration time and, of a free-running meter,
+  /// half the update period. An unsolicited line: its first byte, minus delay and half the integration time.
+  std::int64_t t_ns = 0;
+  /// Half of that span (of a line: half its length), plus half the update period of a free-running meter.
+  std::int64_t half_width_ns = 0;
+  double value = 0.0;  ///< NaN exactly when there is no number (kInvalid, kMissing, kOverload)
   std::uint32_t flags = 0;
   double range = 0.0;  ///< full scale the reading was taken on; 0: not known
 };

@@ -189,7 +189,7 @@ TEST_CASE("a port given two ways is cross-checked against the interval of the di
 }
 
 TEST_CASE("undeclared leads are spoken of where they matter") {
-  // 5 milliohm at 20 A is 2 W of 240 W (job.md); 10 milliohm would be 4 W.
+  // 5 milliohm at 20 A is 2 W of 240 W (R I squared); 10 milliohm would be 4 W.
   const auto five = efficiency::lead_effect(12, 20, 0.005);
   CHECK(five.power_w == Approx(2).epsilon(1e-14));
   CHECK(five.matters);

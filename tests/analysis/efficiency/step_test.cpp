@@ -61,7 +61,7 @@ TEST_CASE("any number of ports is summed, auxiliaries as declared") {
 }
 
 TEST_CASE("four meters of 0.5 % give about one point, one pair moved between ports far less") {
-  // job.md: "four meters at 0.5 % each give about +/-1 point"; closed form: 1.96 * 0.965 * sqrt 4 * 0.5
+  // Four meters at 0.5 % each give about one point; closed form: 1.96 * 0.965 * sqrt 4 * 0.5
   // %/sqrt 3.
   const auto meter = [](const char* name, const char* function) {
     return estimate::MeterRange{{name, function, "range"}, 0, 0, estimate::AccuracySpec{0.5, 0, 0}};

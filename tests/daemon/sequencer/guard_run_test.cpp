@@ -1,5 +1,4 @@
-// Each fault of a guarded meter against each guard action, with its expected end state (issue 2, "Must
-// show").
+// Each fault of a guarded meter against each guard action, with its expected end state.
 #include <catch2/catch.hpp>
 
 #include "daemon/sequencer/run_bench.h"

@@ -1,5 +1,5 @@
 // Whole runs in virtual time. What is expected follows from the stair's definition (daemon/setup/stair.h),
-// methods 5 and job.md (Safety); the responders know nothing of the sequencer.
+// docs/methods.md section 5 and the cautions of README.md; the responders know nothing of the sequencer.
 #include "daemon/sequencer/sequencer.h"
 
 #include <catch2/catch.hpp>
@@ -86,7 +86,7 @@ TEST_CASE("a whole stair with linked channels") {
       CHECK(usable_in_window(channel, step) >= 9);  // 2 s, one each 0.2 s
   }
   CHECK(stored.steps[0].settled_how == "slope");
-  // The last step goes on to the rate criterion although a prediction is allowed (methods 5).
+  // The last step goes on to the rate criterion although a prediction is allowed.
   CHECK(stored.steps[1].settled_how == "rate");
   const auto settled_after_s =
       static_cast<double>(*stored.steps[1].settled_ns - kStartUtc - bench.load.last("SET 600")) * 1e-9;

@@ -94,7 +94,8 @@ net::awaitable<void> answer_when_open(VirtualBench& bench, std::int64_t delay_ns
 
 }  // namespace
 
-TEST_CASE("a reading stands for the middle of query and reply, less delay and half the integration time") {
+TEST_CASE(
+    "a reading stands for the middle of query and reply, less delay, half integration, half an update") {
   VirtualBench bench;
   auto settings = settings_named("voltmeter");
   settings.poll_s = 0.5;
@@ -102,11 +103,12 @@ TEST_CASE("a reading stands for the middle of query and reply, less delay and ha
   settings.integration_s = 0.02;
   settings.delay_s = 0.007;
   auto profile = test_profile("meter");
-  std::int64_t half_width_ns = 15 * kMilliNs + 50 * kMilliNs;
-  SECTION("free-running: half an update period wider") {}
+  // A conversion read at a moment of no significance is 0 to 100 ms old: 50 ms in the middle.
+  std::int64_t half_update_ns = 50 * kMilliNs;
+  SECTION("free-running") {}
   SECTION("triggered by the query") {
     profile.free_running = false;
-    half_width_ns = 15 * kMilliNs;
+    half_update_ns = 0;
   }
   Instrument meter{bench.io.get_executor(), *bench.clock, bench.opener(), profile, settings, bench.sink};
   bench.tasks.spawn(meter.run());
@@ -124,8 +126,9 @@ TEST_CASE("a reading stands for the middle of query and reply, less delay and ha
     CHECK(exchange.query == "MEAS:VOLT?");
     CHECK(exchange.reply == "+3.85012E+02");
     REQUIRE(exchange.readings.size() == 1);
-    CHECK(exchange.readings[0].t_ns == asked_ns + 15 * kMilliNs - 7 * kMilliNs - 10 * kMilliNs);
-    CHECK(exchange.readings[0].half_width_ns == half_width_ns);
+    CHECK(exchange.readings[0].t_ns ==
+          asked_ns + 15 * kMilliNs - 7 * kMilliNs - 10 * kMilliNs - half_update_ns);
+    CHECK(exchange.readings[0].half_width_ns == 15 * kMilliNs + half_update_ns);
   }
 }
 

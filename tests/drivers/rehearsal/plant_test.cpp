@@ -228,8 +228,7 @@ TEST_CASE("a dcdc is solved by the same laws", "[rehearsal]") {
   plant.settings.load_mode = LoadMode::resistance;
   plant.settings.load_resistance_ohm = 0.591;
   run(plant, 2.0);
-  // 12 V behind 4 mohm impedance and 5 mohm of lead, into 591 mohm: 20 A, and 2 W in the lead (job.md's
-  // example).
+  // 12 V behind 4 mohm impedance and 5 mohm of lead, into 591 mohm: 20 A, and 2 W in the lead (R I squared).
   CHECK(plant.last().output.current.mean == Approx(20.0).epsilon(1e-12));
   CHECK(plant.last().output.voltage[0].mean == Approx(11.92).epsilon(1e-12));
   CHECK(plant.last().output.voltage[1].mean == Approx(11.82).epsilon(1e-12));
