@@ -75,17 +75,26 @@ Answers ask_instruments(const setup::Hookup& hookup) {
   return answers;
 }
 
-/// The running daemon holds the links when it serves the same bench; then it is asked instead.
+/// The running daemon holds the links when it serves the same hook-up; then it is asked instead.
 Answers answers_for(const setup::Hookup& hookup) {
   for (const auto& address : service::living_daemons()) {
     const auto state = DaemonClient{address}.get("state");
-    if (state && (*state)["bench"] == hookup.bench) return {(*state)["instruments"], (*state)["channels"]};
+    if (state && (*state)["hookup"] == hookup.text) return {(*state)["instruments"], (*state)["channels"]};
   }
   return ask_instruments(hookup);
 }
 
-bool print_answers(const Answers& answers) {
-  bool all_there = true;
+bool all_there(const Answers& answers) {
+  for (const auto& instrument : answers.instruments) {
+    if (!instrument["ready"].get<bool>() && instrument["state"] != "watching folder") return false;
+  }
+  for (const auto& channel : answers.channels) {
+    if (!channel["typed"].get<bool>() && !channel["value"].is_number()) return false;
+  }
+  return true;
+}
+
+void print_answers(const Answers& answers) {
   std::cout << "\nInstruments\n";
   for (const auto& instrument : answers.instruments) {
     const std::string state = instrument["state"];
@@ -93,7 +102,6 @@ bool print_answers(const Answers& answers) {
     std::cout << "  " << instrument["name"].get<std::string>() << " ("
               << instrument["link"].get<std::string>() << "): " << state
               << (identity.empty() ? "" : ", says \"" + identity + "\"") << "\n";
-    all_there = all_there && (instrument["ready"].get<bool>() || state == "watching folder");
   }
   std::cout << "\nChannels\n";
   for (const auto& channel : answers.channels) {
@@ -105,10 +113,20 @@ bool print_answers(const Answers& answers) {
                 << channel["unit"].get<std::string>() << "\n";
     } else {
       std::cout << "no reading\n";
-      all_there = false;
     }
   }
-  return all_there;
+}
+
+/// How fast each guard is and whether it can do anything; a person must know before power is on.
+void print_guards(const setup::Stair& stair, const setup::Hookup& hookup) {
+  if (stair.guards.empty()) return;
+  std::cout << "\nGuards (conveniences on top of real protection)\n";
+  for (const auto& guard : setup::forecast_guards(stair, hookup)) {
+    std::cout << "  " << guard.name << ": decides at most " << base::print_significant(guard.worst_s, 2)
+              << " s after the limit is crossed, " << base::print_significant(guard.worst_missing_s, 2)
+              << " s after the last reading"
+              << (guard.acts ? "\n" : "; ALARM ONLY: you are the stop, nothing here can be switched off\n");
+  }
 }
 
 }  // namespace
@@ -129,6 +147,7 @@ int run_check(const CheckOptions& options) {
   }
   std::optional<Answers> answers;
   if (!options.offline) answers = answers_for(hookup);
+  good = good && (!answers || all_there(*answers));
 
   if (options.json) {
     json result = {{"findings", found}};
@@ -144,7 +163,8 @@ int run_check(const CheckOptions& options) {
     std::cout << "\n";
     for (const auto& line : setup::explain(*stair)) std::cout << line << "\n";
   }
-  if (answers) good = print_answers(*answers) && good;
+  if (answers) print_answers(*answers);
+  if (stair) print_guards(*stair, hookup);
   std::cout << "\nFindings and cautions\n";
   for (const auto& finding : findings) {
     std::cout << "  " << setup::name_of(finding.severity) << ": " << finding.text << "\n";

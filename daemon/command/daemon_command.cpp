@@ -1,4 +1,5 @@
 #include <spdlog/sinks/rotating_file_sink.h>
+#include <spdlog/sinks/stdout_sinks.h>
 #include <spdlog/spdlog.h>
 #include <unistd.h>
 
@@ -34,7 +35,10 @@ namespace fs = std::filesystem;
 constexpr std::size_t kLogBytes = 8U << 20U;
 
 void open_log(const std::string& file) {
-  if (file.empty()) return;  // spdlog's own default is replaced, since results go to standard output
+  if (file.empty()) {
+    spdlog::set_default_logger(spdlog::stderr_logger_mt("loadstair"));
+    return;
+  }
   spdlog::set_default_logger(spdlog::rotating_logger_mt("loadstair", file, kLogBytes, 4));
   spdlog::flush_on(spdlog::level::info);
 }
@@ -52,7 +56,7 @@ class Daemon {
     address_.record = fs::weakly_canonical(options.record).string();
     address_.version = program_version();
     address_.process = getpid();
-    server_ = take(service::HttpServer::listen(io_.get_executor(), options.port,
+    server_ = take(service::HttpServer::listen(io_.get_executor(), *clock_, options.port,
                                                service::make_api({sequencer_, bench_, record_, address_.token,
                                                                   address_.version, pool_.get_executor()})));
     address_.port = server_->port();
@@ -65,7 +69,7 @@ class Daemon {
     bench_.start();
     server_->start(tasks_);
     tasks_.spawn(serve_until_signal());
-    io_.run();
+    run_until_done();
     const auto closed = writer_->close();
     service::withdraw(address_);
     if (!closed) {
@@ -110,8 +114,25 @@ class Daemon {
     return options;
   }
 
+  /// What leaves a handler must not end the process with the bench live: the run is stopped, and all goes on.
+  void run_until_done() {
+    for (;;) {
+      try {
+        io_.run();
+        return;
+      } catch (const std::exception& error) {
+        spdlog::error("a fault of the program: {}", error.what());
+        if (const auto stopped = sequencer_.stop(std::string{"a fault of the program: "} + error.what());
+            !stopped) {
+          spdlog::info("{}", stopped.refusal().text());
+        }
+      }
+    }
+  }
+
   asio::awaitable<void> serve_until_signal() {
-    asio::signal_set signals{io_, SIGINT, SIGTERM};
+    // A closed terminal or a lost connection asks the daemon to end as well: in its safe state.
+    asio::signal_set signals{io_, SIGINT, SIGTERM, SIGHUP};
     if (!interrupted_.empty()) {
       spdlog::warn("run {} was interrupted; the bench is put into its safe state", interrupted_.back());
       tasks_.spawn(sequencer_.make_safe_after_crash(interrupted_));

@@ -39,7 +39,8 @@ class RehearsedPerson : public Person {
     if (!hookup.captures.empty()) scope_ = hookup.captures.front().instrument;
   }
 
-  void attend(const DaemonClient& daemon, const json& prompt) override {
+  void attend(const DaemonClient& daemon, const json& run) override {
+    const json& prompt = run["prompt"];
     const auto id = prompt["id"].get<std::int64_t>();
     if (prompt["kind"] == "hand") return follow_hand_prompt(daemon, prompt, id);
     const auto answer = ask_rehearsal(control_, "typed " + prompt["channel"].get<std::string>());
@@ -57,6 +58,12 @@ class RehearsedPerson : public Person {
     std::cout << "  typed " << prompt["channel"].get<std::string>() << ", round "
               << prompt["round"].get<int>() << ": " << value << " " << unit
               << (entered ? "" : " (" + entered.refusal().text() + ")") << std::endl;
+  }
+
+  /// Nobody is there to look after a hold, so a rehearsed run ends instead.
+  void decide_hold(const DaemonClient& daemon, const json& run) override {
+    const auto stopped = daemon.post("run/stop", {{"reason", "held: " + run["reason"].get<std::string>()}});
+    if (!stopped) std::cout << "  " << stopped.refusal().text() << std::endl;
   }
 
   void save_capture(const std::string& step_label) override {

@@ -127,11 +127,11 @@ std::string estimate_text(const json& estimate, double scale) {
 
 std::string result_table(const json& result) {
   const auto& prototype = result["prototype"];
-  std::string text =
-      prototype["name"].get<std::string>() + " revision " + prototype["revision"].get<std::string>() +
-      ", unit " + prototype["unit"].get<std::string>() + ", run " +
-      base::print_integer(result["run"].get<std::int64_t>()) + ", " + result["state"].get<std::string>() +
-      ". Intervals: 95 %.\n\n";
+  std::string text = prototype["name"].get<std::string>() + " revision " +
+                     prototype["revision"].get<std::string>() + ", unit " +
+                     prototype["unit"].get<std::string>() + ", run " +
+                     base::print_integer(result["run"].get<std::int64_t>()) + ", " +
+                     result["state"].get<std::string>() + ". Intervals: 95 %.\n\n";
   std::vector<Row> rows = {{"step", "load W", "input W", "output W", "efficiency %", "loss W", "PF", "THD %",
                             "crest", "end temperature \u00b0C", "settled"}};
   for (const auto& step : result["steps"]) rows.push_back(step_row(step));

@@ -23,7 +23,16 @@ int run_stair(const RunOptions& options) {
   if (!started) throw UserError{started.refusal()};
   const auto run = (*started)["run"].get<std::int64_t>();
   const auto person = person_at_terminal();
-  const RunOutcome outcome = follow_run(*daemon, run, *person);
+  RunOutcome outcome;
+  try {
+    outcome = follow_run(*daemon, run, *person);
+  } catch (...) {
+    // Nobody is left to attend to the run: it must not wait with the power on.
+    if (!daemon->post("run/stop", {{"reason", "nobody attends to the run any more"}})) {
+      std::cerr << "The run could not be stopped: the daemon does not answer.\n";
+    }
+    throw;
+  }
   const auto result = daemon->get("runs/" + std::to_string(run));
   if (!result) throw std::runtime_error{result.refusal().text()};
   std::cout << (options.json ? result->dump(2) + "\n" : result_table(*result));

@@ -29,7 +29,8 @@ std::string range_words(const json& prompt) {
 
 class TerminalPerson : public Person {
  public:
-  void attend(const DaemonClient& daemon, const json& prompt) override {
+  void attend(const DaemonClient& daemon, const json& run) override {
+    const json& prompt = run["prompt"];
     const auto id = prompt["id"].get<std::int64_t>();
     const std::string kind = prompt["kind"];
     if (id != shown_ || kind != shown_kind_) show(prompt);
@@ -41,9 +42,27 @@ class TerminalPerson : public Person {
     }
     const auto line = input_.next(kLookMs);
     if (!line) return;
-    const auto outcome =
-        kind == "hand" ? answer_hand(daemon, id, *line) : answer_typed(daemon, prompt, id, *line);
-    if (!outcome) std::cout << "  " << outcome.refusal().text() << "\n> " << std::flush;
+    tell(kind == "hand" ? answer_hand(daemon, id, *line) : answer_typed(daemon, run, *line));
+  }
+
+  void decide_hold(const DaemonClient& daemon, const json& run) override {
+    if (!hold_shown_) {
+      std::cout << "\n"
+                << bold("The run is held, and the power stays on: " + run["reason"].get<std::string>())
+                << "\nType resume (the step begins again with its soak), skip and a reason (the next step), "
+                   "or stop.\n> "
+                << std::flush;
+    }
+    hold_shown_ = true;
+    if (input_.ended()) throw std::runtime_error{"the run is held, and nobody is at this terminal"};
+    const auto line = input_.next(kLookMs);
+    if (!line) return;
+    hold_shown_ = false;
+    if (*line == "resume") return tell(daemon.post("run/resume", json::object()));
+    if (*line == "stop")
+      return tell(daemon.post("run/stop", {{"reason", "stopped from a hold at the terminal"}}));
+    if (line->starts_with("skip"))
+      return tell(daemon.post("run/skip", {{"reason", reason_after_skip(*line)}}));
   }
 
   void save_capture(const std::string& step_label) override {
@@ -52,7 +71,15 @@ class TerminalPerson : public Person {
   }
 
  private:
-  void show(const json& prompt) const {
+  static void tell(const base::Outcome<json>& outcome) {
+    if (!outcome) std::cout << "  " << outcome.refusal().text() << "\n> " << std::flush;
+  }
+
+  static std::string reason_after_skip(const std::string& line) {
+    return line.size() > 5 ? line.substr(5) : "";
+  }
+
+  static void show(const json& prompt) {
     std::cout << "\n" << bold(prompt["text"].get<std::string>()) << "\n";
     for (const auto& caution : prompt["cautions"]) std::cout << "  ! " << caution.get<std::string>() << "\n";
     if (prompt["kind"] == "hand") {
@@ -67,21 +94,26 @@ class TerminalPerson : public Person {
     std::cout << "Round " << prompt["round"].get<int>() << " of " << prompt["rounds"].get<int>()
               << ". Type the value as it stands on the display, then range and weight of the last digit, in "
               << prompt["unit"].get<std::string>() << " (ranges: " << range_words(prompt)
-              << "), for example: 385.1 600 0.1\n> " << std::flush;
+              << "), for example: 385.1 600 0.1\nOr: skip and a reason; fix, then the value, to correct the "
+                 "one before.\n> "
+              << std::flush;
   }
 
   static base::Outcome<json> answer_hand(const DaemonClient& daemon, std::int64_t id,
                                          const std::string& line) {
     if (line == "done") return daemon.post("prompt/answer", {{"prompt", id}, {"by", "terminal"}});
     if (line.starts_with("skip")) {
-      return daemon.post("prompt/refuse",
-                         {{"prompt", id}, {"reason", line.size() > 5 ? line.substr(5) : ""}});
+      return daemon.post("prompt/refuse", {{"prompt", id}, {"reason", reason_after_skip(line)}});
     }
     return base::Refusal{"", "type done, or skip and a reason"};
   }
 
-  base::Outcome<json> answer_typed(const DaemonClient& daemon, const json& prompt, std::int64_t id,
-                                   const std::string& line) {
+  base::Outcome<json> answer_typed(const DaemonClient& daemon, const json& run, const std::string& line) {
+    const json& prompt = run["prompt"];
+    std::int64_t id = prompt["id"];
+    if (line.starts_with("skip")) {
+      return daemon.post("prompt/refuse", {{"prompt", id}, {"reason", reason_after_skip(line)}});
+    }
     if (prompt["kind"] == "confirm" && line == "yes") {
       last_["confirmed"] = true;
       return daemon.post("prompt/typed", last_);
@@ -89,10 +121,20 @@ class TerminalPerson : public Person {
     std::vector<std::string> words;
     std::string word;
     for (const char letter : line + " ") {
-      if (letter != ' ')
+      if (letter != ' ') {
         word += letter;
-      else if (!word.empty())
+      } else if (!word.empty()) {
         words.push_back(std::exchange(word, {}));
+      }
+    }
+    if (!words.empty() && words.front() == "fix") {
+      const json* earlier = nullptr;
+      for (const auto& typed : run["typed"]) {
+        if (!typed["superseded"].get<bool>()) earlier = &typed;
+      }
+      if (earlier == nullptr) return base::Refusal{"", "nothing was entered in this step yet"};
+      id = (*earlier)["prompt"];
+      words.erase(words.begin());
     }
     if (words.empty()) return base::Refusal{"", "type the value as it stands on the display"};
     words.resize(3);
@@ -104,6 +146,7 @@ class TerminalPerson : public Person {
   LineInput input_;
   std::int64_t shown_ = 0;
   std::string shown_kind_;
+  bool hold_shown_ = false;
   json last_;
 };
 
@@ -156,7 +199,7 @@ std::unique_ptr<Person> person_at_terminal() {
 
 RunOutcome follow_run(const DaemonClient& daemon, std::int64_t number, Person& person) {
   Teller teller;
-  std::set<std::string> captured;
+  bool capture_asked = false;
   bool asked_to_stop = false;
   int without_answer = 0;
   for (;;) {
@@ -182,11 +225,20 @@ RunOutcome follow_run(const DaemonClient& daemon, std::int64_t number, Person& p
       std::cout << "Stopping: safe state first." << std::endl;
       asked_to_stop = daemon.post("run/stop", {{"reason", "interrupted at the terminal"}}).ok();
     }
-    const std::string label = run["label"];
-    if (run["step_phase"] == "capture" && captured.insert(label).second) person.save_capture(label);
-    if (run["prompt"].is_object() && !asked_to_stop) {
+    // A capture is wanted again when the step was held and begins again.
+    if (run["step_phase"] != "capture") {
+      capture_asked = false;
+    } else if (!std::exchange(capture_asked, true)) {
+      person.save_capture(run["label"]);
+    }
+    if (asked_to_stop) {
+      poll(nullptr, 0, kLookMs);
+    } else if (run["prompt"].is_object()) {
       teller.finish_line();
-      person.attend(daemon, run["prompt"]);
+      person.attend(daemon, run);
+    } else if (run["phase"] == "holding") {
+      teller.finish_line();
+      person.decide_hold(daemon, run);
     } else {
       poll(nullptr, 0, kLookMs);
     }

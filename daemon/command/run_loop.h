@@ -13,7 +13,10 @@ class Person {
  public:
   virtual ~Person() = default;
   /// Called again and again while a prompt is open; answers through `daemon` when it can.
-  virtual void attend(const DaemonClient& daemon, const nlohmann::json& prompt) = 0;
+  /// run  the run's state, with the prompt and what was typed in this step
+  virtual void attend(const DaemonClient& daemon, const nlohmann::json& run) = 0;
+  /// Called again and again while the run is held with the power on.
+  virtual void decide_hold(const DaemonClient& daemon, const nlohmann::json& run) = 0;
   /// Called once per step when a capture is wanted.
   virtual void save_capture(const std::string& step_label) = 0;
 };

@@ -90,7 +90,7 @@ void catch_interrupts() {
   const auto note = [](int) { g_interrupted = 1; };
   std::signal(SIGINT, note);
   std::signal(SIGTERM, note);
-  std::signal(SIGPIPE, SIG_IGN);
+  std::signal(SIGHUP, note);
 }
 
 bool interrupted() {

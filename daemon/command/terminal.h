@@ -38,7 +38,7 @@ class LineInput {
   bool ended_ = false;
 };
 
-/// SIGINT and SIGTERM set a flag from here on, so that a command can end in order.
+/// SIGINT, SIGTERM and SIGHUP set a flag from here on, so that a command can end in order.
 void catch_interrupts();
 [[nodiscard]] bool interrupted();
 

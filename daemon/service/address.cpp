@@ -40,13 +40,15 @@ std::optional<Address> read_address(const fs::path& file) {
   std::ifstream in{file};
   const json text = json::parse(in, nullptr, false);
   if (!text.is_object()) return std::nullopt;
-  Address address;
-  address.port = text.value("port", 0);
-  address.token = text.value("token", "");
-  address.record = text.value("record", "");
-  address.version = text.value("version", "");
-  address.process = text.value("process", 0);
-  return address;
+  const auto whole = [&](const char* name) {
+    const auto found = text.find(name);
+    return found != text.end() && found->is_number_integer() ? found->get<int>() : 0;
+  };
+  const auto word = [&](const char* name) {
+    const auto found = text.find(name);
+    return found != text.end() && found->is_string() ? found->get<std::string>() : std::string{};
+  };
+  return Address{whole("port"), word("token"), word("record"), word("version"), whole("process")};
 }
 
 bool lives(const Address& address) {
@@ -74,7 +76,9 @@ base::Outcome<std::string> runtime_folder() {
   std::error_code error;
   fs::create_directories(folder, error);
   struct stat state {};
-  if (stat(folder.c_str(), &state) != 0 || state.st_uid != getuid() || chmod(folder.c_str(), 0700) != 0) {
+  // lstat: a link that somebody laid in a folder for all is not followed.
+  if (lstat(folder.c_str(), &state) != 0 || !S_ISDIR(state.st_mode) || state.st_uid != getuid() ||
+      chmod(folder.c_str(), 0700) != 0) {
     return base::Refusal{folder,
                          "cannot be made a folder of this user's own; set LOADSTAIR_RUNTIME to one that can"};
   }

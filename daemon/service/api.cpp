@@ -85,11 +85,16 @@ class Api {
  private:
   asio::awaitable<HttpReply> read(std::string path) {
     if (path == "state") co_return good(state());
-    if (path == "runs") co_return co_await on_pool([this] { return list_runs(); });
+    // Named: g++ 12 destroys a closure that is built inside a co_await expression twice.
+    if (path == "runs") {
+      const auto list = [this] { return list_runs(); };
+      co_return co_await on_pool(list);
+    }
     if (path.starts_with("runs/")) {
       const auto run = base::parse_integer(path.substr(5));
       if (!run) co_return refused(404, "a run has a number: /api/v1/runs/1");
-      co_return co_await on_pool([this, run = *run] { return results(run); });
+      const auto evaluate = [this, run = *run] { return results(run); };
+      co_return co_await on_pool(evaluate);
     }
     co_return refused(404, "there is no /api/v1/" + path);
   }
@@ -98,6 +103,7 @@ class Api {
     return {{"program", "loadstair"},
             {"version", parts_.version},
             {"bench", parts_.bench.hookup().bench},
+            {"hookup", parts_.bench.hookup().text},
             {"record", parts_.record.path()},
             {"run", to_json(parts_.sequencer.snapshot(), parts_.bench.clock().utc_offset_ns())},
             {"channels", to_json(parts_.bench.channels())},
@@ -105,12 +111,15 @@ class Api {
             {"hand_cautions", sequencer::hand_cautions(parts_.bench.hookup())}};
   }
 
+  template <class Job>
+  static asio::awaitable<HttpReply> run_job(Job job) {
+    co_return job();
+  }
+
   /// Runs a job on the pool and comes back to our executor with its reply.
   template <class Job>
   asio::awaitable<HttpReply> on_pool(Job job) {
-    co_return co_await asio::co_spawn(
-        parts_.pool, [](Job work) -> asio::awaitable<HttpReply> { co_return work(); }(std::move(job)),
-        asio::use_awaitable);
+    co_return co_await asio::co_spawn(parts_.pool, run_job(std::move(job)), asio::use_awaitable);
   }
 
   [[nodiscard]] HttpReply list_runs() const {

@@ -54,8 +54,8 @@ Response render(const HttpReply& reply, unsigned version, bool keep_alive) {
 
 class Server : public HttpServer {
  public:
-  Server(tcp::acceptor acceptor, HttpHandler handler)
-      : acceptor_{std::move(acceptor)}, handler_{std::move(handler)} {}
+  Server(tcp::acceptor acceptor, link::Clock& clock, HttpHandler handler)
+      : acceptor_{std::move(acceptor)}, clock_{clock}, handler_{std::move(handler)} {}
 
   [[nodiscard]] int port() const override { return acceptor_.local_endpoint().port(); }
 
@@ -66,7 +66,11 @@ class Server : public HttpServer {
     for (;;) {
       auto [error, socket] = co_await acceptor_.async_accept(kQuiet);
       if (error == asio::error::operation_aborted) co_return;
-      if (error) continue;
+      if (error) {
+        // Out of descriptors, most likely: look again a little later instead of spinning.
+        co_await clock_.sleep_for(std::chrono::milliseconds{100});
+        continue;
+      }
       scope.spawn(converse(std::move(socket)));
     }
   }
@@ -141,12 +145,14 @@ class Server : public HttpServer {
   }
 
   tcp::acceptor acceptor_;
+  link::Clock& clock_;
   HttpHandler handler_;
 };
 
 }  // namespace
 
-base::Outcome<std::unique_ptr<HttpServer>> HttpServer::listen(asio::any_io_executor executor, int port,
+base::Outcome<std::unique_ptr<HttpServer>> HttpServer::listen(asio::any_io_executor executor,
+                                                              link::Clock& clock, int port,
                                                               HttpHandler handler) {
   tcp::acceptor acceptor{executor};
   const tcp::endpoint where{asio::ip::address_v4::loopback(), static_cast<std::uint16_t>(port)};
@@ -159,7 +165,7 @@ base::Outcome<std::unique_ptr<HttpServer>> HttpServer::listen(asio::any_io_execu
     return base::Refusal{"127.0.0.1:" + base::print_integer(port),
                          "cannot listen there (" + error.message() + "); choose another port with --port"};
   }
-  return std::unique_ptr<HttpServer>{new Server{std::move(acceptor), std::move(handler)}};
+  return std::unique_ptr<HttpServer>{new Server{std::move(acceptor), clock, std::move(handler)}};
 }
 
 }  // namespace loadstair::service

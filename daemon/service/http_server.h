@@ -11,6 +11,7 @@
 #include <string>
 
 #include "analysis/base/outcome.h"
+#include "drivers/link/clock.h"
 #include "drivers/link/task_scope.h"
 
 namespace loadstair::service {
@@ -36,9 +37,9 @@ using HttpHandler = std::function<boost::asio::awaitable<HttpReply>(HttpRequest)
 /// application/json, which a foreign page could send without asking.
 class HttpServer {
  public:
-  /// `port` 0: any free one. Refusal: the port is taken.
-  static base::Outcome<std::unique_ptr<HttpServer>> listen(boost::asio::any_io_executor executor, int port,
-                                                           HttpHandler handler);
+  /// The clock outlives the server. `port` 0: any free one. Refusal: the port is taken.
+  static base::Outcome<std::unique_ptr<HttpServer>> listen(boost::asio::any_io_executor executor,
+                                                           link::Clock& clock, int port, HttpHandler handler);
   virtual ~HttpServer() = default;
 
   [[nodiscard]] virtual int port() const = 0;

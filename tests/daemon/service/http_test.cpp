@@ -20,7 +20,7 @@ namespace {
 class Served {
  public:
   Served() {
-    auto server = service::HttpServer::listen(io_.get_executor(), 0,
+    auto server = service::HttpServer::listen(io_.get_executor(), *clock_, 0,
                                               [](HttpRequest request) { return echo(std::move(request)); });
     REQUIRE(server);
     server_ = std::move(*server);
@@ -41,6 +41,7 @@ class Served {
   }
 
   boost::asio::io_context io_{1};
+  std::unique_ptr<link::Clock> clock_ = link::make_real_clock();
   link::TaskScope tasks_{io_.get_executor(), [](std::exception_ptr) {}};
   std::unique_ptr<service::HttpServer> server_;
   std::thread thread_;
