@@ -147,7 +147,7 @@ awaitable<Go> Sequencer::State::wait_for_instruments() {
 awaitable<Go> Sequencer::State::put_on_disk() {
   enter(StepPhase::start, "waits until the run is on the disk");
   struct Flush {
-    base::Outcome<void> outcome;
+    base::Outcome<void> outcome{base::Refusal{"record", "nothing was written"}};
     bool done = false;
   };
   const auto flush = std::make_shared<Flush>();
@@ -156,7 +156,9 @@ awaitable<Go> Sequencer::State::put_on_disk() {
                         flush->done = true;
                         self->wake.notify();
                       });
-  const auto go = co_await wait_for([flush] { return flush->done; }, INT64_MAX);
+  // Named, since g++ 12 destroys a closure that is built inside a co_await expression twice.
+  const std::function<bool()> done = [flush] { return flush->done; };
+  const auto go = co_await wait_for(done, INT64_MAX);
   if (go != Go::on) co_return go;
   if (!flush->outcome) {
     stop_now("the run cannot be recorded, so nothing was switched on: " + flush->outcome.refusal().text());
