@@ -14,9 +14,9 @@ def main():
     out = tempfile.mkdtemp(prefix="ls-demo-", dir="/tmp")
     runtime = os.path.join(out, "rt")
     env = dict(os.environ, LOADSTAIR_RUNTIME=runtime, NO_COLOR="1")
-    stair = os.path.join(source, "tests", "whole", "short.stair.json")
-    demo = subprocess.run([program, "demo", "--out", out, "--seed", "3", "--headless", "--stair", stair], env=env,
-                          capture_output=True, text=True, timeout=170, stdin=subprocess.DEVNULL)
+    # The demo as the README starts it; three minutes are what it promises to stay under.
+    demo = subprocess.run([program, "demo", "--out", out, "--seed", "3", "--headless"], env=env, capture_output=True,
+                          text=True, timeout=180, stdin=subprocess.DEVNULL)
     print(demo.stdout[-6000:])
     assert demo.returncode == 0, f"exit status {demo.returncode}: {demo.stderr}"
     record = os.path.join(out, "record.db")
@@ -31,7 +31,8 @@ def main():
     result = json.loads(first)
     with open(os.path.join(out, "truth.json")) as text:
         truth = {step["label"]: step for step in json.load(text)["steps"]}
-    assert len(result["steps"]) == 4
+    assert len(result["steps"]) == 8
+    assert "prove dead with a tester" in demo.stdout, "the hand prompt shows no cautions"
     holding = 0
     for step in result["steps"]:
         efficiency = step["efficiency"]
@@ -43,9 +44,15 @@ def main():
         assert 0.6 < efficiency["value"] < 1.0
         assert abs(sum(entry["share"] for entry in step["budget"]) - 1.0) < 1e-9
         assert step["temperatures"][0]["end"]["value"] is not None
-    assert holding >= 2, "the truth is outside most intervals"
+    # Independent intervals would miss more than 2 of 8 once in 170 demos; these share their meters, and the seed is
+    # fixed, so that this is a check of the whole and not of coverage (coverage_test.cpp).
+    assert holding >= 6, "the truth is outside most intervals"
     captures = os.listdir(os.path.join(out, "captures"))
-    assert len(captures) == 3, captures
+    assert len(captures) == 8, captures
+    figures = ("power_factor", "thd_voltage", "crest_factor", "loss", "input_power", "output_power")
+    for step in result["steps"]:
+        for figure in figures:
+            assert step[figure]["value"] is not None, (step["label"], figure, step[figure])
 
     os.remove(os.path.join(out, "truth.json"))
     assert show() == first, "a result changed when truth.json was deleted"
@@ -59,7 +66,7 @@ def main():
     bench.record, bench.log_path = record, os.path.join(out, "rehearsal.log")
     joined = check_readings_against_log(bench, 1)
     bench.close()
-    print(f"{joined} replies of good readings join the rehearsal's log; {holding} of 4 intervals hold the truth")
+    print(f"{joined} replies of good readings join the rehearsal's log; {holding} of 8 intervals hold the truth")
 
 
 main()

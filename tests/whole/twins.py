@@ -22,6 +22,7 @@ def main():
             truth = {step["label"]: step["efficiency"] for step in json.load(text)["steps"]}
         virtual = [json.loads(line) for line in
                    subprocess.run([twin, str(seed)], check=True, capture_output=True, text=True).stdout.splitlines()]
+        assert [step["label"] for step in shown["steps"]] == [step["label"] for step in virtual]
         for real, twin_step in zip(shown["steps"], virtual):
             # The error of each, result minus truth: the same meters with the same drawn errors made both.
             error = real["efficiency"]["value"] - truth[real["label"]]
@@ -31,7 +32,8 @@ def main():
             worst = max(worst, share)
             print(f"seed {seed}, {real['label']}: error {error:+.6f}, twin {twin_error:+.6f}, "
                   f"apart by {share:.2f} of the interval's half-width {half:.6f}")
-            assert share < 0.5, "demo and virtual twin disagree beyond noise"
+            # What differs: noise, and the last digit of the typed voltage, 0.1 V of 385 V or 0.15 of a half-width.
+            assert share < 0.25, "demo and virtual twin disagree beyond noise"
     print(f"three demos agree with their twins; largest difference {worst:.2f} of a half-width")
 
 
