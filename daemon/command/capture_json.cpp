@@ -9,7 +9,7 @@ namespace {
 
 using Json = nlohmann::ordered_json;
 
-/// Nothing is declared of a file's scope and probes, so no figure of it has an interval (methods.md, section
+/// Nothing is declared of a file's scope and probes, so no figure of it has an interval (docs/methods.md, section
 /// 3).
 constexpr const char* kNotKnown = "uncertainty not known";
 
