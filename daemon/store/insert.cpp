@@ -75,6 +75,7 @@ void Inserter::insert_one(const RunBegin& item) {
             start.utc_offset_ns, start.zone, static_cast<std::int64_t>(start.seed), start.program_version,
             start.method_version, start.hookup_file, hookup, start.stair_file, stair)
       .run();
+  connection_.cached("INSERT INTO owed_safe_state (run) VALUES (?)").bind(item.run).run();
   std::int32_t position = 0;
   for (const NamedText& profile : start.profiles) {
     const std::int64_t text = text_id(profile.text);
@@ -258,6 +259,10 @@ void Inserter::insert_one(const BenchCheckItem& item) {
 
 void Inserter::insert_one(const SealItem& item) {
   seal_run(connection_, item.run, item.when_utc_ns);
+}
+
+void Inserter::insert_one(const SafeStateItem& item) {
+  connection_.cached("DELETE FROM owed_safe_state WHERE run = ?").bind(item.run).run();
 }
 
 }  // namespace loadstair::store

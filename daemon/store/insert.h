@@ -47,6 +47,7 @@ class Inserter {
   void insert_one(const AmendmentItem& item);
   void insert_one(const BenchCheckItem& item);
   void insert_one(const SealItem& item);
+  void insert_one(const SafeStateItem& item);
   std::unique_ptr<OpenCapture> insert_capture(const CaptureItem& item);
 
   [[nodiscard]] std::int64_t utc(RunId run, std::int64_t t_ns) const;

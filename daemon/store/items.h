@@ -162,12 +162,18 @@ struct SealItem {
   std::int64_t when_utc_ns = 0;
 };
 
+/// The bench is in its safe state: the run owes none any more. Every run owes one from its beginning; this
+/// may come long after its end, for a sealed run too.
+struct SafeStateItem {
+  RunId run = 0;
+};
+
 struct RunBegin {
   RunId run = 0;
   RunStart start;
 };
 
 using Item = std::variant<RunBegin, RunEnd, StepUpdate, ReplyItem, TypedAnswer, CaptureItem, EventItem,
-                          SettingItem, PromptItem, AmendmentItem, BenchCheckItem, SealItem>;
+                          SettingItem, PromptItem, AmendmentItem, BenchCheckItem, SealItem, SafeStateItem>;
 
 }  // namespace loadstair::store

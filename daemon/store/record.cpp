@@ -236,6 +236,18 @@ base::Outcome<std::vector<RunId>> Record::mark_interrupted(std::int64_t utc_ns) 
   }
 }
 
+base::Outcome<std::vector<RunId>> Record::owed_safe_states() const {
+  base::require(state_->write != nullptr && !state_->writer_lives, "owed_safe_states before any writer");
+  try {
+    std::vector<RunId> runs;
+    Statement owed{state_->write->handle(), "SELECT run FROM owed_safe_state ORDER BY run"};
+    while (owed.step()) runs.push_back(owed.integer(0));
+    return runs;
+  } catch (const SqlFault& fault) {
+    return to_refusal(fault, state_->path);
+  }
+}
+
 base::Outcome<void> Record::copy_to(const std::string& to) const {
   std::error_code none;
   if (fs::exists(to, none)) return base::Refusal{to, "exists already. Name a file that does not"};

@@ -47,6 +47,11 @@ class Record {
   /// Returns: the runs concerned. Precondition: Mode::write and no Writer yet.
   [[nodiscard]] base::Outcome<std::vector<RunId>> mark_interrupted(std::int64_t utc_ns);
 
+  /// Runs, in whatever state, after which nobody has said that the bench is safe (SafeStateItem): their
+  /// program ended before it could make it safe, or an instrument did not confirm it. Returns: in order of
+  /// their numbers. Precondition: Mode::write and no Writer yet.
+  [[nodiscard]] base::Outcome<std::vector<RunId>> owed_safe_states() const;
+
   /// A copy in one file without a journal (VACUUM INTO); `to` must not exist.
   [[nodiscard]] base::Outcome<void> copy_to(const std::string& to) const;
 

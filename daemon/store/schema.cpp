@@ -73,6 +73,7 @@ CREATE INDEX amendment_of_run ON amendment (run);
 CREATE TABLE seal (
   id INTEGER PRIMARY KEY, run INTEGER NOT NULL UNIQUE REFERENCES run, when_ns INTEGER NOT NULL,
   previous BLOB NOT NULL, content BLOB NOT NULL, digest BLOB NOT NULL) STRICT;
+CREATE TABLE owed_safe_state (run INTEGER PRIMARY KEY REFERENCES run) STRICT;
 CREATE VIEW plain_reading AS
   SELECT reading.id, reading.run, step.position AS step, step.label AS step_label, channel.name AS channel,
     strftime('%Y-%m-%dT%H:%M:%S', reading.t_ns / 1000000000, 'unixepoch')

@@ -22,6 +22,9 @@
 //  digest is
 //      32 zero bytes.
 //  R10 Every commit is on the disk (WAL, synchronous=FULL) before the writer calls it committed.
+//  R11 owed_safe_state names a run from the commit that begins it until one says that the bench is safe. It
+//  tells of
+//      the bench, not of what was measured: no seal covers it.
 #pragma once
 
 #include <string>

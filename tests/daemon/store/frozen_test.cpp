@@ -34,6 +34,7 @@ TEST_CASE("a record of schema 1 is read, verified and gone on with") {
   CHECK(run->settings[0].read_back == 29.98);
   CHECK(run->steps[0].settled_how == "rate");
 
+  CHECK(*record->owed_safe_states() == std::vector<RunId>{2});
   CHECK(*record->mark_interrupted(kOffset) == std::vector<RunId>{2});
   auto writer = Writer::start(*record, {.threaded = false});
   REQUIRE(writer.ok());

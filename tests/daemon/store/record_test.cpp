@@ -292,6 +292,36 @@ TEST_CASE("runs left running become interrupted, with their steps, once") {
   CHECK(load(record, 2).events.back().t_ns == kOffset + 7 + 1000);
 }
 
+TEST_CASE("a run owes its safe state from its first commit until the bench is said to be safe") {
+  const TemporaryFolder folder;
+  const std::string path = folder.file("record.db");
+  {
+    Record record = open_new(path);
+    CHECK(record.owed_safe_states()->empty());
+    auto writer = start(record);
+    const RunId sealed = writer->begin_run(sample_start());
+    writer->post(RunEnd{sealed, RunState::stopped, 20 * kSecond, "the load did not answer"});
+    writer->post(SealItem{sealed, kOffset});
+    post_sample_run(*writer);
+    static_cast<void>(writer->begin_run(sample_start()));
+    REQUIRE(writer->close().ok());
+  }
+  Record record = open_new(path);
+  // Neither reading it nor marking the interrupted run uses it up: the daemon may die before the bench is
+  // safe.
+  CHECK(*record.mark_interrupted(kOffset) == std::vector<RunId>{3});
+  CHECK(*record.owed_safe_states() == std::vector<RunId>{1, 3});
+  CHECK(record.mark_interrupted(kOffset)->empty());
+  CHECK(*record.owed_safe_states() == std::vector<RunId>{1, 3});
+  {
+    auto writer = start(record);
+    writer->post(SafeStateItem{1});  // although it is sealed
+    REQUIRE(writer->close().ok());
+  }
+  CHECK(*record.owed_safe_states() == std::vector<RunId>{3});
+  CHECK(record.reader()->verify_seals().ok());
+}
+
 TEST_CASE("an item for a run that is not there is told as an event and holds up nothing") {
   const TemporaryFolder folder;
   Record record = open_new(folder.file("record.db"));

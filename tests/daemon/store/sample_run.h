@@ -53,7 +53,7 @@ inline store::ReplyItem sample_reply(store::RunId run, std::int64_t t_ns, double
   return item;
 }
 
-/// Posts one of everything and ends the run; not sealed.
+/// Posts one of everything and ends the run, with the bench safe; not sealed.
 inline store::RunId post_sample_run(store::Writer& writer) {
   const store::RunId run = writer.begin_run(sample_start());
   store::StepUpdate step;
@@ -105,6 +105,7 @@ inline store::RunId post_sample_run(store::Writer& writer) {
   writer.post(store::RunEnd{run, store::RunState::done, 20 * kSecond, "all steps done"});
   writer.post(store::AmendmentItem{run, "A. Bench", "the shunt's certificate", kOffset + 30 * kSecond,
                                    "hookup", "/channels/1/conversion/shunt/resistance_ohm", "0.1", "0.1001"});
+  writer.post(store::SafeStateItem{run});
   return run;
 }
 
