@@ -32,7 +32,7 @@ std::string reason_of(int error) {
     case ENOENT:
     case ENODEV:
     case ENXIO:
-      return "no such port; is the cable plugged in? `loadstair ports` lists what is there";
+      return "no such port; is the cable plugged in? See which ports the system has, then correct the link";
     case EACCES:
     case EPERM:
       return "this user may not open it; add the user to the group that owns it (dialout), then log in again";
@@ -149,7 +149,8 @@ Outcome<void> set_port(sp_port* port, const SerialSettings& settings, const std:
 Outcome<OpenTerminal> open_port(const SerialSettings& settings, const std::string& name) {
   sp_port* raw = nullptr;
   if (sp_get_port_by_name(settings.path.c_str(), &raw) != SP_OK) {
-    return Refusal{name, "not one of the system's serial ports; `loadstair ports` lists them"};
+    return Refusal{name,
+                   "not one of the system's serial ports; name the device of the port, such as /dev/ttyUSB0"};
   }
   if (sp_open(raw, SP_MODE_READ_WRITE) != SP_OK) {
     const int error = sp_last_error_code();

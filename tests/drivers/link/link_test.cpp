@@ -310,10 +310,10 @@ TEST_CASE("ports that are not there or not ports are refused with what to do") {
   io.run();
   CHECK(refusals ==
         std::vector<std::string>{
-            "serial /dev/ttyLoadstair0 at 9600 baud: no such port; is the cable plugged in? `loadstair "
-            "ports` lists what is there",
-            "serial /dev/null at 300 baud: not one of the system's serial ports; `loadstair ports` lists "
-            "them",
+            "serial /dev/ttyLoadstair0 at 9600 baud: no such port; is the cable plugged in? See "
+            "which ports the system has, then correct the link",
+            "serial /dev/null at 300 baud: not one of the system's serial ports; name the device of the "
+            "port, such as /dev/ttyUSB0",
             "tcp 127.0.0.1:0: the port must be 1 to 65535",
             "tcp 127.0.0.1:1: no connection (Connection refused); is the instrument on, and is this its "
             "port?"});
