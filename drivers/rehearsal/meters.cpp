@@ -61,6 +61,11 @@ int decimals_of(double digit) {
   return std::clamp(static_cast<int>(std::ceil(-std::log10(digit) - 1e-9)), 0, 12);
 }
 
+double warming(const Shunt& shunt, double cold_ohm, double mean_square_a2) {
+  const double share = 1e-6 * shunt.tempco_ppm_per_k * shunt.rise_k_per_w * cold_ohm * mean_square_a2;
+  return 1.0 / (1.0 - std::min(share, 0.9));
+}
+
 Meter::Meter(MeterDescription description, std::uint64_t seed, std::uint64_t run)
     : description_{std::move(description)}, seed_{seed}, run_{run} {
   const double place = symmetric_draw(key_of(seed_, description_.name + " phase", {run_}));
@@ -128,6 +133,13 @@ std::optional<std::size_t> Meter::range_for(std::size_t function, double magnitu
   return std::nullopt;
 }
 
+double Meter::volts_per_ampere(std::size_t function, const SignalMeans& current) const {
+  const MeterFunction& f = description_.functions[function];
+  if (!f.shunt) return 1.0;
+  const double cold_ohm = series_ohm(function, 0);
+  return cold_ohm * warming(*f.shunt, cold_ohm, current.mean_square);
+}
+
 double Meter::true_value(std::size_t function, const StepMeans& means) const {
   const MeterFunction& f = description_.functions[function];
   const PortStep& port = f.port == Port::input ? means.input : means.output;
@@ -136,7 +148,7 @@ double Meter::true_value(std::size_t function, const StepMeans& means) const {
     case Quantity::voltage:
       return responding(f.response, port.voltage[node]);
     case Quantity::current:
-      return responding(f.response, port.meter_current) * (f.shunt ? series_ohm(function, 0) : 1.0);
+      return responding(f.response, port.meter_current) * volts_per_ampere(function, port.meter_current);
     case Quantity::power:
       return port.meter_power_w[node];
     case Quantity::power_factor: {

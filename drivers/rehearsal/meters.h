@@ -48,7 +48,14 @@ struct MeterRange {
 struct Shunt {
   double resistance_ohm = 0.1;
   double tolerance_percent = 0.0;  ///< the true one is drawn inside
+  double tempco_ppm_per_k = 0.0;   ///< of the resistance, from ambient on
+  double rise_k_per_w = 0.0;       ///< self-heating
 };
+
+/// How many times its cold resistance a shunt R has at a mean square current: it is heated by the power in
+/// its hot resistance, so k = 1 + alpha theta k R i^2, k = 1 / (1 - alpha theta R i^2). At most 10: it would
+/// have burnt.
+[[nodiscard]] double warming(const Shunt& shunt, double cold_ohm, double mean_square_a2);
 
 /// One thing a meter can show.
 struct MeterFunction {
@@ -120,6 +127,8 @@ class Meter {
 
  private:
   [[nodiscard]] double true_value(std::size_t function, const StepMeans& means) const;
+  /// Of a shunt as warm as the current makes it; 1 where the meter reads amperes.
+  [[nodiscard]] double volts_per_ampere(std::size_t function, const SignalMeans& current) const;
   [[nodiscard]] Shown show(std::size_t function, double value, std::int64_t conversion) const;
 
   MeterDescription description_;

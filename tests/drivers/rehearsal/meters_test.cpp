@@ -118,6 +118,30 @@ TEST_CASE("each response turns the same waveform into its own number", "[rehears
   CHECK(reading(Response::average_responding) == Approx(230.0).epsilon(1e-12));
 }
 
+TEST_CASE("a shunt warms up by the mean square of its current", "[rehearsal]") {
+  // 2 A of DC with 1 A of ripple: i^2 = 5 A^2. In 0.1 ohm with 100 ppm/K and 40 K/W, P = k R i^2 and
+  // k = 1 + alpha theta P: k = 1 / (1 - 1e-4 * 40 * 0.5) = 1 / 0.998. The mean voltage is 2 A times k R.
+  PlantStep step;
+  step.input.meter_current = {2.0, 5.0, 2.0};
+  const History history = steady(step, 2.0);
+  const auto volts = [&](Shunt shunt) {
+    MeterDescription d;
+    d.name = "m";
+    MeterFunction f;
+    f.quantity = Quantity::current;
+    f.shunt = shunt;
+    d.functions = {f};
+    return Meter{d, 1, 1}.shown(history, 1.5).at(0).value;
+  };
+  CHECK(volts({0.1, 0.0}) == Approx(0.2).epsilon(1e-12));
+  CHECK(volts({0.1, 0.0, 100.0, 40.0}) == Approx(0.2 / 0.998).epsilon(1e-12));
+  CHECK(volts({0.1, 0.0, -100.0, 40.0}) == Approx(0.2 / 1.002).epsilon(1e-12));
+  // No heat without a way out of it, and no drift without a coefficient.
+  CHECK(volts({0.1, 0.0, 100.0, 0.0}) == Approx(0.2).epsilon(1e-12));
+  CHECK(volts({0.1, 0.0, 0.0, 40.0}) == Approx(0.2).epsilon(1e-12));
+  CHECK(volts({0.1, 0.0, 1e4, 1e6}) == Approx(2.0).epsilon(1e-12));
+}
+
 TEST_CASE("a free-running meter repeats a finished conversion until the next is ready", "[rehearsal]") {
   MeterDescription d;
   d.name = "m";
