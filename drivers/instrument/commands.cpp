@@ -211,17 +211,40 @@ net::awaitable<bool> Instrument::Impl::do_switch_on(JobPointer job) {
     finish(job, CommandState::sent, "sent; it cannot be read back");
     co_return true;
   }
-  if (job->outcome) co_return true;
-  const auto said = co_await read_back(profile_.safe->confirm_query);
-  if (said.link_lost) co_return false;
-  if (!said.text) {
-    finish(job, CommandState::refused, "no reply to " + profile_.safe->confirm_query);
-  } else if (is_safe_reply(*said.text)) {
-    finish(job, CommandState::refused, "it still answers '" + dialect::printable(*said.text) + "'");
-  } else {
-    finish(job, CommandState::confirmed, "confirmed");
+  co_return co_await confirm_on(job);
+}
+
+/// Only a reply that reads as on confirms: any other may belong to another query, so it is asked again in
+/// step.
+net::awaitable<bool> Instrument::Impl::confirm_on(JobPointer job) {
+  const std::string& query = profile_.safe->confirm_query;
+  std::string last_said;
+  for (int attempt = 0; attempt < kTries && !job->outcome; ++attempt) {
+    if (attempt > 0) {
+      const bool in_step = co_await back_in_step();
+      if (!in_step) co_return false;
+      if (job->outcome) co_return true;
+    }
+    const auto said = co_await read_back(query);
+    if (said.link_lost) co_return false;
+    if (!said.text) {
+      finish(job, CommandState::refused, "no reply to " + query);
+    } else if (is_safe_reply(*said.text)) {
+      finish(job, CommandState::refused, "it still answers '" + dialect::printable(*said.text) + "'");
+    } else if (is_on_reply(*said.text)) {
+      finish(job, CommandState::confirmed, "confirmed");
+    } else {
+      last_said = *said.text;
+    }
   }
+  finish(job, CommandState::refused,
+         "it answers '" + dialect::printable(last_said) + "' to " + query + ", which is neither on nor off");
   co_return true;
+}
+
+bool Instrument::Impl::is_on_reply(std::string_view text) const {
+  const auto said = read_switch(text);
+  return said && *said != read_switch(dialect::trim(profile_.safe->confirm_reply)).value_or(0.0);
 }
 
 bool Instrument::Impl::is_safe_reply(std::string_view text) const {

@@ -248,25 +248,6 @@ net::awaitable<void> Instrument::Impl::serve_queries() {
   }
 }
 
-net::awaitable<bool> Instrument::Impl::round() {
-  if (profile_.queries.empty()) co_return co_await check_presence();
-  for (std::size_t query = 0; query < profile_.queries.size(); ++query) {
-    if (stopping_) co_return false;
-    if (safe_) co_return true;
-    if (query > 0) co_await talk_.pause_between();
-    const bool linked = co_await ask_query(query);
-    if (!linked) co_return false;
-  }
-  co_return true;
-}
-
-net::awaitable<bool> Instrument::Impl::check_presence() {
-  const auto answer = co_await ask_in_step(profile_.identity_query);
-  if (answer.end == End::answered && dialect::trim(answer.text) == talk_.identity()) co_return true;
-  if (answer.end == End::closed) co_return false;
-  co_return co_await back_in_step();
-}
-
 /// A question that is asked only when the line is in step. Closed: told, and of no further use.
 net::awaitable<Conversation::Answer> Instrument::Impl::ask_in_step(std::string query) {
   auto answer = co_await talk_.ask(query);
@@ -303,6 +284,9 @@ net::awaitable<bool> Instrument::Impl::ask_query(std::size_t query) {
   switch (answer.end) {
     case End::answered: {
       auto reply = interpreter_.read_reply(query, answer.text, instant);
+      if (!strange_function_.empty()) {
+        for (auto& reading : reply.readings) reading.flags |= kUnitChanged;
+      }
       deliver(answer, text, std::move(reply.readings));
       if (reply.readable) co_return true;
       break;

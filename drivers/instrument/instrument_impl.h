@@ -58,9 +58,7 @@ class Instrument::Impl {
   net::awaitable<bool> send_start_commands();
   net::awaitable<void> serve_queries();
   net::awaitable<bool> serve_lines();
-  net::awaitable<bool> round();
   net::awaitable<bool> ask_query(std::size_t query);
-  net::awaitable<bool> check_presence();
   net::awaitable<Conversation::Answer> ask_in_step(std::string query);
   net::awaitable<bool> back_in_step();
   net::awaitable<void> pause(std::int64_t length_ns);
@@ -68,17 +66,24 @@ class Instrument::Impl {
   void tell(EventKind kind, std::string text);
   void deliver(const Conversation::Answer& answer, std::string query, std::vector<Reading> readings);
 
+  // polling.cpp
+  net::awaitable<bool> round();
+  net::awaitable<bool> check_presence();
+  net::awaitable<bool> check_function();
+
   // commands.cpp
   net::awaitable<CommandOutcome> enqueue(const ProfileSetting* setting, double value);
   net::awaitable<CommandOutcome> wait_for(JobPointer job);
   net::awaitable<bool> do_job();
   net::awaitable<bool> do_set(JobPointer job);
   net::awaitable<bool> do_switch_on(JobPointer job);
+  net::awaitable<bool> confirm_on(JobPointer job);
   net::awaitable<bool> do_safe();
   net::awaitable<bool> write_safe(JobPointer job);
   net::awaitable<ReadBack> read_back(std::string query);
   [[nodiscard]] CommandOutcome judge_read_back(const Job& job, const std::string& text) const;
   [[nodiscard]] bool is_safe_reply(std::string_view text) const;
+  [[nodiscard]] bool is_on_reply(std::string_view text) const;
   void finish(const JobPointer& job, CommandState state, std::string text,
               std::optional<double> read_back = {});
   void finish_waiting(CommandState state, const std::string& text);
@@ -97,6 +102,8 @@ class Instrument::Impl {
   bool began_ = false;
   bool stopping_ = false;
   bool abandoned_ = false;
+  std::string
+      strange_function_;      ///< what it said of its function, when that was another; empty: the right one
   std::string last_trouble_;  ///< told once while connecting fails again and again
   std::int64_t tick_ns_ = 0;  ///< the next round of queries
   std::deque<JobPointer> waiting_;

@@ -49,6 +49,8 @@ struct Profile {
   std::vector<std::string> start_commands;
   std::vector<ProfileValue> values;
   std::vector<ProfileQuery> queries;
+  std::string function_query;               ///< "FUNC?": asked once in each round; empty: never
+  std::string function_reply;               ///< what it answers while it measures what the queries suppose
   std::vector<std::string> overload_words;  ///< "OL", "----"; beside the special numbers of SCPI-1999
   double overload_at = 9.9e37;              ///< magnitudes from here on are not numbers (SCPI-1999)
   double timeout_s = 1.0;                   ///< for one reply

@@ -95,10 +95,13 @@ Outcome<void> check_profile(const Profile& profile) {
     return Refusal{"identity_query",
                    "without it a late reply cannot be told from the next one; usually \"*IDN?\""};
   }
+  if (!is_clean(profile.function_query) || profile.function_query.empty() != profile.function_reply.empty()) {
+    return Refusal{"function_query", "one line of text, together with \"function_reply\""};
+  }
   if (profile.dialect == Dialect::text_lines) {
     if (profile.values.empty()) return Refusal{"values", "lines need at least one value with a pattern"};
     if (!profile.settings.empty() || profile.safe || !profile.on_commands.empty() ||
-        !profile.queries.empty()) {
+        !profile.queries.empty() || !profile.function_query.empty()) {
       return Refusal{"dialect", "what prints text lines unasked is neither asked nor commanded"};
     }
   }

@@ -20,7 +20,8 @@ std::string refusal(const std::string& name, const std::function<void(Profile&)>
 }  // namespace
 
 TEST_CASE("the profiles of these tests are sound") {
-  for (const auto* name : {"meter", "pair", "triple", "load", "mute load", "source", "line", "lines"}) {
+  for (const auto* name :
+       {"meter", "turnable", "pair", "triple", "load", "mute load", "source", "line", "lines"}) {
     INFO(name);
     CHECK(refusal(name, [](Profile&) {}) == "");
   }

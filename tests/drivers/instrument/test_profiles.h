@@ -16,8 +16,9 @@ inline Profile scpi_profile() {
   return profile;
 }
 
-/// meter: one value; pair: two queries; triple: one query with three values; load: set, switched and made
-/// safe; mute load: cannot be read back; line: one value in unasked lines; lines: two channels.
+/// meter: one value; turnable: the same, asked for its function; pair: two queries; triple: one query with
+/// three values; load: set, switched and made safe; mute load: cannot be read back; line: one value in
+/// unasked lines; lines: two channels.
 inline Profile test_profile(const std::string& name) {
   auto profile = scpi_profile();
   const ProfileValue voltage{"voltage", "V", {}};
@@ -26,6 +27,11 @@ inline Profile test_profile(const std::string& name) {
   if (name == "meter") {
     profile.values = {voltage};
     profile.queries = {{"MEAS:VOLT?", {"voltage"}}};
+  } else if (name == "turnable") {
+    profile.values = {voltage};
+    profile.queries = {{"READ?", {"voltage"}}};
+    profile.function_query = "FUNC?";
+    profile.function_reply = "VOLT:DC";
   } else if (name == "pair") {
     profile.values = {voltage, current};
     profile.queries = {{"MEAS:VOLT?", {"voltage"}}, {"MEAS:CURR?", {"current"}}};
