@@ -49,6 +49,7 @@ class Daemon {
   Daemon(setup::Hookup hookup, const DaemonOptions& options)
       : record_{take(store::Record::open(options.record, store::Mode::write))},
         interrupted_{take(record_.mark_interrupted(utc_ns()))},
+        owed_{take(record_.owed_safe_states())},
         writer_{take(store::Writer::start(record_, writer_options()))},
         bench_{std::move(hookup), *clock_, io_.get_executor(), *writer_, bench_options()},
         sequencer_{bench_, sequencer_options()} {
@@ -133,9 +134,10 @@ class Daemon {
   asio::awaitable<void> serve_until_signal() {
     // A closed terminal or a lost connection asks the daemon to end as well: in its safe state.
     asio::signal_set signals{io_, SIGINT, SIGTERM, SIGHUP};
-    if (!interrupted_.empty()) {
-      spdlog::warn("run {} was interrupted; the bench is put into its safe state", interrupted_.back());
-      tasks_.spawn(sequencer_.make_safe_after_crash(interrupted_));
+    if (!interrupted_.empty()) spdlog::warn("run {} was interrupted", interrupted_.back());
+    if (!owed_.empty()) {
+      spdlog::warn("the safe state after run {} was never confirmed; the bench is made safe now", owed_.back());
+      tasks_.spawn(sequencer_.make_safe_after_crash(owed_));
     }
     if (const auto published = service::publish(address_); !published) {
       spdlog::error("{}", published.refusal().text());
@@ -166,6 +168,7 @@ class Daemon {
   link::TaskScope tasks_{io_.get_executor(), on_task_failure};
   store::Record record_;
   std::vector<store::RunId> interrupted_;
+  std::vector<store::RunId> owed_;  ///< runs whose safe state nobody has confirmed yet
   std::unique_ptr<store::Writer> writer_;
   recorder::Bench bench_;
   sequencer::Sequencer sequencer_;

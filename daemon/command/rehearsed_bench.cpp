@@ -163,8 +163,9 @@ rehearsal::MeterFunction function_of(const setup::Channel& channel, const Place&
     if (function.noise == 0.0) function.noise = range.upto * noise_share;  // as on the smallest range
   }
   if (channel.conversion.shunt) {
-    function.shunt = rehearsal::Shunt{channel.conversion.shunt->resistance_ohm,
-                                      channel.conversion.shunt->tolerance_percent};
+    const auto& shunt = *channel.conversion.shunt;
+    function.shunt = rehearsal::Shunt{shunt.resistance_ohm, shunt.tolerance_percent, shunt.tempco_ppm_per_k,
+                                      shunt.rise_k_per_w};
   }
   return function;
 }

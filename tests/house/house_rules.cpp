@@ -19,7 +19,9 @@ std::string room_of(const fs::path& relative) {
   return part == relative.end() ? house : house + "/" + part->string();
 }
 
-bool is_source(const fs::path& file) { return file.extension() == ".h" || file.extension() == ".cpp"; }
+bool is_source(const fs::path& file) {
+  return file.extension() == ".h" || file.extension() == ".cpp";
+}
 
 /// Calls visit(relative path, line number, line) for every line of every source of the three houses.
 void for_each_line(const fs::path& root,
@@ -35,11 +37,15 @@ void for_each_line(const fs::path& root,
   }
 }
 
-std::string at(const fs::path& file, int line) { return file.string() + ":" + std::to_string(line) + ": "; }
+std::string at(const fs::path& file, int line) {
+  return file.string() + ":" + std::to_string(line) + ": ";
+}
 
-/// The code of a line: without what stands in a comment. (Good enough for banned words: no string of ours holds "//"
-/// before one.)
-std::string without_comment(const std::string& line) { return line.substr(0, line.find("//")); }
+/// The code of a line: without what stands in a comment. (Good enough for banned words: no string of ours
+/// holds "//" before one.)
+std::string without_comment(const std::string& line) {
+  return line.substr(0, line.find("//"));
+}
 
 }  // namespace
 
@@ -68,7 +74,8 @@ std::vector<std::string> include_breaches(const fs::path& root, const Rooms& roo
     const std::string room = room_of(file);
     if (file == "daemon/main.cpp") return;  // main only composes
     if (!rooms.contains(room)) {
-      if (unknown.insert(room).second) breaches.push_back(at(file, 1) + "tests/house/rooms.txt does not name the room " + room);
+      if (unknown.insert(room).second)
+        breaches.push_back(at(file, 1) + "tests/house/rooms.txt does not name the room " + room);
       return;
     }
     std::smatch match;
@@ -90,9 +97,12 @@ std::vector<std::string> banned_word_breaches(const fs::path& root) {
       {std::regex{R"(\bdetached\b)"}, "-", "a detached task has no owner: spawn it into a TaskScope"},
       {std::regex{R"(\bsteady_timer\b)"}, "drivers/link", "waits go through link's clock"},
       {std::regex{R"(\bsetlocale\b)"}, "-", "numbers do not depend on a locale"},
-      {std::regex{R"(\bstrto[dfl]+\b|\bsto[dfi]\b|\bstold\b|\bsscanf\b|\bato[fi]\b)"}, "-", "numbers are read by base"},
-      {std::regex{R"(\bstd::\w+_distribution\b)"}, "-", "random draws are the same everywhere: our own generator"},
-      {std::regex{R"(\bsleep_(for|until)\s*\(\s*std::this_thread|this_thread::sleep)"}, "-", "waits go through link's clock"},
+      {std::regex{R"(\bstrto[dfl]+\b|\bsto[dfi]\b|\bstold\b|\bsscanf\b|\bato[fi]\b)"}, "-",
+       "numbers are read by base"},
+      {std::regex{R"(\bstd::\w+_distribution\b)"}, "-",
+       "random draws are the same everywhere: our own generator"},
+      {std::regex{R"(\bsleep_(for|until)\s*\(\s*std::this_thread|this_thread::sleep)"}, "-",
+       "waits go through link's clock"},
       {std::regex{R"(\b(TODO|FIXME|XXX)\b)"}, "-", "nothing is left for later in the code"},
       {std::regex{R"(std::(cout|cerr)\b)"}, "daemon/command", "rooms do not print: return an outcome or log"},
   };
@@ -119,7 +129,8 @@ std::vector<std::string> third_party_breaches(const fs::path& root) {
       {std::regex{R"(<boost/beast)"}, {"daemon/service"}},
       {std::regex{R"(<libserialport\.h>)"}, {"drivers/link"}},
       {std::regex{R"(<fftw3\.h>)"}, {"analysis/waveform"}},
-      {std::regex{R"(<gsl/)"}, {"analysis/estimate", "analysis/waveform", "analysis/settling", "analysis/efficiency"}},
+      {std::regex{R"(<gsl/)"},
+       {"analysis/estimate", "analysis/waveform", "analysis/settling", "analysis/efficiency"}},
       {std::regex{R"(<CLI/)"}, {"daemon/command"}},
       {std::regex{R"(<nlohmann/)"}, {"drivers/document", "daemon/service", "daemon/command"}},
       {std::regex{R"(<sodium\.h>)"}, {"daemon/store", "daemon/service", "daemon/command"}},
@@ -135,6 +146,41 @@ std::vector<std::string> third_party_breaches(const fs::path& root) {
         breaches.push_back(at(file, number) + room_of(file) + " may not use " + line.substr(line.find('<')));
       }
     }
+  });
+  return breaches;
+}
+
+std::vector<std::string> co_await_breaches(const fs::path& root) {
+  static const std::regex text{R"("(?:[^"\\]|\\.)*")"};
+  static const std::regex closure{R"(\[[^\]0-9][^\]]*\]\s*[({])"};
+  static const std::regex aggregate{R"([(,]\s*\{)"};
+  std::vector<std::string> breaches;
+  std::string statement;
+  int began = 0;
+  for_each_line(root, [&](const fs::path& file, int number, const std::string& line) {
+    std::string code = std::regex_replace(without_comment(line), text, "\"\"");
+    if (statement.empty()) {
+      const auto at = code.find("co_await");
+      if (at == std::string::npos) return;
+      code = code.substr(at);
+      began = number;
+    }
+    const auto end = code.find(';');
+    statement += code.substr(0, end) + " ";
+    if (end == std::string::npos) return;
+    if (std::regex_search(statement, closure)) {
+      breaches.push_back(at(file, began) +
+                         "a closure inside co_await is destroyed twice by g++ 12: name it first");
+    }
+    if (std::regex_search(statement, aggregate)) {
+      breaches.push_back(at(file, began) +
+                         "an aggregate inside co_await is destroyed twice by g++ 12: name it first");
+    }
+    if (statement.find('?') != std::string::npos) {
+      breaches.push_back(at(file, began) +
+                         "?: inside co_await destroys its branches twice with g++ 12: name it first");
+    }
+    statement.clear();
   });
   return breaches;
 }

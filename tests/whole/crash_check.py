@@ -15,7 +15,7 @@ instants = int(os.environ.get("LOADSTAIR_KILLS", "20"))
 seed = int(os.environ.get("LOADSTAIR_SEED", "20261201"))
 
 # How long a reply may be on its way: the longest line at 9600 baud and the poll loop's turn.
-TRANSIT_NS = 120_000_000
+TRANSIT_NS = 60_000_000
 DURABLE_NS = 250_000_000
 
 
