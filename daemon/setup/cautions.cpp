@@ -106,15 +106,56 @@ void check_declared_live(const Port& port, const Ratings& ratings, Findings& fin
            "write \"live\": true"});
 }
 
+bool captured(const Hookup& hookup, const Port& port) {
+  return std::any_of(hookup.captures.begin(), hookup.captures.end(), [&](const CaptureSource& capture) {
+    return capture.port == port.name && !capture.voltage_column.empty() && !capture.current_column.empty();
+  });
+}
+
+// The power of a single-phase AC output pulsates at twice its frequency, between nothing and twice its mean.
+// Without input capacitors so does the input's current: i^2 of its ripple is I^2 / 2.
+void check_ripple(const Hookup& hookup, const Port& port, const Stair* stair, Findings& findings) {
+  const bool pulsates = std::any_of(hookup.ports.begin(), hookup.ports.end(), [](const Port& other) {
+    return other.direction == Direction::output && other.kind == PortKind::ac;
+  });
+  const bool here = port.kind == PortKind::dc && port.direction == Direction::input && port.counted;
+  const bool bounded = port.ripple_current_rms_a && port.source_resistance_ohm;
+  if (!pulsates || !here || bounded || !port.power.empty() || captured(hookup, port)) return;
+  std::string cost;
+  if (stair != nullptr && stair->ratings.input_voltage_v > 0.0) {
+    const double current_a = stair->ratings.output_power_w / stair->ratings.input_voltage_v;
+    cost = " At " + figures(current_a) + " A that is up to " + figures(current_a * current_a / 2.0) +
+           " W for each ohm between the source and here, if the converter had no input capacitors.";
+  }
+  findings.push_back(
+      {Severity::warning,
+       "port " + quoted(port.name) +
+           ": nothing bounds its ripple power. The AC output makes the current here pulsate at twice its "
+           "frequency, and the product of the means counts it as input." +
+           cost +
+           " Write \"ripple_current_rms_a\" and \"source_resistance_ohm\", or declare a capture of this "
+           "port's "
+           "voltage and current"});
+}
+
+void check_identities(const Hookup& hookup, Findings& findings) {
+  for (const Control& control : hookup.controls) {
+    const Instrument* instrument = hookup.find_instrument(control.instrument);
+    if (instrument == nullptr || !instrument->identity.empty() || instrument->profile.identity_query.empty())
+      continue;
+    findings.push_back(
+        {Severity::error, "control " + quoted(control.name) + ": " + quoted(instrument->name) +
+                              " declares no \"identity\", so whatever answers at its address would be "
+                              "commanded, another instrument too. Write how its reply to " +
+                              instrument->profile.identity_query +
+                              " begins, such as \"identity\": \"NORTH BENCH,DC SOURCE\""});
+  }
+}
+
 void check_ac_power(const Hookup& hookup, const Port& port, Findings& findings) {
   if (port.kind != PortKind::ac || !port.power.empty() || !port.power_factor.empty() || port.power_factor_low)
     return;
-  const bool captured =
-      std::any_of(hookup.captures.begin(), hookup.captures.end(), [&](const CaptureSource& capture) {
-        return capture.port == port.name && !capture.voltage_column.empty() &&
-               !capture.current_column.empty();
-      });
-  if (captured) return;
+  if (captured(hookup, port)) return;
   findings.push_back(
       {Severity::warning,
        "port " + quoted(port.name) +
@@ -219,7 +260,9 @@ void add_usual_cautions(const Hookup& hookup, Findings& findings) {
 std::vector<Finding> cautions(const Hookup& hookup, const Stair* stair) {
   Findings findings;
   check_live_nodes(hookup, findings);
+  check_identities(hookup, findings);
   check_ports(hookup, findings);
+  for (const Port& port : hookup.ports) check_ripple(hookup, port, stair, findings);
   if (stair != nullptr) {
     for (const Port& port : hookup.ports) {
       check_declared_live(port, stair->ratings, findings);

@@ -159,8 +159,7 @@ std::vector<GuardForecast> forecast_guards(const Stair& stair, const Hookup& hoo
       // A crossing just after a conversion began waits for the next one, which is read one period later.
       forecast.worst_s = period_s + (asked ? instrument->update_s : 0.0) + instrument->integration_s +
                          instrument->delay_s + guard.debounce_s;
-      forecast.worst_missing_s =
-          guard.missing_after_s > 0.0 ? guard.missing_after_s : 3.0 * instrument->poll_s;
+      forecast.worst_missing_s = guard.missing_after_s > 0.0 ? guard.missing_after_s : 3.0 * period_s;
     }
     forecast.acts = guard.action != GuardAction::hold && !hookup.controls.empty();
     forecasts.push_back(std::move(forecast));

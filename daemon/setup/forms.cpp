@@ -78,9 +78,10 @@ constexpr auto kGuardKeys = to_array<Key>({"name", "channel", "above", "below", 
                                            "action", "missing", "missing_after_s"});
 constexpr auto kEndKeys = to_array<Key>({"cool_down_s", "discharge_s"});
 
-constexpr auto kProfileKeys = to_array<Key>(
-    {"format", "profile", "dialect", "terminator", "identity_query", "start_commands", "values", "queries",
-     "overload_words", "overload_at", "timeout_s", "settings", "on_commands", "safe", "free_running"});
+constexpr auto kProfileKeys =
+    to_array<Key>({"format", "profile", "dialect", "terminator", "identity_query", "start_commands",
+                   "function_query", "function_reply", "values", "queries", "overload_words", "overload_at",
+                   "timeout_s", "settings", "on_commands", "safe", "free_running"});
 constexpr auto kProfileValueKeys = to_array<Key>({"name", "unit", "line_pattern"});
 constexpr auto kProfileQueryKeys = to_array<Key>({"text", "values"});
 constexpr auto kProfileSettingKeys = to_array<Key>({"name", "unit", "command", "readback", "tolerance"});

@@ -54,8 +54,8 @@ struct RangeSpec {
   double range_percent = 0.0;
   double digits = 0.0;
   double resolution = 0.0;  ///< weight of the last digit
-  double impedance_ohm =
-      0.0;  ///< voltmeter: across its terminals; ammeter: burden with fuse. 0: not declared
+  /// Voltmeter, also one on a shunt: across its terminals; ammeter: burden with fuse. 0: not declared
+  double impedance_ohm = 0.0;
   std::optional<double> impedance_tolerance_percent;
 };
 

@@ -101,6 +101,18 @@ void read_range(ObjectReader& reader, Channel& channel) {
     reader.complain("resolution",
                     "\"resolution\" is the worth of the last digit; it must be less than \"upto\"");
   }
+  // The meter on a shunt is a voltmeter; the shunt's resistance here would be a burden twice.
+  constexpr double kLeastOverShunt = 100.0;
+  const auto& shunt = channel.conversion.shunt;
+  if (shunt && range.impedance_ohm > 0.0 && range.impedance_ohm < kLeastOverShunt * shunt->resistance_ohm) {
+    reader.complain("impedance_ohm",
+                    "\"impedance_ohm\" is " + base::print_number(range.impedance_ohm) +
+                        "; on a shunt it is the input of the meter across it, at least 100 times the "
+                        "shunt's " +
+                        base::print_number(shunt->resistance_ohm) +
+                        " ohm. The shunt is its own burden: write the meter's input, such as 10e6, or remove "
+                        "the key");
+  }
   if (range.impedance_tolerance_percent && range.impedance_ohm == 0.0) {
     reader.complain("impedance_tolerance_percent",
                     "a tolerance without its \"impedance_ohm\"; add that, or remove it");

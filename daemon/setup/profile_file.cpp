@@ -130,6 +130,18 @@ void read_safe(ObjectReader& top, Profile& profile) {
   profile.safe = std::move(safe);
 }
 
+void read_function(ObjectReader& top, Profile& profile) {
+  profile.function_query = top.text_or("function_query", "");
+  profile.function_reply = top.text_or("function_reply", "");
+  if (profile.function_query.empty() != profile.function_reply.empty()) {
+    top.complain(profile.function_query.empty() ? "function_reply" : "function_query",
+                 "\"function_query\" and \"function_reply\" go together; add the other one");
+  } else if (!profile.function_query.empty() && profile.function_query.find('?') == std::string::npos) {
+    top.complain("function_query",
+                 "the query " + print_text(profile.function_query) + " has no ?, so nothing will answer it");
+  }
+}
+
 void read_scpi(ObjectReader& top, Profile& profile) {
   for_objects(top, "values", kProfileValueForm,
               [&](ObjectReader& reader, std::size_t) { read_value(reader, Speech::scpi, profile); });
@@ -140,12 +152,14 @@ void read_scpi(ObjectReader& top, Profile& profile) {
               [&](ObjectReader& reader, std::size_t) { read_setting(reader, profile); });
   profile.identity_query = top.text_or("identity_query", "*IDN?");
   profile.start_commands = top.texts_or_empty("start_commands");
+  read_function(top, profile);
   profile.on_commands = top.texts_or_empty("on_commands");
   read_safe(top, profile);
 }
 
 void read_text_lines(ObjectReader& top, Profile& profile) {
-  for (const auto key : {"identity_query", "queries", "settings", "start_commands", "on_commands", "safe"}) {
+  for (const auto key : {"identity_query", "queries", "settings", "start_commands", "function_query",
+                         "function_reply", "on_commands", "safe"}) {
     refuse_key(top, key, "an instrument of dialect \"text-lines\" is only listened to");
   }
   profile.identity_query.clear();
@@ -157,9 +171,9 @@ void read_text_lines(ObjectReader& top, Profile& profile) {
 }
 
 void read_silent(ObjectReader& top, Profile& profile) {
-  for (const auto key :
-       {"terminator", "identity_query", "start_commands", "values", "queries", "overload_words",
-        "overload_at", "timeout_s", "settings", "on_commands", "safe", "free_running"}) {
+  for (const auto key : {"terminator", "identity_query", "start_commands", "function_query", "function_reply",
+                         "values", "queries", "overload_words", "overload_at", "timeout_s", "settings",
+                         "on_commands", "safe", "free_running"}) {
     refuse_key(top, key, "with dialect \"none\" nothing is said and nothing is heard");
   }
   profile.identity_query.clear();

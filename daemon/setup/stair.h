@@ -74,7 +74,7 @@ struct Guard {
   double blanking_s = 0.0;  ///< after each set-point change
   GuardAction action = GuardAction::stop;
   MissingAction missing = MissingAction::stop;
-  double missing_after_s = 0.0;  ///< 0: three poll periods
+  double missing_after_s = 0.0;  ///< 0: three periods (poll_s; update_s of a meter that sends by itself)
 };
 
 /// What comes after the last step, beside switching off.

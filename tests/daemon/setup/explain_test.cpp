@@ -128,6 +128,63 @@ TEST_CASE(
   CHECK(saying(cautions(hookup, &stair), Severity::warning, "can only tell you") == 0);
 }
 
+TEST_CASE("a guard on a meter that sends by itself misses readings after three of its own periods") {
+  Hookup hookup = live_bench(Isolation::isolated);
+  hookup.instruments[0].profile.dialect = instrument::Dialect::text_lines;
+  Stair stair;
+  Guard guard;
+  guard.channel = "volts";
+  stair.guards.push_back(guard);
+  CHECK(forecast_guards(stair, hookup)[0].worst_missing_s == Approx(3 * 0.2));
+  hookup.instruments[0].update_s = 0.0;  // not declared: the period at which it is looked at
+  CHECK(forecast_guards(stair, hookup)[0].worst_missing_s == Approx(3 * 0.5));
+}
+
+TEST_CASE("a control must say who it is, where it can") {
+  Hookup hookup = live_bench(Isolation::isolated);
+  CHECK(saying(cautions(hookup, nullptr), Severity::error, "identity") == 0);
+  hookup.controls.push_back({"load", "wattmeter", "load", {}});
+  CHECK(saying(cautions(hookup, nullptr), Severity::error,
+               "control \"load\": \"wattmeter\" declares no \"identity\"") == 1);
+  hookup.instruments[0].identity = "NORTH BENCH";
+  CHECK(saying(cautions(hookup, nullptr), Severity::error, "identity") == 0);
+  hookup.instruments[0].identity.clear();
+  hookup.instruments[0].profile.identity_query.clear();
+  CHECK(saying(cautions(hookup, nullptr), Severity::error, "identity") == 0);
+}
+
+TEST_CASE("ripple that nothing bounds is named at a dc input of a bench with an ac output, and only there") {
+  Hookup hookup = live_bench(Isolation::isolated);
+  Stair stair;
+  stair.ratings = {385.0, 230.0, 600.0, 50.0, 40.0};
+  const std::string_view text = "port \"input\": nothing bounds its ripple power";
+  CHECK(saying(cautions(hookup, &stair), Severity::warning, text) == 1);
+  CHECK(saying(cautions(hookup, nullptr), Severity::warning, text) == 1);
+  // All of the current pulsates at twice the frequency: I = 600 W / 385 V, i^2 = I^2 / 2 = 1.21 A^2.
+  CHECK(saying(cautions(hookup, &stair), Severity::warning, "1.21 W for each ohm") == 1);
+  Port& input = hookup.ports[1];
+  SECTION("an output on DC does not pulsate so") {
+    hookup.ports[0].kind = PortKind::dc;
+  }
+  SECTION("ripple current and source resistance bound it; one alone does not") {
+    input.ripple_current_rms_a = 0.05;
+    CHECK(saying(cautions(hookup, &stair), Severity::warning, text) == 1);
+    input.source_resistance_ohm = 0.05;
+  }
+  SECTION("a capture of voltage and current measures it") {
+    CaptureSource capture;
+    capture.port = "input";
+    capture.voltage_column = "1";
+    hookup.captures.push_back(capture);
+    CHECK(saying(cautions(hookup, &stair), Severity::warning, text) == 1);
+    hookup.captures[0].current_column = "2";
+  }
+  SECTION("a wattmeter sees it") {
+    input.power = "watts";
+  }
+  CHECK(saying(cautions(hookup, &stair), Severity::warning, text) == 0);
+}
+
 TEST_CASE("a dangerous voltage that nobody declared live is named") {
   Hookup hookup = live_bench(Isolation::isolated);
   Stair stair;
