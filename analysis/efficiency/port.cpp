@@ -237,16 +237,18 @@ PortPower port_power(const Port& port, const PortReading& reading) {
   return out;
 }
 
-Estimate ripple_bound(std::string_view port, double ripple_current_rms_a, double source_resistance_ohm) {
+Estimate ripple_bound(const Port& port, double ripple_current_rms_a, double source_resistance_ohm,
+                      std::string_view run) {
   const double most = std::abs(source_resistance_ohm) * ripple_current_rms_a * ripple_current_rms_a;
   estimate::Source source;
-  source.key = estimate::key::component(port, "ripple power");
-  source.name = std::string{port} + ": ripple power without a capture";
+  source.key = estimate::key::window(run, "", port.name + ": ripple power");
+  source.name = port.name + ": ripple power without a capture";
   source.distribution = estimate::Distribution::rectangular;
-  source.owner.instrument = port;
+  source.owner.instrument = port.name;
   source.remedy = estimate::Remedy::capture;
   source.variance_left = 0;
-  return estimate::bounded(-most, 0, estimate::make_source(std::move(source)));
+  const bool into = port.role == Role::input || port.role == Role::auxiliary_input;
+  return estimate::bounded(-most, into ? 0 : most, estimate::make_source(std::move(source)));
 }
 
 Estimate rms_from_average_responding(const Estimate& shown, const Estimate& form_factor) {

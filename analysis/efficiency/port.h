@@ -98,12 +98,14 @@ struct PortPower {
 /// interval is a remark. The burden of an AC meter is taken as resistive.
 [[nodiscard]] PortPower port_power(const Port& port, const PortReading& reading);
 
-/// Ripple power of a DC port without a capture: behind a source resistance R a ripple current i lets the
-/// voltage dip while it flows, so mean(v i) lies between -R i^2 and zero: correct by half of it, rectangular
-/// (JCGM 100:2008 4.3.8). port                names the source of error ripple_current_rms_a,
-/// source_resistance_ohm   zero or more, as declared
-[[nodiscard]] Estimate ripple_bound(std::string_view port, double ripple_current_rms_a,
-                                    double source_resistance_ohm);
+/// Ripple power of a DC port without a capture, W. At an input, behind a source resistance R, a ripple
+/// current i lets the voltage dip while it flows, so mean(v i) lies between -R i^2 and zero: correct by half
+/// of it, rectangular (JCGM 100:2008 4.3.8). At an output the sign depends on the load (a resistor's is
+/// positive, a constant-power load's negative, a capacitor's nothing): between -R i^2 and R i^2, nothing is
+/// corrected. ripple_current_rms_a, source_resistance_ohm   zero or more, as declared run   the source of
+/// error is common to the port's steps in this run
+[[nodiscard]] Estimate ripple_bound(const Port& port, double ripple_current_rms_a,
+                                    double source_resistance_ohm, std::string_view run);
 
 /// RMS from an average-responding meter, which shows mean-rectified times 1.1107 (a sine's form factor pi /
 /// (2 sqrt 2)). form_factor  RMS / mean-rectified of this waveform, from a capture

@@ -92,6 +92,7 @@ void add_level(std::vector<Term>& terms, const Parts& parts, const MeterRange& m
   Source source;
   source.key = key::meter_at_level(meter.meter, "resolution", occasion.run, occasion.level);
   source.name = meter_name(meter.meter) + ": resolution";
+  source.resolution = true;
   source.distribution = Distribution::rectangular;
   source.owner = meter.meter;
   terms.push_back({make_source(std::move(source)), meter.digit / std::sqrt(12.0)});

@@ -12,7 +12,8 @@ namespace loadstair::estimate {
 /// Evaluated from repeated readings (A), or from anything else (B). JCGM 100:2008 4.2, 4.3.
 enum class Kind { type_a, type_b };
 
-/// Of a Type B source; Type A is Student's t with its degrees of freedom. Kept for a validation by JCGM 101; the linear method needs its variance only.
+/// Of a Type B source; Type A is Student's t with its degrees of freedom. Kept for a validation by JCGM 101;
+/// the linear method needs its variance only.
 enum class Distribution { normal, rectangular, triangular, arcsine };
 
 /// What would shrink a source's contribution; a budget words it and recomputes U as if it had been done.
@@ -49,6 +50,7 @@ struct Source {
   /// Welch-Satterthwaite counts them once. Empty: on its own.
   std::string sample;
   Owner owner;
+  bool resolution = false;  ///< of the last digit: what no averaging can take away
   Remedy remedy = Remedy::none;
   /// Share of this source's variance that would be left if the remedy were taken, 0 to 1.
   double variance_left = 1;

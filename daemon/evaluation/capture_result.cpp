@@ -2,6 +2,7 @@
 
 #include <utility>
 
+#include "analysis/base/number.h"
 #include "daemon/evaluation/quantity.h"
 #include "drivers/scope_csv/scope_csv.h"
 
@@ -91,6 +92,25 @@ Quantity quantity_of(const estimate::Quoted& quoted, const base::Outcome<wavefor
   return quantity;
 }
 
+/// The last capture of a source in the step's window or after it. What came before shows a bench that had not
+/// settled yet: told, not used.
+const store::StoredCapture* last_capture(const store::StoredRun& run, const setup::CaptureSource& source,
+                                         const WindowContext& context, std::vector<std::string>& remarks) {
+  const store::StoredCapture* last = nullptr;
+  for (const store::StoredCapture& stored : run.captures) {
+    if (stored.step != context.step_index || stored.instrument != source.instrument) continue;
+    const double early_s = context.from_s - since_start(run, stored.t_ns);
+    if (early_s > 0.0) {
+      remarks.push_back("capture not used: " + stored.file_name + " came " +
+                        base::print_significant(early_s, 3) +
+                        " s before the averaging window began, when the step had not settled");
+      continue;
+    }
+    if (last == nullptr || stored.t_ns >= last->t_ns) last = &stored;
+  }
+  return last;
+}
+
 }  // namespace
 
 std::vector<CaptureAnalysis> captures_of(const store::StoredRun& run, const setup::Hookup& hookup,
@@ -98,10 +118,7 @@ std::vector<CaptureAnalysis> captures_of(const store::StoredRun& run, const setu
                                          std::vector<std::string>& remarks) {
   std::vector<CaptureAnalysis> analyses;
   for (const setup::CaptureSource& source : hookup.captures) {
-    const store::StoredCapture* last = nullptr;
-    for (const store::StoredCapture& stored : run.captures) {
-      if (stored.step == context.step_index && stored.instrument == source.instrument) last = &stored;
-    }
+    const store::StoredCapture* last = last_capture(run, source, context, remarks);
     if (last == nullptr) continue;
     CaptureAnalysis analysis;
     analysis.source = &source;

@@ -21,8 +21,9 @@ struct CaptureAnalysis {
   std::optional<std::size_t> voltage, current;  ///< channel of the result
 };
 
-/// The last capture of every source in this step; a refused result says what is wrong with the file or its
-/// samples. remarks   what is to be told of files that say less than they should
+/// The last capture of every source in this step, of those that came after its averaging window began; a
+/// refused result says what is wrong with the file or its samples.
+/// remarks   what is to be told of files that came too early or say less than they should
 [[nodiscard]] std::vector<CaptureAnalysis> captures_of(const store::StoredRun& run,
                                                        const setup::Hookup& hookup, const setup::Stair& stair,
                                                        const WindowContext& context,

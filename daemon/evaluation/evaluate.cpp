@@ -46,8 +46,7 @@ double floor_of(const std::vector<efficiency::CurvePoint>& points) {
   for (const efficiency::CurvePoint& point : points) {
     double variance = 0.0;
     for (const estimate::Term& term : point.loss.terms()) {
-      const bool resolution = term.source->name.find(": resolution") != std::string::npos;
-      if (resolution) variance += term.contribution * term.contribution;
+      if (term.source->resolution) variance += term.contribution * term.contribution;
     }
     floor_w = std::max(floor_w, std::sqrt(variance));
     largest_w = std::max(largest_w, std::abs(point.input_power.value()));

@@ -23,6 +23,19 @@ void multiply(Product& product, const ChannelValue* value) {
   }
 }
 
+/// A capture's or a declared power factor stays the same; a channel's varies with its readings.
+void multiply_power_factor(Product& product, const setup::Port& port, const efficiency::PortPower& power,
+                           const StepValues& values) {
+  const CaptureAnalysis* capture = capture_of(values.captures, port.name);
+  const bool captured = capture != nullptr && capture->quote.power.power_factor.ok();
+  const ChannelValue* polled = captured ? nullptr : values.find(port.power_factor);
+  if (polled != nullptr && polled->window) {
+    multiply(product, polled);
+  } else if (power.power_factor) {
+    product.constant *= power.power_factor->value();
+  }
+}
+
 Product product_of(const setup::Port& port, const efficiency::PortPower& power, const StepValues& values) {
   Product product;
   if (power.method == "wattmeter") {
@@ -30,9 +43,7 @@ Product product_of(const setup::Port& port, const efficiency::PortPower& power, 
   } else if (power.method == "V x I" || power.method == "V x I x PF") {
     multiply(product, values.find(port.voltage));
     multiply(product, values.find(port.current));
-    // The power factor comes from a capture, a declaration or a channel; the latter varies too little to
-    // matter.
-    if (power.method == "V x I x PF" && power.power_factor) product.constant *= power.power_factor->value();
+    if (power.method == "V x I x PF") multiply_power_factor(product, port, power, values);
   } else if (power.active_power) {
     product.constant = power.active_power->value();
   }

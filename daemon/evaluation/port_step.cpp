@@ -19,22 +19,20 @@ using estimate::Distribution;
 using estimate::Estimate;
 using estimate::Quoted;
 
-/// Form factor of a sine: what an average-responding meter is calibrated with, pi / (2 sqrt 2).
-constexpr double kSineFormFactor = std::numbers::pi / (2.0 * std::numbers::sqrt2);
-
 std::optional<Resistance> burden_of(const ChannelValue* value) {
   if (value == nullptr) return std::nullopt;
   const setup::RangeSpec* range = value->range();
   const setup::Channel& channel = *value->channel;
   const int index = range == nullptr ? kNoRange : static_cast<int>(range - channel.ranges.data());
   const auto& shunt = channel.conversion.shunt;
-  if (shunt &&
-      (range == nullptr || range->impedance_ohm == 0.0 || range->impedance_ohm == shunt->resistance_ohm)) {
-    return Resistance{burden_name(channel, index), shunt->resistance_ohm, shunt->tolerance_percent / 100.0};
+  if (shunt) {
+    const double past_it =
+        range != nullptr && range->impedance_ohm > 0.0 ? shunt->resistance_ohm / range->impedance_ohm : 0.0;
+    return Resistance{burden_name(channel, index), shunt->resistance_ohm / (1.0 + past_it),
+                      shunt->tolerance_percent / 100.0};
   }
   if (range == nullptr || range->impedance_ohm == 0.0) return std::nullopt;
   Resistance burden{burden_name(channel, index), range->impedance_ohm, std::nullopt};
-  if (shunt) burden.name = channel.name + ": burden";
   if (range->impedance_tolerance_percent) burden.tolerance = *range->impedance_tolerance_percent / 100.0;
   return burden;
 }
@@ -81,7 +79,7 @@ Quoted corrected_for_form(const Quoted& quoted, const ChannelValue& value, const
         value.channel->quantity == setup::Quantity::voltage ? capture->voltage : capture->current;
     if (place) {
       const Quoted& form = capture->quote.channels[*place].form_factor;
-      if (form) return *quoted * (*form / kSineFormFactor);
+      if (form) return efficiency::rms_from_average_responding(*quoted, *form);
     }
   }
   if (plain) return quoted;
@@ -91,6 +89,16 @@ Quoted corrected_for_form(const Quoted& quoted, const ChannelValue& value, const
       "gives the form factor"};
 }
 
+/// The meter on a shunt takes a part of the current past it: R / R_meter of what goes through the shunt.
+Quoted with_meter_current(const Quoted& quoted, const ChannelValue& value) {
+  const setup::RangeSpec* range = value.range();
+  const auto& shunt = value.channel->conversion.shunt;
+  if (!quoted || !shunt || range == nullptr || range->impedance_ohm == 0.0) return quoted;
+  Resistance meter{"meter on the shunt of " + value.channel->name, range->impedance_ohm, std::nullopt};
+  if (range->impedance_tolerance_percent) meter.tolerance = *range->impedance_tolerance_percent / 100.0;
+  return *quoted * (1.0 + shunt->resistance_ohm / efficiency::resistance_estimate(meter));
+}
+
 std::optional<Quoted> reading_of(const std::string& channel, const setup::Port& port,
                                  const StepValues& values, bool plain, Noise noise) {
   if (channel.empty()) return std::nullopt;
@@ -98,18 +106,16 @@ std::optional<Quoted> reading_of(const std::string& channel, const setup::Port& 
   if (value == nullptr) return Quoted{base::Refusal{channel, "the hook-up file has no such channel"}};
   Quoted quoted = plain ? value->plain : value->value;
   if (quoted && !plain && noise == Noise::in_readings) quoted = value->with_noise(values.context);
-  return corrected_for_form(quoted, *value, port, values, plain);
+  return corrected_for_form(with_meter_current(quoted, *value), *value, port, values, plain);
 }
 
-Estimate bound(const StepValues& values, const std::string& name, double half_width,
-               estimate::Remedy remedy) {
+/// Between the readings a port may fluctuate in step, or against it: a bound of the window's own.
+Estimate fluctuation_of(const setup::Port& port, const StepValues& values, double most_w) {
   estimate::Source source;
-  source.key = estimate::key::window(values.context.run, values.context.step, name);
-  source.name = name;
+  source.name = "fluctuation between readings of " + port.name;
+  source.key = estimate::key::window(values.context.run, values.context.step, source.name);
   source.distribution = Distribution::rectangular;
-  source.remedy = remedy;
-  if (remedy == estimate::Remedy::capture) source.variance_left = 0.0;
-  return Estimate{0.0, estimate::make_source(std::move(source)), half_width / std::numbers::sqrt3};
+  return estimate::bounded(-most_w, most_w, estimate::make_source(std::move(source)));
 }
 
 /// What the product of two means leaves out on a DC port: ripple, and fluctuation faster than the readings.
@@ -119,20 +125,15 @@ std::optional<Estimate> ripple_of(const setup::Port& port, const StepValues& val
   if (capture != nullptr && capture->quote.power.ripple_w) {
     ripple = *capture->quote.power.ripple_w;
   } else if (port.ripple_current_rms_a && port.source_resistance_ohm) {
-    // Behind a source resistance the voltage falls where the current rises: between -R I^2 and nothing.
-    const double most_w =
-        *port.ripple_current_rms_a * *port.ripple_current_rms_a * *port.source_resistance_ohm;
-    const double sign = port.direction == setup::Direction::input ? -1.0 : 1.0;
-    ripple = bound(values, "ripple of " + port.name, most_w / 2.0, estimate::Remedy::capture)
-                 .with_value(sign * most_w / 2.0);
+    ripple = efficiency::ripple_bound(port_of(port, values), *port.ripple_current_rms_a,
+                                      *port.source_resistance_ohm, values.context.run);
   }
   const ChannelValue* voltage = values.find(port.voltage);
   const ChannelValue* current = values.find(port.current);
   if (voltage != nullptr && current != nullptr) {
     const double most_w = series::fluctuation_bound(voltage->deviation, current->deviation);
     if (most_w > 0.0) {
-      const Estimate fluctuation =
-          bound(values, "fluctuation between readings of " + port.name, most_w, estimate::Remedy::none);
+      const Estimate fluctuation = fluctuation_of(port, values, most_w);
       ripple = ripple ? *ripple + fluctuation : fluctuation;
     }
   }

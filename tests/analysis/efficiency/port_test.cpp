@@ -247,10 +247,24 @@ TEST_CASE("ripple power is added to the product of DC means") {
 
 TEST_CASE("ripple behind a source resistance takes power, between none and all of R i^2") {
   // v = -R i for a ripple of i: mean(v i) = -R i_rms^2, closed form; smoothing can only make it less.
-  const auto ripple = efficiency::ripple_bound("input", 1.5, 0.4);
+  Port port;
+  port.name = "input";
+  const auto ripple = efficiency::ripple_bound(port, 1.5, 0.4, "1");
   CHECK(ripple.value() == Approx(-0.45).epsilon(1e-14));
   CHECK(ripple.standard_uncertainty() == Approx(0.45 / std::sqrt(3)).epsilon(1e-12));
   CHECK(ripple.terms()[0].source->remedy == estimate::Remedy::capture);
+}
+
+TEST_CASE("ripple at an output has either sign, as the load is: nothing is corrected") {
+  // |mean(v i)| <= V_rms I_rms (Cauchy and Schwarz) with V_rms = R I_rms: 0.9 W either way.
+  Port port;
+  port.name = "output";
+  for (const auto role : {efficiency::Role::output, efficiency::Role::auxiliary_output}) {
+    port.role = role;
+    const auto ripple = efficiency::ripple_bound(port, 1.5, 0.4, "1");
+    CHECK(ripple.value() == 0.0);
+    CHECK(ripple.standard_uncertainty() == Approx(0.9 / std::sqrt(3)).epsilon(1e-12));
+  }
 }
 
 TEST_CASE("an average-responding meter is put right by the form factor") {

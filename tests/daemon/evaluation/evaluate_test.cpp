@@ -129,6 +129,30 @@ TEST_CASE("a shunt: its warm resistance, its tolerance, its share") {
         Approx(tolerance * tolerance / (tolerance * tolerance + temperature * temperature)).epsilon(1e-3));
 }
 
+TEST_CASE("the meter on a shunt is no burden of its own: it is beside the shunt") {
+  // Source - V - shunt - converter: at the terminals V - I (R || R_meter), with I = v/R + v/R_meter.
+  HandBench bench = stoat_bench({.reading_percent = 0.0, .upto = 1000.0});
+  setup::Channel& current = bench.hookup.channels[1];
+  current.conversion.shunt = setup::Shunt{0.1};
+  bench.hookup.ports[0].voltmeter = setup::VoltmeterSide::outer;
+  bench.hookup.ports[0].sensed = false;
+  for (double& value : bench.stored("input current").value) value = 0.08;
+  SECTION("10 Mohm takes nothing worth seeing") {
+    current.ranges[0].impedance_ohm = 10e6;
+    const auto& port = bench.evaluate().steps.at(0).ports.at(0);
+    CHECK(port.current.value == Approx(0.8).epsilon(2e-8));
+    CHECK(port.voltage.value == Approx(47.92).epsilon(1e-9));
+  }
+  SECTION("20 ohm takes half a percent of the current, known to 10 %") {
+    current.ranges[0].impedance_ohm = 20.0;
+    current.ranges[0].impedance_tolerance_percent = 10.0;
+    const auto& port = bench.evaluate().steps.at(0).ports.at(0);
+    CHECK(port.current.value == Approx(0.8 + 0.08 / 20.0).epsilon(1e-12));
+    CHECK(port.voltage.value == Approx(48.0 - 0.08).epsilon(1e-12));
+    CHECK(*port.current.expanded == Approx(kNormal95 * 0.004 * 0.1 / std::sqrt(3.0)).epsilon(1e-6));
+  }
+}
+
 TEST_CASE("volts and amps of an AC port are apparent power only") {
   HandBench bench = stoat_bench();
   bench.hookup.ports[1].kind = setup::PortKind::ac;

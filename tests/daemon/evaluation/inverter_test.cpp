@@ -1,4 +1,5 @@
 // What an inverter's step shows besides efficiency: capture results, temperatures, weighted figures.
+#include <algorithm>
 #include <catch2/catch.hpp>
 #include <limits>
 #include <numbers>
@@ -75,6 +76,7 @@ void add_capture(HandBench& bench, double gain_percent) {
   capture.step = 0;
   capture.instrument = "scope";
   capture.file_name = "step_0.csv";
+  capture.t_ns = kStart + 21 * kSecond;  // after the window of step 0
   capture.bytes = capture_file();
   capture.size = static_cast<std::int64_t>(capture.bytes.size());
   bench.run.captures.push_back(capture);
@@ -134,6 +136,41 @@ TEST_CASE("a file that is no capture is told, and costs only what it would have 
     CHECK_FALSE(step.thd_voltage.known);
     CHECK_FALSE(step.thd_voltage.why.empty());
     CHECK_FALSE(step.crest_factor.why.empty());
+  }
+}
+
+TEST_CASE("a capture from before the averaging window is told, never used; of the others the last counts") {
+  HandBench bench = inverter_bench({300.0});
+  add_capture(bench, 2.0);
+  store::StoredCapture& good = bench.run.captures[0];
+  SECTION("an early file beside a good one, wherever it stands in the list") {
+    store::StoredCapture early = good;
+    early.file_name = "early.csv";
+    early.t_ns = kStart + 7 * kSecond + kSecond / 2;  // the window begins at 10 s
+    early.bytes = "hello";
+    early.size = 5;
+    bench.run.captures.push_back(early);
+    const StepResult step = bench.evaluate().steps.at(0);
+    CHECK(step.thd_voltage.value == Approx(kThird).epsilon(1e-6));
+    REQUIRE_FALSE(step.remarks.empty());
+    CHECK(std::count(step.remarks.begin(), step.remarks.end(),
+                     "capture not used: early.csv came 2.50 s before the averaging window began, when the "
+                     "step had not settled") == 1);
+  }
+  SECTION("an early file alone gives nothing") {
+    good.t_ns = kStart + 10 * kSecond - 1;
+    const StepResult step = bench.evaluate().steps.at(0);
+    CHECK_FALSE(step.thd_voltage.known);
+    CHECK(step.efficiency.known);
+  }
+  SECTION("a file at the window's first instant counts, until a later one comes") {
+    store::StoredCapture later = good;
+    later.bytes = "hello";
+    later.size = 5;
+    good.t_ns = kStart + 10 * kSecond;
+    CHECK(bench.evaluate().steps.at(0).thd_voltage.known);
+    bench.run.captures.insert(bench.run.captures.begin(), later);
+    CHECK_FALSE(bench.evaluate().steps.at(0).thd_voltage.known);
   }
 }
 
@@ -255,4 +292,46 @@ TEST_CASE("DC ripple without a capture: half the bound is corrected, the other h
   // Between -R I^2 = -0.4 W and nothing (JCGM 100:2008 4.3.8).
   CHECK(power.value == Approx(39.9 - 0.2).epsilon(1e-9));
   CHECK(*power.expanded == Approx(kNormal95 * 0.2 / std::sqrt(3.0)).epsilon(1e-6));
+}
+
+TEST_CASE("DC ripple at an output: its sign is the load's, so the bound goes both ways") {
+  HandBench bench = stoat_bench({.reading_percent = 0.0});
+  bench.hookup.ports[1].ripple_current_rms_a = 2.0;
+  bench.hookup.ports[1].source_resistance_ohm = 0.1;
+  const Quantity power = bench.evaluate().steps.at(0).output_power;
+  CHECK(power.value == Approx(38.5).epsilon(1e-12));
+  CHECK(*power.expanded == Approx(kNormal95 * 0.4 / std::sqrt(3.0)).epsilon(1e-6));
+}
+
+TEST_CASE("the noise of a polled power factor is the power's, as a wattmeter's would be") {
+  const auto noisy = [](int i) {
+    Noise noise;
+    for (int k = 0; k < i; ++k) (void)noise.next();
+    return 0.9 * (1.0 + 0.01 * noise.next());
+  };
+  const auto bench_with = [&](bool wattmeter) {
+    HandBench bench = stoat_bench({.reading_percent = 0.0});
+    setup::Port& output = bench.hookup.ports[1];
+    output.kind = setup::PortKind::ac;
+    bench.hookup.channels[2].response = setup::Response::true_rms_ac;
+    bench.hookup.channels[3].response = setup::Response::true_rms_ac;
+    const Meter exact{.reading_percent = 0.0};
+    if (wattmeter) {
+      bench.link("power", setup::Quantity::power, "W", exact).response = setup::Response::wattmeter;
+      output.power = "power";
+      bench.read_window("power", 0, [&](int i) { return 38.5 * noisy(i); });
+    } else {
+      bench.link("power factor", setup::Quantity::power_factor, "1", exact);
+      output.power_factor = "power factor";
+      bench.read_window("power factor", 0, noisy);
+    }
+    return bench.evaluate().steps.at(0);
+  };
+  const StepResult read = bench_with(false);
+  const StepResult same = bench_with(true);
+  REQUIRE(read.efficiency.known);
+  CHECK(read.ports.at(1).method == "V x I x PF");
+  CHECK(read.efficiency.value == Approx(same.efficiency.value).epsilon(1e-12));
+  REQUIRE(*same.efficiency.expanded > 1e-4);
+  CHECK(*read.efficiency.expanded == Approx(*same.efficiency.expanded).epsilon(1e-9));
 }
