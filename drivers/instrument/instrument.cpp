@@ -147,7 +147,8 @@ net::awaitable<void> Instrument::Impl::run() {
     }
     if (stopping_) break;
     if (state_ != State::wrong_identity) state_ = State::connecting;
-    co_await pause(ns_of(safe_ ? settings_.retry_s : retry_s));
+    const double wait_s = safe_ ? settings_.retry_s : retry_s;
+    co_await pause(ns_of(wait_s));
     retry_s = std::min(2 * retry_s, settings_.retry_most_s);
   }
 }

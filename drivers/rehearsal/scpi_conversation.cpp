@@ -177,7 +177,8 @@ net::awaitable<void> answer(CorePtr core, Station& station, std::shared_ptr<link
   bool has_reply = false;
   bool wrong_identity = false;
   for (const std::string& unit : units) {
-    std::optional<std::string> part = co_await act(core, station, unit, fault ? &*fault : nullptr, wrong);
+    const auto* altering = fault ? &*fault : nullptr;
+    std::optional<std::string> part = co_await act(core, station, unit, altering, wrong);
     if (!part) continue;
     wrong_identity = wrong_identity || *part == kSomebodyElse;
     reply += (has_reply ? ";" : "") + *part;
