@@ -73,7 +73,7 @@ PortRating rating_of(const Port& port, const Ratings& ratings) {
           ratings.output_power_w};
 }
 
-// methods.md, section 6: where 10 milliohm would move the power by more than 0.1 %.
+// docs/methods.md, section 6: where 10 milliohm would move the power by more than 0.1 %.
 void check_sensing(const Port& port, const Ratings& ratings, Findings& findings) {
   if (port.sensed.value_or(false) || port.lead_resistance_ohm || !port.counted) return;
   const PortRating rating = rating_of(port, ratings);
