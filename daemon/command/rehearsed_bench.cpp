@@ -277,6 +277,9 @@ rehearsal::InstrumentDescription instrument_of(const setup::Instrument& instrume
   }
   description.identity = instrument.identity + ",rehearsed,1.0";
   description.terminator = instrument.profile.terminator;
+  description.function_query = instrument.profile.function_query;
+  description.function_reply = instrument.profile.function_reply;
+  description.turned_reply = "RES";  // what a knob that somebody turned would say
   description.meter.name = instrument.name;
   description.meter.update_period_s = instrument.update_s;
   description.meter.integration_s = instrument.integration_s > 0 ? instrument.integration_s : 0.02;
