@@ -15,6 +15,9 @@ using base::Outcome;
 using base::Refusal;
 using boost::asio::awaitable;
 
+/// Before an instrument that failed is connected again.
+constexpr std::chrono::milliseconds kServeAgain{250};
+
 /// The profile with the queries whose values are used; the first one stays, so that a loss is noticed. Lines
 /// that nobody uses may stay away.
 instrument::Profile asked_only(instrument::Profile profile, const std::set<std::string>& used) {
@@ -65,12 +68,11 @@ Bench::State::State(setup::Hookup the_hookup, link::Clock& the_clock,
       options{std::move(the_options)},
       polls{executor,
             [this](std::exception_ptr failure) {
-              tell(clock.now_ns(), "broken", "instruments", "a poll loop ended: " + said(failure),
-                   std::nullopt);
+              tell_fault("broken", "instruments", "a poll loop ended: " + said(failure));
             }},
       watches{executor,
               [this](std::exception_ptr failure) {
-                tell(clock.now_ns(), "broken", "recorder", "a watch ended: " + said(failure), std::nullopt);
+                tell_fault("broken", "recorder", "a watch ended: " + said(failure));
               }},
       windows(hookup.channels.size(), Window{options.window_readings}),
       last_usable(hookup.channels.size()) {}
@@ -98,12 +100,47 @@ void Bench::State::build() {
         }
       }
     }
-    auto opener =
-        options.opener_for ? options.opener_for(declared) : real_opener(clock, hookup.file, declared.link);
-    one->instrument = std::make_unique<instrument::Instrument>(executor, clock, std::move(opener),
-                                                               asked_only(declared.profile, used),
-                                                               settings_of(declared, options), *one);
+    one->profile = asked_only(declared.profile, used);
+    make_instrument(*one);
     owned.push_back(std::move(one));
+  }
+}
+
+void Bench::State::make_instrument(Owned& one) {
+  const auto& declared = hookup.instruments[one.place];
+  auto opener =
+      options.opener_for ? options.opener_for(declared) : real_opener(clock, hookup.file, declared.link);
+  one.instrument = std::make_unique<instrument::Instrument>(executor, clock, std::move(opener), one.profile,
+                                                            settings_of(declared, options), one);
+}
+
+/// A fault in the poll loop ends the run, not the service: the instrument must still hear its safe command.
+/// It is made anew before anybody hears of the fault, so that a command given at once waits for the link.
+awaitable<void> Bench::State::serve(std::size_t place) {
+  const auto self = shared_from_this();
+  auto& one = *owned[place];
+  while (!closed) {
+    std::string failure;
+    try {
+      co_await one.instrument->run();
+    } catch (...) {
+      failure = said(std::current_exception());
+    }
+    if (closed || failure.empty()) co_return;
+    make_instrument(one);
+    tell_fault(std::string{kInstrumentFailed}, hookup.instruments[place].name,
+               "a fault of the program ended its poll loop (" + failure + "); it is connected anew");
+    co_await clock.sleep_for(kServeAgain);
+  }
+}
+
+/// A listener that throws once more must not make a second fault of the first one.
+void Bench::State::tell_fault(std::string kind, std::string source, std::string text) {
+  try {
+    tell(clock.now_ns(), std::move(kind), std::move(source), std::move(text), std::nullopt);
+    instrument_callbacks.call();
+  } catch (...) {
+    return;  // the event was posted before the listeners heard of it
   }
 }
 
@@ -133,7 +170,7 @@ void Bench::start() {
     if (state_->owned[place]->folder) {
       state_->watches.spawn(state_->watch_folder(place));
     } else {
-      state_->polls.spawn(state_->owned[place]->instrument->run());
+      state_->polls.spawn(state_->serve(place));
     }
   }
   state_->watches.spawn(state_->watch_clock());
@@ -283,6 +320,7 @@ void Bench::forget(Listener listener) {
 void Bench::begin_run(RunOnBench run) {
   state_->run = run;
   state_->step = -1;
+  state_->accept_since_ns.reset();
   state_->captures.clear();
   state_->digests.clear();
 }
@@ -294,6 +332,11 @@ void Bench::end_run() {
 
 void Bench::set_step(std::int32_t step) {
   state_->step = step;
+  state_->accept_since_ns.reset();
+}
+
+void Bench::accept_captures(std::optional<std::int64_t> since_ns) {
+  state_->accept_since_ns = since_ns;
 }
 
 void Bench::event(std::string kind, std::string source, std::string text, std::optional<store::RunId> run) {
@@ -313,7 +356,8 @@ void Bench::show_typed(std::size_t channel, const Point& raw_point) {
 
 void Bench::take_capture(std::string instrument, std::string file_name, std::string bytes,
                          std::int32_t step) {
-  state_->take_capture(std::move(instrument), std::move(file_name), std::move(bytes), step);
+  state_->take_capture(std::move(instrument), std::move(file_name), std::move(bytes), step,
+                       state_->clock.now_ns());
 }
 
 namespace {
@@ -345,11 +389,12 @@ awaitable<Outcome<void>> Bench::switch_on(std::string control) {
   co_return Outcome<void>{};
 }
 
-awaitable<Outcome<void>> Bench::make_safe(std::string control) {
+awaitable<Outcome<SafeHow>> Bench::make_safe(std::string control) {
   auto* instrument = state_->instrument_of(control);
   if (instrument == nullptr) co_return no_such(control);
   const auto outcome = co_await instrument->make_safe();
-  if (outcome.state == instrument::CommandState::confirmed) co_return Outcome<void>{};
+  if (outcome.state == instrument::CommandState::confirmed) co_return SafeHow::confirmed;
+  if (outcome.state == instrument::CommandState::sent) co_return SafeHow::sent;
   co_return Refusal{control, outcome.text};
 }
 

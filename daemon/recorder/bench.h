@@ -49,6 +49,16 @@ struct ChannelUpdate {
   Point point;
 };
 
+/// The kind of the event that an instrument is not served for a moment: its poll loop ended by a fault of the
+/// program, and begins anew. Its source is the instrument.
+inline constexpr std::string_view kInstrumentFailed = "instrument failed";
+
+/// What is known of a safe state that was commanded.
+enum class SafeHow {
+  confirmed,  ///< read back
+  sent,       ///< written to the instrument; its profile has no query for it
+};
+
 /// Something that happened, for the event lists.
 struct BenchEvent {
   std::int64_t t_ns = 0;  ///< monotonic
@@ -60,7 +70,7 @@ struct BenchEvent {
 /// A capture file that was taken in.
 struct CaptureArrived {
   std::string instrument, file_name;
-  std::int32_t step = -1;   ///< the step it was bound to; -1: none was running
+  std::int32_t step = -1;   ///< the step it was bound to; -1: to none
   std::size_t samples = 0;  ///< of each channel
   std::size_t channels = 0;
 };
@@ -131,15 +141,19 @@ class Bench {
   /// Readings are posted from now on until end_run(); before and after, events only (as run 0).
   void begin_run(RunOnBench run);
   void end_run();
-  /// Captures and typed answers belong to this step from now on; -1: to none.
+  /// This step goes on from now on; -1: none. It takes no captures yet.
   void set_step(std::int32_t step);
+  /// Captures that were saved at `since_ns` (monotonic: when the step's own set points were there) or later
+  /// belong to the present step, until this is called again; nullopt: to no step, as those saved earlier.
+  void accept_captures(std::optional<std::int64_t> since_ns);
   /// Posts an event and tells the listeners. `run`: nullopt, the present one.
   void event(std::string kind, std::string source, std::string text,
              std::optional<store::RunId> run = std::nullopt);
   /// Takes in a typed value, so that the windows and the feed show it too. Nothing is posted.
   void show_typed(std::size_t channel, const Point& raw_point);
   /// Takes in a scope's file as if it had appeared in the folder; parsed in the background, then posted to
-  /// the step given (-1: the running one).
+  /// the step given. -1: to the running one, if it accepts captures and this one, saved just now, is young
+  /// enough; otherwise to no step (-1), with an event.
   void take_capture(std::string instrument, std::string file_name, std::string bytes, std::int32_t step = -1);
 
   // --- commands to controls, by the control's name. Refusals say what was tried on what and what came
@@ -150,7 +164,7 @@ class Bench {
                                                                                    double value);
   [[nodiscard]] boost::asio::awaitable<base::Outcome<void>> switch_on(std::string control);
   /// Pre-empts whatever the instrument is asked; confirmed by read-back where the profile can.
-  [[nodiscard]] boost::asio::awaitable<base::Outcome<void>> make_safe(std::string control);
+  [[nodiscard]] boost::asio::awaitable<base::Outcome<SafeHow>> make_safe(std::string control);
   /// Connected, and its identity is as declared.
   [[nodiscard]] bool may_command(std::string_view control) const;
 

@@ -42,6 +42,7 @@ struct Bench::State : std::enable_shared_from_this<Bench::State> {
   struct Owned : instrument::Sink {
     State* bench = nullptr;
     std::size_t place = 0;                               ///< in Hookup::instruments
+    instrument::Profile profile;                         ///< as it is asked: without what nobody uses
     std::unique_ptr<instrument::Instrument> instrument;  ///< empty: a folder
     std::shared_ptr<FolderWatch> folder;                 ///< empty: an instrument
     std::vector<std::vector<std::int32_t>> channels_of;  ///< by value index: the channels that use it
@@ -52,6 +53,9 @@ struct Bench::State : std::enable_shared_from_this<Bench::State> {
   State(setup::Hookup the_hookup, link::Clock& the_clock, boost::asio::any_io_executor the_executor,
         store::Writer& the_writer, BenchOptions the_options);
   void build();
+  void make_instrument(Owned& one);
+  boost::asio::awaitable<void> serve(std::size_t place);
+  void tell_fault(std::string kind, std::string source, std::string text);
 
   // --- intake.cpp
   void take_exchange(const Owned& owned, const instrument::Exchange& exchange);
@@ -63,7 +67,9 @@ struct Bench::State : std::enable_shared_from_this<Bench::State> {
   void post_event(store::EventItem item);
   boost::asio::awaitable<void> watch_clock();
   boost::asio::awaitable<void> watch_folder(std::size_t place);
-  void take_capture(std::string instrument, std::string file_name, std::string bytes, std::int32_t step);
+  void take_capture(std::string instrument, std::string file_name, std::string bytes, std::int32_t for_step,
+                    std::int64_t saved_ns);
+  [[nodiscard]] std::string why_unbound(std::int64_t saved_ns) const;
   void in_background(std::function<void()> job, std::function<void()> done);
 
   [[nodiscard]] instrument::Instrument* instrument_of(std::string_view control) const;
@@ -81,6 +87,8 @@ struct Bench::State : std::enable_shared_from_this<Bench::State> {
   std::deque<BenchEvent> events;
   RunOnBench run;  ///< run 0: none
   std::int32_t step = -1;
+  std::optional<std::int64_t>
+      accept_since_ns;  ///< captures saved from then on belong to `step`; nullopt: none do
   std::map<std::int32_t, std::size_t> captures;               ///< by step of the present run
   std::set<std::pair<std::uint64_t, std::uint64_t>> digests;  ///< of the present run's captures
   bool closed = false;

@@ -2,6 +2,7 @@
 
 #include <algorithm>
 #include <cctype>
+#include <chrono>
 #include <filesystem>
 #include <fstream>
 #include <iterator>
@@ -87,7 +88,10 @@ void FolderWatch::consider(const std::string& name, Stamp stamp, FolderLook& fou
     found.events.push_back("cannot read the capture " + path.string() + "; check its permissions");
     return;
   }
-  found.files.push_back({name, std::move(*bytes)});
+  const auto changed = fs::file_time_type{fs::file_time_type::duration{stamp.changed}};
+  const auto age =
+      std::chrono::duration_cast<std::chrono::nanoseconds>(fs::file_time_type::clock::now() - changed);
+  found.files.push_back({name, std::move(*bytes), std::max<std::int64_t>(age.count(), 0)});
 }
 
 }  // namespace loadstair::recorder

@@ -14,6 +14,7 @@ struct FolderLook {
   struct File {
     std::string name;
     std::string bytes;
+    std::int64_t age_ns = 0;  ///< since its last change, by the host's and the file system's clock; >= 0
   };
   std::vector<File> files;          ///< complete and not taken before, by name
   std::vector<std::string> events;  ///< for a person: what cannot be read, and what to do; each once

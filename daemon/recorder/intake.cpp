@@ -183,22 +183,36 @@ awaitable<void> Bench::State::watch_folder(std::size_t place) {
                   });
     while (!look->finished) co_await notice->wait_until(INT64_MAX);
     for (auto& text : look->found.events) tell(clock.now_ns(), "capture refused", name, text, std::nullopt);
-    for (auto& file : look->found.files) take_capture(name, file.name, std::move(file.bytes), -1);
+    for (auto& file : look->found.files) {
+      take_capture(name, file.name, std::move(file.bytes), -1, clock.now_ns() - file.age_ns);
+    }
     co_await clock.sleep_for(std::chrono::nanoseconds{options.folder_look_ns});
   }
 }
 
+/// Why a capture cannot be said to show the running step; empty: it does.
+std::string Bench::State::why_unbound(std::int64_t saved_ns) const {
+  if (step < 0) return "came while no step was running";
+  if (!accept_since_ns) return "came before the step's averaging had begun";
+  if (saved_ns >= *accept_since_ns) return {};
+  return "was saved " + base::print_fixed(static_cast<double>(*accept_since_ns - saved_ns) * 1e-9, 1) +
+         " s before the step's set points were there";
+}
+
+/// A file shows the bench as it was when it was saved: a late one belongs to an earlier step, and nobody
+/// knows to which.
 void Bench::State::take_capture(std::string instrument, std::string file_name, std::string bytes,
-                                std::int32_t for_step) {
+                                std::int32_t for_step, std::int64_t saved_ns) {
   struct Work {
     store::CaptureItem item;
     std::pair<std::uint64_t, std::uint64_t> digest;
     std::size_t samples = 0, channels = 0;
-    std::string refused;
+    std::string refused, unbound;
   };
   const auto work = std::make_shared<Work>();
   work->item.run = run.run;
-  work->item.step = for_step >= 0 ? for_step : step;
+  if (for_step < 0) work->unbound = why_unbound(saved_ns);
+  work->item.step = for_step >= 0 ? for_step : work->unbound.empty() ? step : -1;
   work->item.file_name = std::move(file_name);
   work->item.instrument = std::move(instrument);
   work->item.t_ns = clock.now_ns();
@@ -220,13 +234,20 @@ void Bench::State::take_capture(std::string instrument, std::string file_name, s
           self->tell(self->clock.now_ns(), "capture refused", item.instrument, work->refused, std::nullopt);
           return;
         }
-        if (item.run == 0 || item.step < 0 || item.run != self->run.run) {
-          self->tell(self->clock.now_ns(), "capture left out", item.instrument,
-                     item.file_name + " came while no step was running; add it to one with loadstair capture",
-                     std::nullopt);
+        if (item.run == 0 || item.run != self->run.run) {
+          self->tell(
+              self->clock.now_ns(), "capture left out", item.instrument,
+              item.file_name + " came while no run was going on; add it to a step with loadstair capture",
+              std::nullopt);
           return;
         }
         if (!self->digests.insert(work->digest).second) return;  // the same file again
+        if (!work->unbound.empty()) {
+          self->tell(self->clock.now_ns(), "capture of no step", item.instrument,
+                     item.file_name + " " + work->unbound +
+                         ", so it is kept and used for no step; add it to one with loadstair capture",
+                     std::nullopt);
+        }
         const CaptureArrived arrived{item.instrument, item.file_name, item.step, work->samples,
                                      work->channels};
         self->writer.post(std::move(item));

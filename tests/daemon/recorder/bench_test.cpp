@@ -130,6 +130,7 @@ TEST_CASE("a scope's folder: captures bound to the running step, twice the same 
   CHECK(bench.has_event("capture left out"));
   const auto run = begin(bench);
   bench.bench->set_step(1);
+  bench.bench->accept_captures(0);
   write("good.csv", "t,v,i\n0,1,5\n1e-3,2,6\n2e-3,3,7\n3e-3,3,7\n");
   write("again.csv", "t,v,i\n0,1,5\n1e-3,2,6\n2e-3,3,7\n3e-3,3,7\n");
   write("broken.csv", "t,v\n0,1\n1e-3,two\n2e-3,3\n");
@@ -151,6 +152,64 @@ TEST_CASE("a scope's folder: captures bound to the running step, twice the same 
   CHECK_THAT(refused->text, Catch::Contains("broken.csv:3"));
 }
 
+TEST_CASE("a capture that the running step cannot have made is kept, for no step, and told") {
+  FakeBench bench;
+  const auto run = begin(bench);
+  bench.run_for(1);
+  bench.bench->set_step(1);
+  const auto take = [&](const std::string& name, char value) {
+    bench.bench->take_capture("scope", name, std::string{"t,v\n0,1\n1e-3,2\n2e-3,"} + value + "\n");
+  };
+  take("soak.csv", '1');  // saved while the step before it was averaged, as likely as not
+  bench.bench->accept_captures(bench.clock->now_ns() + kSecond);
+  take("late.csv", '2');
+  bench.run_for(2);
+  take("own.csv", '3');
+  bench.bench->accept_captures(std::nullopt);
+  take("after.csv", '4');
+  CHECK(bench.bench->captures_of_step(1) == 1);
+  bench.bench->end_run();
+  const auto stored = bench.stored(run);
+  REQUIRE(stored.captures.size() == 4);
+  for (const auto& one : stored.captures) CHECK(one.step == (one.file_name == "own.csv" ? 1 : -1));
+  const auto told = std::count_if(stored.events.begin(), stored.events.end(),
+                                  [](const auto& event) { return event.kind == "capture of no step"; });
+  CHECK(told == 3);
+  const auto late = std::find_if(stored.events.begin(), stored.events.end(), [](const auto& event) {
+    return event.text.find("late.csv was saved 1.0 s before the step's set points") != std::string::npos;
+  });
+  CHECK(late != stored.events.end());
+}
+
+TEST_CASE("a poll loop that a fault ends begins anew, is told, and takes a safe command given at once") {
+  FakeBench bench;
+  bench.run_for(1);
+  int faults = 0;
+  bench.bench->on_event([&](const recorder::BenchEvent& event) {
+    // Thrown within the load's poll loop, which sends the command, and by whoever is told of the fault.
+    if (event.kind == "command sent" && event.text == "SET 100" && faults++ == 0) {
+      throw std::logic_error{"a promise was broken"};
+    }
+    if (event.kind == recorder::kInstrumentFailed) throw std::logic_error{"and another"};
+  });
+  bench.world.load_on = true;
+  bool done = false;
+  const auto command = [](FakeBench& on, bool& at_end) -> boost::asio::awaitable<void> {
+    const auto set = co_await on.bench->apply("load", "power", 100);
+    CHECK_FALSE(set.ok());
+    const auto safe = co_await on.bench->make_safe("load");
+    REQUIRE(safe.ok());
+    CHECK(*safe == recorder::SafeHow::confirmed);
+    at_end = true;
+  };
+  bench.finish(command(bench, done));
+  REQUIRE(done);
+  CHECK(faults == 1);
+  CHECK_FALSE(bench.world.load_on);
+  CHECK(bench.bench->may_command("load"));
+  CHECK(bench.has_event(std::string{recorder::kInstrumentFailed}));
+}
+
 TEST_CASE("a stranger on the line is not read and not commanded") {
   auto hookup = fake_hookup(false);
   hookup.instruments[0].identity = "ANOTHER,meter";
@@ -163,16 +222,21 @@ TEST_CASE("a stranger on the line is not read and not commanded") {
   CHECK_FALSE(bench.bench->channels()[0].value);
 }
 
+// g++ 12 awaits again what is awaited within CHECK: awaited first, then checked.
 boost::asio::awaitable<void> command(FakeBench& on, bool& at_end) {
   const auto set = co_await on.bench->apply("load", "power", 123.5);
   CHECK(set.ok());
   if (set.ok()) CHECK(set->value_or(0) == 123.5);
-  CHECK((co_await on.bench->switch_on("load")).ok());
+  const auto switched = co_await on.bench->switch_on("load");
+  CHECK(switched.ok());
   CHECK(on.world.load_on);
-  CHECK((co_await on.bench->make_safe("load")).ok());
+  const auto safe = co_await on.bench->make_safe("load");
+  CHECK(safe.ok());
   CHECK_FALSE(on.world.load_on);
-  CHECK_FALSE((co_await on.bench->apply("nobody", "power", 1)).ok());
-  CHECK_FALSE((co_await on.bench->apply("load", "colour", 1)).ok());
+  const auto nobody = co_await on.bench->apply("nobody", "power", 1);
+  CHECK_FALSE(nobody.ok());
+  const auto colour = co_await on.bench->apply("load", "colour", 1);
+  CHECK_FALSE(colour.ok());
   at_end = true;
 }
 

@@ -52,6 +52,22 @@ TEST_CASE("a scope's file is taken when two looks find it alike, and once") {
     REQUIRE(again.files.size() == 1);
     CHECK(again.files[0].bytes == "t,v\n0,1\n1,2\n");
   }
+  SECTION("it comes with its age, a file that was moved here with the age it had") {
+    CHECK(found.files[0].age_ns >= 0);
+    CHECK(found.files[0].age_ns < 60'000'000'000);
+    folder.write("late.csv", "0,1\n");
+    fs::last_write_time(folder.path() / "late.csv",
+                        fs::file_time_type::clock::now() - std::chrono::minutes{10});
+    folder.write("ahead.csv", "0,1\n");
+    fs::last_write_time(folder.path() / "ahead.csv",
+                        fs::file_time_type::clock::now() + std::chrono::minutes{10});
+    CHECK(watch.look().files.empty());
+    const auto moved = watch.look();
+    REQUIRE(moved.files.size() == 2);
+    CHECK(moved.files[0].age_ns == 0);
+    CHECK(moved.files[1].age_ns >= 600'000'000'000);
+    CHECK(moved.files[1].age_ns < 660'000'000'000);
+  }
   SECTION("renamed in") {
     folder.write("part.tmp", "a\n");
     CHECK(watch.look().files.empty());
