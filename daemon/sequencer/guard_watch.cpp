@@ -21,6 +21,24 @@ std::string_view name_of(GuardDemand demand) {
   return "stop";
 }
 
+std::string_view name_of(GuardWatch::Standing standing) {
+  switch (standing) {
+    case GuardWatch::Standing::off:
+      return "off";
+    case GuardWatch::Standing::watching:
+      return "watching";
+    case GuardWatch::Standing::blanked:
+      return "blanked";
+    case GuardWatch::Standing::beyond:
+      return "beyond";
+    case GuardWatch::Standing::missing:
+      return "missing";
+    case GuardWatch::Standing::tripped:
+      return "tripped";
+  }
+  return "off";
+}
+
 namespace {
 
 GuardDemand demand_of(setup::GuardAction action) {
@@ -57,11 +75,16 @@ GuardWatch::GuardWatch(setup::Guard guard, std::string unit, double period_s)
       unit_{std::move(unit)},
       missing_after_ns_{ticks_of(guard_.missing_after_s > 0.0 ? guard_.missing_after_s : 3.0 * period_s)} {}
 
+GuardDemand GuardWatch::demand() const {
+  return demand_of(guard_.action);
+}
+
 void GuardWatch::arm(std::int64_t now_ns) {
   armed_ = true;
   tripped_ = false;
   beyond_since_ns_.reset();
   seen_ = false;
+  overload_ = false;
   last_ns_ = now_ns;
 }
 
@@ -79,11 +102,15 @@ bool GuardWatch::beyond(double value) const {
 }
 
 void GuardWatch::see(const recorder::Point& point) {
-  if ((point.flags & instrument::kUnusable) != 0U || !std::isfinite(point.value)) return;
+  // An old reply or another unit says nothing of the present value, overloaded or not.
+  const bool overload =
+      guard_.above && (point.flags & instrument::kUnusable) == std::uint32_t{instrument::kOverload};
+  if (!overload && ((point.flags & instrument::kUnusable) != 0U || !std::isfinite(point.value))) return;
   seen_ = true;
+  overload_ = overload;
   last_ns_ = std::max(last_ns_, point.arrived_ns);
-  last_value_ = point.value;
-  if (!beyond(point.value) || point.t_ns < blank_until_ns_) {
+  if (!overload) last_value_ = point.value;
+  if (!(overload || beyond(point.value)) || point.t_ns < blank_until_ns_) {
     beyond_since_ns_.reset();
     return;
   }
@@ -95,11 +122,16 @@ bool GuardWatch::missing(std::int64_t now_ns) const {
   return now_ns - last_ns_ > missing_after_ns_;
 }
 
-std::string GuardWatch::limit_text() const {
-  if (guard_.above && last_value_ > *guard_.above) {
-    return "above " + brief(*guard_.above) + " " + unit_;
+std::string GuardWatch::beyond_text() const {
+  if (overload_) {
+    return guard_.channel + " is overloaded: beyond the meter's full scale, so above " +
+           brief(guard_.above.value_or(0.0)) + " " + unit_;
   }
-  return "below " + brief(guard_.below.value_or(0.0)) + " " + unit_;
+  const auto text = guard_.channel + " is " + brief(last_value_) + " " + unit_;
+  if (guard_.above && last_value_ > *guard_.above) {
+    return text + ", above " + brief(*guard_.above) + " " + unit_;
+  }
+  return text + ", below " + brief(guard_.below.value_or(0.0)) + " " + unit_;
 }
 
 std::optional<GuardWatch::Cause> GuardWatch::check(std::int64_t now_ns) {
@@ -111,7 +143,7 @@ std::optional<GuardWatch::Cause> GuardWatch::check(std::int64_t now_ns) {
         missing(now_ns) && now_ns - *beyond_since_ns_ >= std::max(debounce_ns, missing_after_ns_);
     if (long_enough || silent_beyond) {
       tripped_ = true;
-      std::string text = guard_.channel + " is " + brief(last_value_) + " " + unit_ + ", " + limit_text();
+      std::string text = beyond_text();
       if (debounce_ns > 0) text += " for " + brief(guard_.debounce_s) + " s";
       if (!long_enough) text += ", and silent since";
       return Cause{demand_of(guard_.action), text};
@@ -135,7 +167,7 @@ GuardWatch::Standing GuardWatch::standing(std::int64_t now_ns) const {
 }
 
 std::optional<double> GuardWatch::value(std::int64_t now_ns) const {
-  if (!seen_ || missing(now_ns)) return std::nullopt;
+  if (!seen_ || overload_ || missing(now_ns)) return std::nullopt;
   return last_value_;
 }
 

@@ -14,7 +14,10 @@ namespace loadstair::sequencer {
 enum class GuardDemand { stop, hold, next };
 [[nodiscard]] std::string_view name_of(GuardDemand demand);
 
-/// Values decide, never flags: a reading that cannot be used is a missing one. Instants are monotonic.
+/// Values decide: a reading that cannot be used is a missing one. The one exception is overload: more than
+/// the meter's full scale counts as beyond an upper limit, whatever the stair says of missing readings, since
+/// a fault drives a quantity there and keeps it there. (Which way a meter is overloaded it does not say:
+/// towards a lower limit an overload is a missing reading.) Instants are monotonic.
 ///
 /// A limit trips when readings stand beyond it for the debounce time, counted between the instants of the
 /// readings; without debounce the first one trips. Beyond the limit and then silent trips too, after the
@@ -44,9 +47,11 @@ class GuardWatch {
 
   enum class Standing { off, watching, blanked, beyond, missing, tripped };
   [[nodiscard]] Standing standing(std::int64_t now_ns) const;
+  /// What it asks for beyond its limit.
+  [[nodiscard]] GuardDemand demand() const;
   [[nodiscard]] const setup::Guard& guard() const { return guard_; }
   [[nodiscard]] const std::string& unit() const { return unit_; }
-  /// The last usable value; nullopt while it is missing.
+  /// The last usable value; nullopt while it is missing or overloaded.
   [[nodiscard]] std::optional<double> value(std::int64_t now_ns) const;
   /// Distance to the nearest limit, negative beyond it.
   [[nodiscard]] std::optional<double> margin(std::int64_t now_ns) const;
@@ -54,7 +59,7 @@ class GuardWatch {
  private:
   [[nodiscard]] bool beyond(double value) const;
   [[nodiscard]] bool missing(std::int64_t now_ns) const;
-  [[nodiscard]] std::string limit_text() const;
+  [[nodiscard]] std::string beyond_text() const;
 
   setup::Guard guard_;
   std::string unit_;
@@ -64,9 +69,13 @@ class GuardWatch {
   bool seen_ = false;         ///< a usable reading since it was armed
   std::int64_t last_ns_ = 0;  ///< arrival of the last usable reading, or the arming
   double last_value_ = 0.0;
+  bool overload_ = false;  ///< the last reading that counted was one, towards the upper limit
   std::int64_t blank_until_ns_ = INT64_MIN;
   std::optional<std::int64_t> beyond_since_ns_;  ///< instant of the first reading beyond, in a row
   std::int64_t beyond_last_ns_ = 0;
 };
+
+/// "off", "watching", "blanked", "beyond", "missing", "tripped".
+[[nodiscard]] std::string_view name_of(GuardWatch::Standing standing);
 
 }  // namespace loadstair::sequencer

@@ -63,40 +63,6 @@ std::string_view name_of(PromptKind kind) {
   return "hand";
 }
 
-namespace {
-
-std::string_view word_of(GuardWatch::Standing standing) {
-  switch (standing) {
-    case GuardWatch::Standing::off:
-      return "off";
-    case GuardWatch::Standing::watching:
-      return "watching";
-    case GuardWatch::Standing::blanked:
-      return "blanked";
-    case GuardWatch::Standing::beyond:
-      return "beyond";
-    case GuardWatch::Standing::missing:
-      return "missing";
-    case GuardWatch::Standing::tripped:
-      return "tripped";
-  }
-  return "off";
-}
-
-std::string_view word_of(setup::GuardAction action) {
-  switch (action) {
-    case setup::GuardAction::stop:
-      return "stop";
-    case setup::GuardAction::hold:
-      return "hold";
-    case setup::GuardAction::next:
-      return "next";
-  }
-  return "stop";
-}
-
-}  // namespace
-
 Snapshot Sequencer::State::snapshot() const {
   const auto now = clock.now_ns();
   Snapshot shown;
@@ -128,8 +94,8 @@ Snapshot Sequencer::State::snapshot() const {
     guard.above = watch.guard().above;
     guard.below = watch.guard().below;
     guard.margin = watch.margin(now);
-    guard.state = word_of(watch.standing(now));
-    guard.action = word_of(watch.guard().action);
+    guard.state = name_of(watch.standing(now));
+    guard.action = name_of(watch.demand());
     shown.guards.push_back(std::move(guard));
   }
   shown.trips = trips;

@@ -263,14 +263,32 @@ TEST_CASE("blanking lets the inrush of a set-point change pass, and no longer") 
   CHECK(bench.stored(run).summary.state == (sag_s < 1.5 ? store::RunState::done : store::RunState::stopped));
 }
 
-TEST_CASE("an overload of the guarded meter is missing, never a value") {
+TEST_CASE("a heatsink meter in overload stops the run, although missing readings are ignored") {
+  RunBench bench;
+  auto step = quick_step("first", 100);
+  step.average_s = 10;
+  auto stair = fake_stair({step});
+  auto guard = guard_on("heatsink");
+  guard.above = 95;
+  guard.debounce_s = 0.5;
+  guard.missing = setup::MissingAction::ignore;
+  stair.guards.push_back(guard);
+  bench.start(stair);
+  bench.run_to(StepPhase::average);
+  bench.meter.answers["READ?"] = [] { return std::string{"2.3E2,1.0E2,9.9E37"}; };
+  bench.run_until([&] { return bench.off(); }, 2.0);
+  bench.run_to_end();
+  CHECK(bench.now().phase == RunPhase::stopped);
+  CHECK_THAT(bench.now().reason, Catch::Contains("heatsink is overloaded"));
+}
+
+TEST_CASE("an overload of the meter of a lower limit is missing, never a value") {
   RunBench bench;
   auto step = quick_step("first", 100);
   step.average_s = 10;
   auto stair = fake_stair({step});
   auto guard = guard_on("heatsink");
   guard.below = 0;  // 9.9E37 is above every limit that a careless reader would compare it with
-  guard.above = 1e30;
   guard.missing_after_s = 1.0;
   stair.guards.push_back(guard);
   const auto run = bench.start(stair);

@@ -111,8 +111,45 @@ TEST_CASE("a missing reading: three periods by default, and its own action") {
   CHECK_FALSE(watch.margin(std::llround(1.6e9)));
 }
 
-TEST_CASE("an overload on a guarded channel is missing, never a value") {
+TEST_CASE("an overload towards the limit stands beyond it, whatever is said of missing readings") {
+  auto guard = above(95, 0.6);
+  guard.missing = GENERATE(setup::MissingAction::ignore, setup::MissingAction::stop);
+  guard.action = setup::GuardAction::next;
+  GuardWatch watch{guard, "degC", 0.5};
+  watch.arm(0);
+  watch.see(at(0.2, 40));
+  SECTION("for the debounce time: it trips") {
+    for (const double t : {0.4, 0.6, 0.8}) {
+      watch.see(at(t, std::nan(""), instrument::kOverload));
+      CHECK_FALSE(watch.check(std::llround(t * 1e9)));
+    }
+    CHECK(watch.standing(std::llround(0.8e9)) == GuardWatch::Standing::beyond);
+    CHECK_FALSE(watch.value(std::llround(0.8e9)));
+    watch.see(at(1.0, std::nan(""), instrument::kOverload));
+    const auto cause = watch.check(kSecond);
+    REQUIRE(cause);
+    CHECK(cause->demand == GuardDemand::next);
+    CHECK(cause->text == "heatsink is overloaded: beyond the meter's full scale, so above 95 degC for 0.6 s");
+  }
+  SECTION("for a moment, as while a meter changes its range: it does not") {
+    watch.see(at(0.4, std::nan(""), instrument::kOverload));
+    watch.see(at(0.6, 40));
+    watch.see(at(1.2, 41));
+    CHECK_FALSE(watch.check(std::llround(1.2e9)));
+    CHECK(*watch.value(std::llround(1.2e9)) == 41);
+  }
+  SECTION("with the unit changed it says nothing of this quantity") {
+    for (const double t : {0.4, 0.6, 0.8, 1.0, 1.2}) {
+      watch.see(at(t, std::nan(""), instrument::kOverload | instrument::kUnitChanged));
+    }
+    CHECK_FALSE(watch.check(std::llround(1.2e9)));
+  }
+}
+
+TEST_CASE("an overload where only a lower limit is guarded is missing, never a value") {
   auto guard = above(95);
+  guard.above.reset();
+  guard.below = 10;
   guard.missing = setup::MissingAction::hold;
   GuardWatch watch{guard, "degC", 0.5};
   watch.arm(0);
