@@ -56,7 +56,8 @@ awaitable<Go> Sequencer::State::hand_prompt(const setup::Step& plan) {
   const auto id = open.id;
   prompt = std::move(open);
   enter(StepPhase::prompt, "waits for the person at the bench: " + plan.prompt);
-  const auto go = co_await wait_for([this, id] { return !prompt || prompt->id != id; }, INT64_MAX);
+  const std::function<bool()> gone = [this, id] { return !prompt || prompt->id != id; };
+  const auto go = co_await wait_for(gone, INT64_MAX);
   prompt.reset();
   if (go == Go::on) {
     // What the hand did counts as the change of the set point.
@@ -116,7 +117,8 @@ awaitable<Go> Sequencer::State::typed_prompt(std::size_t channel, std::int32_t r
   prompt = std::move(open);
   prompt_channel = channel;
   enter(StepPhase::typed, "waits for " + declared.name + ", round " + base::print_integer(round) + " of 2");
-  const auto go = co_await wait_for([this, id] { return !prompt || prompt->id != id; }, INT64_MAX);
+  const std::function<bool()> gone = [this, id] { return !prompt || prompt->id != id; };
+  const auto go = co_await wait_for(gone, INT64_MAX);
   prompt.reset();
   co_return go;
 }

@@ -58,6 +58,8 @@ void Sequencer::State::post_step(store::StepState state) {
   bench.writer().post(step);
 }
 
+/// The condition is to be named before the co_await: g++ 12 destroys a closure that is built inside a
+/// co_await expression twice.
 awaitable<Go> Sequencer::State::wait_for(std::function<bool()> condition, std::int64_t deadline_ns) {
   while (true) {
     if (stop_demand) co_return Go::stop;
@@ -75,6 +77,7 @@ awaitable<Go> Sequencer::State::wait_until(std::int64_t deadline_ns) {
 
 awaitable<Go> Sequencer::State::hold() {
   phase = RunPhase::holding;
+  bench.accept_captures(std::nullopt);
   reason = hold_demand.value_or("");
   prompt.reset();
   enter(StepPhase::hold,
@@ -104,11 +107,12 @@ awaitable<void> Sequencer::State::run_stair() {
     broke = "an exception of an unknown kind";
   }
   if (!broke.empty()) {
-    event("broken", "sequencer", "the run was ended by a fault of the program: " + broke);
+    tell_broken("the run was ended by a fault of the program: " + broke);
     stop_now("a fault of the program: " + broke);
   }
   if (step_index >= 0 && !step.ended_ns) end_step(Go::stop);
-  co_await finish(how == Go::stop ? store::RunState::stopped : store::RunState::done);
+  const auto end = how == Go::stop ? store::RunState::stopped : store::RunState::done;
+  co_await finish(end);
 }
 
 awaitable<Go> Sequencer::State::all_steps() {
@@ -156,7 +160,6 @@ awaitable<Go> Sequencer::State::put_on_disk() {
                         flush->done = true;
                         self->wake.notify();
                       });
-  // Named, since g++ 12 destroys a closure that is built inside a co_await expression twice.
   const std::function<bool()> done = [flush] { return flush->done; };
   const auto go = co_await wait_for(done, INT64_MAX);
   if (go != Go::on) co_return go;
@@ -264,6 +267,7 @@ awaitable<Go> Sequencer::State::run_step(std::int32_t index) {
 
 /// From the soak to the capture; begins again after a hold, with windows of its own.
 awaitable<Go> Sequencer::State::measure(const setup::Step& plan) {
+  bench.accept_captures(std::nullopt);
   step.soak_begin_ns.reset();
   step.settle_begin_ns.reset();
   step.average_begin_ns.reset();
@@ -288,6 +292,7 @@ awaitable<Go> Sequencer::State::soak(const setup::Step& plan) {
 awaitable<Go> Sequencer::State::average(const setup::Step& plan) {
   const auto begin = clock.now_ns();
   step.average_begin_ns = begin;
+  bench.accept_captures(applied_ns);
   post_step(store::StepState::averaging);
   const auto least = ticks_of(plan.average_s);
   enter(StepPhase::average, "averages", begin + least);
@@ -315,8 +320,8 @@ awaitable<Go> Sequencer::State::capture(const setup::Step& plan) {
         options.request_capture ? "waits for the scope's file" : "waits for a capture: save one on the scope",
         deadline);
   if (options.request_capture) options.request_capture(plan.label);
-  const auto go =
-      co_await wait_for([this, had] { return bench.captures_of_step(step_index) > had; }, deadline);
+  const std::function<bool()> came = [this, had] { return bench.captures_of_step(step_index) > had; };
+  const auto go = co_await wait_for(came, deadline);
   if (go == Go::on && bench.captures_of_step(step_index) == had) {
     event("capture missing", plan.label,
           "no capture came within " + brief(options.capture_limit_s) +
@@ -327,6 +332,7 @@ awaitable<Go> Sequencer::State::capture(const setup::Step& plan) {
 
 void Sequencer::State::end_step(Go how) {
   if (step.ended_ns) return;
+  bench.accept_captures(std::nullopt);
   step.ended_ns = clock.now_ns();
   if (how == Go::next) step.reason = skip_demand.value_or("");
   if (how == Go::stop) step.reason = stop_demand.value_or("");

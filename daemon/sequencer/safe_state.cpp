@@ -42,16 +42,34 @@ void Sequencer::State::begin_safe_state() {
     one.instrument = control.instrument;
     const auto* declared = bench.hookup().find_instrument(control.instrument);
     one.possible = declared != nullptr && declared->profile.safe.has_value();
+    one.confirmable = one.possible && !declared->profile.safe->confirm_query.empty();
     safe.push_back(std::move(one));
   }
   safe_tasks.spawn(make_all_safe());
 }
 
-/// One control after the other; one that does not answer gets a head start only, so that it cannot keep the
-/// source on. Each goes on trying beside the others until its own limit.
+/// Whatever breaks in it, it comes to its end and says what is not confirmed.
 awaitable<void> Sequencer::State::make_all_safe() {
   const auto self = shared_from_this();
   warnings.clear();
+  std::string broke;
+  try {
+    co_await try_all_safe();
+    tell_unconfirmed();
+  } catch (const std::exception& error) {
+    broke = error.what();
+  } catch (...) {
+    broke = "an exception of an unknown kind";
+  }
+  making_safe = false;
+  safe_done.notify();
+  if (!broke.empty()) tell_broken("while making the bench safe: " + broke);
+  changed();
+}
+
+/// One control after the other; one that does not answer gets a head start only, so that it cannot keep the
+/// source on. Each goes on trying beside the others until its own limit.
+awaitable<void> Sequencer::State::try_all_safe() {
   for (std::size_t place = 0; place < safe.size(); ++place) {
     if (!safe[place].possible) continue;
     safe[place].tried = false;
@@ -61,10 +79,6 @@ awaitable<void> Sequencer::State::make_all_safe() {
   }
   const auto at_work = [](const Safe& one) { return one.possible && !one.tried; };
   while (std::any_of(safe.begin(), safe.end(), at_work)) co_await one_safe.wait_until(INT64_MAX);
-  tell_unconfirmed();
-  making_safe = false;
-  safe_done.notify();
-  changed();
 }
 
 /// The instrument sends it at once, reads it back and repeats it, and only where its identity is as declared.
@@ -72,44 +86,75 @@ awaitable<void> Sequencer::State::make_one_safe(std::size_t place) {
   const auto self = shared_from_this();
   const auto control = safe[place].control;
   std::string failure;
+  auto how = recorder::SafeHow::sent;
   try {
-    if (const auto outcome = co_await bench.make_safe(control); !outcome) failure = outcome.refusal().text();
+    const auto outcome = co_await bench.make_safe(control);
+    if (outcome) {
+      how = *outcome;
+    } else {
+      failure = outcome.refusal().text();
+    }
   } catch (const std::exception& error) {
     failure = error.what();
+  } catch (...) {
+    failure = "an exception of an unknown kind";
   }
   if (place >= safe.size() || safe[place].control != control) co_return;  // a list of another safe state
-  safe[place].confirmed = failure.empty();
+  safe[place].sent = failure.empty();
+  safe[place].confirmed = failure.empty() && how == recorder::SafeHow::confirmed;
   safe[place].failure = failure;
   safe[place].tried = true;
-  if (failure.empty()) event("safe state", control, control + " is in its safe state, read back");
   one_safe.notify();
+  if (!safe[place].confirmed) co_return;
+  try {
+    event("safe state", control, control + " is in its safe state, read back");
+  } catch (const std::exception& error) {
+    tell_broken("while " + control + " was said to be safe: " + error.what());
+  }
+}
+
+/// What a person has to do about a control; empty: it is safe, read back.
+std::string Sequencer::State::warning_of(const Safe& one) {
+  if (one.confirmed) return {};
+  if (!one.possible) {
+    return "NOTHING IN ITS PROFILE MAKES " + one.control + " SAFE. Switch it off by hand, and " + kProveDead +
+           ".";
+  }
+  if (!one.open()) {
+    return "THE SAFE STATE OF " + one.control +
+           " WAS SENT AND CANNOT BE CONFIRMED: its profile has no query for it. Look at it, and " +
+           kProveDead + ".";
+  }
+  return "THE SAFE STATE OF " + one.control + " IS NOT CONFIRMED (" + one.failure +
+         "). Use the hardware emergency stop or switch it off by hand, and " + kProveDead + ".";
 }
 
 void Sequencer::State::tell_unconfirmed() {
-  bool to_wait_for = false;
+  // The watch first: it does not depend on anybody who hears of it.
+  const bool to_wait_for = std::any_of(safe.begin(), safe.end(), [](const Safe& one) { return one.open(); });
+  if (to_wait_for && !watching_for_return && !closing) {
+    watching_for_return = true;
+    tasks.spawn(watch_for_return());
+  }
   for (const auto& one : safe) {
-    if (one.confirmed) continue;
-    std::string text;
-    if (one.possible) {
-      text = "THE SAFE STATE OF " + one.control + " IS NOT CONFIRMED (" + one.failure +
-             "). Use the hardware emergency stop or switch it off by hand, and " + kProveDead + ".";
-      to_wait_for = true;
-    } else {
-      text = "NOTHING IN ITS PROFILE MAKES " + one.control + " SAFE. Switch it off by hand, and " +
-             kProveDead + ".";
-    }
-    warnings.push_back(text);
-    event("safe state not confirmed", one.control, text);
+    if (auto text = warning_of(one); !text.empty()) warnings.push_back(std::move(text));
   }
   if (safe.empty()) {
     warnings.push_back("No instrument switches this bench off. Switch it off by hand, and " +
                        std::string{kProveDead} + ".");
     event("safe state", "sequencer", warnings.back());
   }
-  if (to_wait_for && !watching_for_return && !closing) {
-    watching_for_return = true;
-    tasks.spawn(watch_for_return());
+  for (const auto& one : safe) {
+    if (const auto text = warning_of(one); !text.empty())
+      event("safe state not confirmed", one.control, text);
   }
+}
+
+/// Nothing is owed any more when no command can make the bench safer than it is.
+void Sequencer::State::settle_owed() {
+  if (run_task || making_safe) return;
+  if (std::any_of(safe.begin(), safe.end(), [](const Safe& one) { return one.open(); })) return;
+  for (const auto owed : std::exchange(owing, {})) bench.writer().post(store::SafeStateItem{owed});
 }
 
 /// An instrument that comes back after its safe state could not be confirmed gets it then.
@@ -120,24 +165,29 @@ awaitable<void> Sequencer::State::watch_for_return() {
     if (making_safe) continue;
     bool open = false;
     for (std::size_t place = 0; place < safe.size(); ++place) {
-      if (safe[place].confirmed || !safe[place].possible) continue;
+      if (!safe[place].open()) continue;
       if (!bench.may_command(safe[place].control)) {
         open = true;
         continue;
       }
       co_await make_one_safe(place);
       if (making_safe || place >= safe.size()) break;
-      if (!safe[place].confirmed) {
+      if (safe[place].open()) {
         open = true;
         continue;
       }
       const auto name = "THE SAFE STATE OF " + safe[place].control + " ";
       std::erase_if(warnings, [&name](const std::string& text) { return text.starts_with(name); });
+      if (auto text = warning_of(safe[place]); !text.empty()) {
+        warnings.push_back(text);
+        event("safe state not confirmed", safe[place].control, std::move(text));
+      }
       changed();
     }
     if (!open && !making_safe) break;
   }
   watching_for_return = false;
+  settle_owed();
 }
 
 awaitable<void> Sequencer::State::wait_for_safe_state() {
@@ -190,29 +240,34 @@ awaitable<void> Sequencer::State::finish(store::RunState end) {
   bench.end_run();
   phase = end == store::RunState::done ? RunPhase::done : RunPhase::stopped;
   run_task = false;
+  settle_owed();
   enter(StepPhase::none, "");
 }
 
-awaitable<void> Sequencer::State::after_crash(std::vector<store::RunId> interrupted) {
+awaitable<void> Sequencer::State::after_crash(std::vector<store::RunId> owed) {
   const auto self = shared_from_this();
-  if (busy()) co_return;
+  owing.insert(owing.end(), owed.begin(), owed.end());
+  if (busy()) co_return;  // the run that goes on ends in the safe state that is owed
   crash_task = true;
-  event_run = interrupted.empty() ? 0 : interrupted.back();
+  event_run = owed.empty() ? 0 : owed.back();
   phase = RunPhase::making_safe;
-  enter(StepPhase::safe_state, "makes the bench safe after a run that was interrupted");
-  event("interrupted", "sequencer",
-        "a run was interrupted; the bench is made safe now. Capacitors may be charged and the load hot: " +
-            std::string{kProveDead});
+  enter(StepPhase::safe_state, "makes the bench safe after a run that left it unsafe");
+  event(
+      "interrupted", "sequencer",
+      "a run was interrupted, or its safe state was never confirmed; the bench is made safe now. Capacitors "
+      "may be charged and the load hot: " +
+          std::string{kProveDead});
   begin_safe_state();
   co_await wait_for_safe_state();
   phase = RunPhase::idle;
   crash_task = false;
+  settle_owed();
   enter(StepPhase::none, "");
 }
 
-boost::asio::awaitable<void> Sequencer::make_safe_after_crash(std::vector<store::RunId> interrupted) {
+boost::asio::awaitable<void> Sequencer::make_safe_after_crash(std::vector<store::RunId> owed) {
   const auto state = state_;
-  co_await state->after_crash(std::move(interrupted));
+  co_await state->after_crash(std::move(owed));
 }
 
 }  // namespace loadstair::sequencer

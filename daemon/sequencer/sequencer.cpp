@@ -78,14 +78,12 @@ Sequencer::State::State(recorder::Bench& the_bench, SequencerOptions the_options
       options{std::move(the_options)},
       tasks{the_bench.executor(),
             [this](std::exception_ptr failure) {
-              event("broken", "sequencer", "the program broke a promise of its own: " + said(failure));
+              tell_broken("the program broke a promise of its own: " + said(failure));
               stop_now("the program broke a promise of its own");
             }},
       safe_tasks{the_bench.executor(),
                  [this](std::exception_ptr failure) {
-                   event("broken", "sequencer", "while making the bench safe: " + said(failure));
-                   making_safe = false;
-                   safe_done.notify();
+                   tell_broken("while making the bench safe: " + said(failure));
                  }},
       wake{the_bench.clock(), the_bench.executor()},
       one_safe{the_bench.clock(), the_bench.executor()},
@@ -112,6 +110,15 @@ void Sequencer::State::event(std::string kind, std::string source, std::string t
   changed();
 }
 
+/// Where a fault is told, a listener that throws again must not make another one of it.
+void Sequencer::State::tell_broken(const std::string& text) {
+  try {
+    event("broken", "sequencer", text);
+  } catch (...) {
+    changed();
+  }
+}
+
 void Sequencer::State::listen() {
   listeners.push_back(bench.on_reading([this](const recorder::ChannelUpdate& update) {
     for (auto& guarded : guards) {
@@ -121,7 +128,10 @@ void Sequencer::State::listen() {
     }
   }));
   listeners.push_back(bench.on_capture([this](const recorder::CaptureArrived&) { wake.notify(); }));
-  listeners.push_back(bench.on_event([this](const recorder::BenchEvent&) { changed(); }));
+  listeners.push_back(bench.on_event([this](const recorder::BenchEvent& happened) {
+    if (happened.kind == recorder::kInstrumentFailed) stop_now(happened.source + ": " + happened.text);
+    changed();
+  }));
 }
 
 void Sequencer::State::stop_listening() {
@@ -136,7 +146,7 @@ Outcome<store::RunId> Sequencer::State::start(setup::Stair new_stair) {
   }
   if (busy()) return Refusal{"", "the bench is being made safe; try again when that is done"};
   for (const auto& one : safe) {
-    if (!one.confirmed) {
+    if (one.open()) {
       return Refusal{one.control,
                      "its safe state is not confirmed yet (" + one.failure +
                          "); switch it off by hand, and connect it again: the safe state is then "
@@ -152,6 +162,8 @@ Outcome<store::RunId> Sequencer::State::start(setup::Stair new_stair) {
   auto begin = run_start_of(bench.hookup(), stair, options, clock);
   const auto offset = begin.utc_offset_ns;
   run = bench.writer().begin_run(std::move(begin));
+  event_run = run;
+  owing.push_back(run);
   bench.begin_run({run, offset});
   phase = RunPhase::running;
   step_phase = StepPhase::start;

@@ -153,8 +153,9 @@ class Sequencer {
   [[nodiscard]] boost::asio::awaitable<void> idle();
 
   /// The safe state after a crash: to every control as soon as its instrument is there and is what it should
-  /// be. `interrupted`: the runs that the record found unfinished; the events go to the last of them.
-  [[nodiscard]] boost::asio::awaitable<void> make_safe_after_crash(std::vector<store::RunId> interrupted);
+  /// be. `owed`: the runs of which the record says that it is owed (store::Record::owed_safe_states); the
+  /// events go to the last of them, and the record hears when it is owed no more, however late that is.
+  [[nodiscard]] boost::asio::awaitable<void> make_safe_after_crash(std::vector<store::RunId> owed);
 
   /// Stops the run if there is one, waits for the safe state, ends its tasks. Call it before Bench::close().
   [[nodiscard]] boost::asio::awaitable<void> close(std::string reason);

@@ -44,6 +44,7 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   [[nodiscard]] bool busy() const;
   void changed();
   void event(std::string kind, std::string source, std::string text);
+  void tell_broken(const std::string& text);
 
   // --- run.cpp
   boost::asio::awaitable<void> run_stair();
@@ -91,14 +92,16 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
 
   // --- safe_state.cpp
   void begin_safe_state();
+  boost::asio::awaitable<void> try_all_safe();
   boost::asio::awaitable<void> make_all_safe();
   boost::asio::awaitable<void> make_one_safe(std::size_t place);
   boost::asio::awaitable<void> wait_for_safe_state();
   boost::asio::awaitable<void> watch_for_return();
   boost::asio::awaitable<void> pass_time(double length_s, std::string what);
   boost::asio::awaitable<void> cool_down();
-  boost::asio::awaitable<void> after_crash(std::vector<store::RunId> interrupted);
+  boost::asio::awaitable<void> after_crash(std::vector<store::RunId> owed);
   void tell_unconfirmed();
+  void settle_owed();
   boost::asio::awaitable<void> finish(store::RunState end);
 
   // --- snapshot.cpp
@@ -156,17 +159,24 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   // safe state
   struct Safe {
     std::string control, instrument;
-    bool possible = true;  ///< its profile says how
-    bool confirmed = false;
+    bool possible = true;     ///< its profile says how
+    bool confirmable = true;  ///< its profile says how to read it back
+    bool confirmed = false;   ///< read back
+    bool sent =
+        false;  ///< written to the instrument that it belongs to; where not confirmable: all that can be
     bool tried = false;   ///< its limit has passed, or it is confirmed
     std::string failure;  ///< last one
+    /// A command can still make it safe, or show that it is.
+    [[nodiscard]] bool open() const { return possible && !confirmed && !(sent && !confirmable); }
   };
+  [[nodiscard]] static std::string warning_of(const Safe& one);
   std::vector<Safe> safe;  ///< in the order in which they are made safe
   bool making_safe = false;
   bool watching_for_return = false;
   int commanding = 0;          ///< commands of the run under way
   bool command_since = false;  ///< a command of the run was under way when the safe state began
-  store::RunId event_run = 0;  ///< to which run events of a safe state after a crash go
+  store::RunId event_run = 0;  ///< to which run events outside a run go: the one whose safe state it is about
+  std::vector<store::RunId> owing;  ///< runs of which the record says that their safe state is owed
   std::vector<std::string> warnings;
 
   // whoever looks on

@@ -77,6 +77,134 @@ TEST_CASE("after a crash: nothing is sent to a stranger") {
   CHECK_FALSE(bench.sequencer->start(fake_stair({quick_step("a", 100)})).ok());
 }
 
+std::vector<store::RunId> owed_after_restart(RunBench& bench) {
+  bench.end();
+  REQUIRE(bench.writer->close().ok());
+  bench.writer.reset();
+  const auto owed = bench.record->owed_safe_states();
+  REQUIRE(owed.ok());
+  return *owed;
+}
+
+TEST_CASE("the record owes a safe state until it is confirmed, over a restart too") {
+  RunBench bench;
+  const auto run = bench.start(fake_stair({quick_step("a", 100)}));
+  bench.run_to(StepPhase::average);
+  SECTION("a run that ended safe owes none") {
+    bench.run_to_end();
+    CHECK(owed_after_restart(bench).empty());
+  }
+  SECTION("a load that never confirmed") {
+    bench.load.vanish();
+    bench.run_for(0.1);
+    REQUIRE(bench.sequencer->stop("enough").ok());
+    bench.run_to_end();
+    SECTION("owes it") {
+      CHECK(owed_after_restart(bench) == std::vector<store::RunId>{run});
+    }
+    SECTION("and no more when it came back; what is told then is told of this run") {
+      bench.load.come_back();
+      bench.run_until([&] { return bench.now().warnings.empty(); }, 15);
+      bench.run_for(1);
+      const auto stored = bench.stored(run);
+      CHECK(std::any_of(stored.events.begin(), stored.events.end(), [](const auto& event) {
+        return event.text == "load is in its safe state, read back";
+      }));
+      CHECK(owed_after_restart(bench).empty());
+    }
+  }
+}
+
+TEST_CASE("after a crash the owed safe states are paid only when every control has confirmed") {
+  RunBench bench;
+  store::RunId crashed = 0;
+  {
+    // What a daemon leaves that died in mid-run.
+    store::RunStart start;
+    start.utc_offset_ns = kStartUtc;
+    crashed = bench.writer->begin_run(start);
+  }
+  bench.world.source_on = bench.world.load_on = true;
+  const bool comes = GENERATE(true, false);
+  if (!comes) bench.load.vanish();
+  bench.finish(bench.sequencer->make_safe_after_crash({crashed}));
+  CHECK_FALSE(bench.world.source_on);
+  CHECK(bench.world.load_on == !comes);
+  CHECK(owed_after_restart(bench) == (comes ? std::vector<store::RunId>{} : std::vector{crashed}));
+}
+
+TEST_CASE("a safe state that its instrument cannot confirm: sent, one warning, and the next run may start") {
+  auto hookup = fake_hookup(false);
+  hookup.instruments[2].profile.safe = instrument::ProfileSafe{{"INP OFF"}, "", ""};
+  RunBench bench{hookup};
+  bench.start(fake_stair({quick_step("a", 100)}));
+  bench.run_to_end();
+  CHECK(bench.off());
+  REQUIRE(bench.now().warnings.size() == 1);
+  CHECK_THAT(bench.now().warnings[0],
+             Catch::Contains("THE SAFE STATE OF load WAS SENT AND CANNOT BE CONFIRMED"));
+  const auto sent = bench.load.count("INP OFF");
+  bench.run_for(5);
+  CHECK(bench.load.count("INP OFF") == sent);
+  const auto events = bench.events();
+  CHECK(std::count_if(events.begin(), events.end(),
+                      [](const auto& event) { return event.kind == "safe state not confirmed"; }) == 1);
+  bench.start(fake_stair({quick_step("a", 100)}));
+  bench.run_to_end();
+  CHECK(owed_after_restart(bench).empty());
+}
+
+TEST_CASE("a control that no command makes safe is told, and keeps no run from starting") {
+  auto hookup = fake_hookup(false);
+  hookup.instruments[2].profile.safe.reset();
+  RunBench bench{hookup};
+  bench.start(fake_stair({quick_step("a", 100)}));
+  bench.run_to_end();
+  REQUIRE(bench.now().warnings.size() == 1);
+  CHECK_THAT(bench.now().warnings[0], Catch::Contains("NOTHING IN ITS PROFILE MAKES load SAFE"));
+  bench.start(fake_stair({quick_step("a", 100)}));
+  bench.run_to_end();
+  CHECK(owed_after_restart(bench).empty());
+}
+
+TEST_CASE("a fault while one control is made safe: the others go on, and what is not confirmed is told") {
+  RunBench bench;
+  bench.bench->on_event([](const recorder::BenchEvent& event) {
+    if (event.kind == "safe state") throw std::logic_error{"a promise was broken"};
+  });
+  bench.start(fake_stair({quick_step("a", 100)}));
+  bench.run_to(StepPhase::average);
+  bench.source.fault = FakeInstrument::Fault::silent;
+  REQUIRE(bench.sequencer->stop("enough").ok());
+  bench.run_for(1.0);
+  CHECK(bench.off());
+  CHECK(bench.sequencer->busy());  // the source has not confirmed and is still asked
+  bench.run_to_end();
+  REQUIRE(bench.now().warnings.size() == 1);
+  CHECK_THAT(bench.now().warnings[0], Catch::Contains("THE SAFE STATE OF source IS NOT CONFIRMED"));
+  CHECK(bench.has_event("safe state not confirmed"));
+  CHECK(bench.has_event("broken"));
+}
+
+TEST_CASE("a fault in a control's poll loop stops the run, and the control is made safe all the same") {
+  RunBench bench;
+  bool thrown = false;
+  bench.bench->on_event([&](const recorder::BenchEvent& event) {
+    if (event.kind != "command sent" || event.text != "SET 200" || thrown) return;
+    thrown = true;
+    throw std::logic_error{"a promise was broken"};
+  });
+  const auto run = bench.start(fake_stair({quick_step("a", 100), quick_step("b", 200)}));
+  bench.run_until([&] { return bench.world.load_on; });
+  bench.run_to_end();
+  CHECK(thrown);
+  CHECK(bench.off());
+  CHECK(bench.now().warnings.empty());
+  CHECK(bench.now().phase == RunPhase::stopped);
+  CHECK_THAT(bench.now().reason, Catch::Contains("load: a fault of the program ended its poll loop"));
+  CHECK(bench.stored(run).summary.state == store::RunState::stopped);
+}
+
 TEST_CASE("closing stops the run, makes it safe, and says when a discharge was cut short") {
   RunBench bench;
   auto stair = fake_stair({quick_step("a", 100)});

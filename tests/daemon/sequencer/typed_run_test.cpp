@@ -1,5 +1,4 @@
-// Typed channels: two rounds, the second in reverse order; implausible values; corrections. (Issue 2,
-// point 3.)
+// Typed channels: two rounds, the second in reverse order; implausible values; corrections.
 #include <catch2/catch.hpp>
 
 #include "daemon/sequencer/run_bench.h"
