@@ -135,7 +135,8 @@ void add_remarks(WaveformResult& result, const std::vector<Prepared>& prepared, 
     const std::string channel = "channel " + result.channels[c].name + ": ";
     if (prepared[c].clipped > 0) {
       result.remarks.push_back(channel + count_text(prepared[c].clipped) +
-                               " samples clipped; peak, crest factor and RMS are lower bounds");
+                               " samples clipped; peak, crest factor and RMS are lower bounds, "
+                               "and harmonics, distortion and powers are not to be used");
     }
     if (prepared[c].blank > 0) {
       result.remarks.push_back(channel + count_text(prepared[c].blank) +

@@ -9,8 +9,8 @@ namespace {
 
 using Json = nlohmann::ordered_json;
 
-/// Nothing is declared of a file's scope and probes, so no figure of it has an interval (docs/methods.md, section
-/// 3).
+/// Nothing is declared of a file's scope and probes, so no figure of it has an interval (docs/methods.md,
+/// section 3).
 constexpr const char* kNotKnown = "uncertainty not known";
 
 Json refused(const std::string& why) {

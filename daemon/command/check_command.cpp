@@ -64,6 +64,13 @@ Answers ask_instruments(const setup::Hookup& hookup) {
         co_await time.sleep_for(std::chrono::milliseconds{50});
       found.instruments = service::to_json(asked.instruments());
       found.channels = service::to_json(asked.channels());
+      // The last thing that was heard of an instrument that is not there says why.
+      for (const auto& event : asked.recent_events()) {
+        for (auto& instrument : found.instruments) {
+          if (instrument["name"] == event.source && !instrument["ready"].get<bool>())
+            instrument["problem"] = event.text;
+        }
+      }
       co_await asked.close();
     }(bench, *clock, answers));
     io.run();
@@ -101,7 +108,9 @@ void print_answers(const Answers& answers) {
     const std::string identity = instrument["identity"];
     std::cout << "  " << instrument["name"].get<std::string>() << " ("
               << instrument["link"].get<std::string>() << "): " << state
-              << (identity.empty() ? "" : ", says \"" + identity + "\"") << "\n";
+              << (identity.empty() ? "" : ", says \"" + identity + "\"")
+              << (instrument.contains("problem") ? ": " + instrument["problem"].get<std::string>() : "")
+              << "\n";
   }
   std::cout << "\nChannels\n";
   for (const auto& channel : answers.channels) {

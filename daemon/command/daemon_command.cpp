@@ -136,7 +136,8 @@ class Daemon {
     asio::signal_set signals{io_, SIGINT, SIGTERM, SIGHUP};
     if (!interrupted_.empty()) spdlog::warn("run {} was interrupted", interrupted_.back());
     if (!owed_.empty()) {
-      spdlog::warn("the safe state after run {} was never confirmed; the bench is made safe now", owed_.back());
+      spdlog::warn("the safe state after run {} was never confirmed; the bench is made safe now",
+                   owed_.back());
       tasks_.spawn(sequencer_.make_safe_after_crash(owed_));
     }
     if (const auto published = service::publish(address_); !published) {

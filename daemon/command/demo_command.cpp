@@ -95,6 +95,24 @@ class RehearsedPerson : public Person {
   std::string scope_;
 };
 
+/// Removed again, whatever happens.
+struct TemporaryFolder {
+  fs::path path;
+  ~TemporaryFolder() {
+    std::error_code ignored;
+    fs::remove_all(path, ignored);
+  }
+};
+
+void make_folder(const fs::path& path) {
+  std::error_code error;
+  fs::create_directories(path, error);
+  if (error) {
+    throw UserError{path.string() + ": the folder cannot be made (" + error.message() +
+                    "); name another one with --out"};
+  }
+}
+
 void write_file(const fs::path& path, std::string_view text) {
   std::ofstream out{path, std::ios::binary};
   out.write(text.data(), static_cast<std::streamsize>(text.size()));
@@ -145,7 +163,12 @@ void write_truth(const std::string& control, const store::Record& record, std::i
 
 int run_demo(const DemoOptions& options) {
   const fs::path out = options.out;
-  fs::create_directories(out / "captures");
+  make_folder(out / "captures");
+  const std::string record_file = (out / "record.db").string();
+  if (running_daemon(record_file)) {
+    throw UserError{record_file +
+                    ": a daemon owns this record; let it end first, or name another folder with --out"};
+  }
   const std::string hookup_file = file_or_sample(options.hookup, "north_bench.hookup.json", out);
   const std::string stair_file = file_or_sample(options.stair, "marten.stair.json", out);
   const auto hookup = take(setup::load_hookup(hookup_file));
@@ -154,15 +177,14 @@ int run_demo(const DemoOptions& options) {
   catch_interrupts();
 
   // Sockets have short names, so the simulated bench lives in the runtime folder.
-  const fs::path bench =
-      fs::path{take(service::runtime_folder())} / ("bench-" + base::print_integer(getpid()));
-  const std::string record_file = (out / "record.db").string();
-  ChildProcess rehearsal{{"rehearse", hookup_file, "--folder", bench.string(), "--captures",
+  const TemporaryFolder bench{fs::path{take(service::runtime_folder())} /
+                              ("bench-" + base::print_integer(getpid()))};
+  ChildProcess rehearsal{{"rehearse", hookup_file, "--folder", bench.path.string(), "--captures",
                           (out / "captures").string(), "--log", (out / "rehearsal.log").string(), "--seed",
                           base::print_integer(static_cast<std::int64_t>(options.seed))},
                          (out / "rehearse.log").string()};
-  wait_for_file(bench / "hookup.json", rehearsal, out / "rehearse.log");
-  ChildProcess daemon_process{{"daemon", "--hookup", (bench / "hookup.json").string(), "--record",
+  wait_for_file(bench.path / "hookup.json", rehearsal, out / "rehearse.log");
+  ChildProcess daemon_process{{"daemon", "--hookup", (bench.path / "hookup.json").string(), "--record",
                                record_file, "--log", (out / "daemon.log").string()},
                               (out / "daemon.log").string()};
   const DaemonClient daemon = wait_for_daemon(record_file, daemon_process, out / "daemon.log");
@@ -177,22 +199,19 @@ int run_demo(const DemoOptions& options) {
   const auto started = daemon.post("runs", {{"stair", stair.text}, {"file", stair_file}});
   if (!started) throw UserError{started.refusal()};
   const auto run = (*started)["run"].get<std::int64_t>();
-  RehearsedPerson person{(bench / "control").string(), hookup, stair};
+  RehearsedPerson person{(bench.path / "control").string(), hookup, stair};
   const RunOutcome outcome = follow_run(daemon, run, person);
-  const auto result = daemon.get("runs/" + base::print_integer(run));
-  if (!result) throw std::runtime_error{result.refusal().text()};
-
-  daemon_process.end();
+  const json result = final_result(daemon, run);
   {
+    // Read while the daemon is there: its clean stop then leaves the record alone and whole.
     const auto record = take(store::Record::open(record_file, store::Mode::read));
-    write_truth((bench / "control").string(), record, run, out / "truth.json");
+    write_truth((bench.path / "control").string(), record, run, out / "truth.json");
   }
+  daemon_process.end();
   rehearsal.end();
-  std::error_code ignored;
-  fs::remove_all(bench, ignored);
 
   std::cout << "\n"
-            << result_table(*result) << "\nRecord: " << record_file
+            << result_table(result) << "\nRecord: " << record_file
             << "\nCaptures: " << (out / "captures").string()
             << "\nWhat was true on the simulated bench: " << (out / "truth.json").string()
             << " (no result is computed from it)\nAgain: loadstair show " << run << " --record "

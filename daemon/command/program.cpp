@@ -26,9 +26,16 @@ void add(CLI::App& app, int& status, const char* name, const char* does, const c
   command->callback([&status, options, run] { status = run(*options); });
 }
 
+/// A seed is a whole number from 0 that fits; CLI11 alone would wrap a negative one around.
+std::string seed_problem(const std::string& text) {
+  const bool digits = !text.empty() && text.find_first_not_of("0123456789") == std::string::npos;
+  return digits && text.size() <= 18 ? "" : "a seed is a whole number from 0 with at most 18 digits";
+}
+
 void declare_demo(CLI::App& command, DemoOptions& options) {
   command.add_option("--out", options.out, "folder for record, captures and truth")->capture_default_str();
   command.add_option("--seed", options.seed, "which simulated bench: fixes every error that is drawn")
+      ->check(seed_problem)
       ->capture_default_str();
   command.add_flag("--headless", options.headless, "plain lines, nothing that waits for a person");
   command.add_option("--hookup", options.hookup,
@@ -94,7 +101,7 @@ void declare_all(CLI::App& app, int& status) {
         command.add_option("--captures", options.captures, "where the simulated scope drops files");
         command.add_option("--faults", options.faults, "file with a fault script");
         command.add_option("--log", options.log, "log of every reply with its query");
-        command.add_option("--seed", options.seed, "which bench")->capture_default_str();
+        command.add_option("--seed", options.seed, "which bench")->check(seed_problem)->capture_default_str();
         command.add_option("--visit", options.visit, "which visit to that bench")->capture_default_str();
       });
   const auto declare_record = [](CLI::App& command, ShowOptions& options) {

@@ -1,3 +1,6 @@
+#include <fcntl.h>
+#include <sys/file.h>
+
 #include <boost/asio/as_tuple.hpp>
 #include <boost/asio/io_context.hpp>
 #include <boost/asio/signal_set.hpp>
@@ -76,6 +79,10 @@ int run_rehearsal(const RehearseOptions& options) {
   RehearsalChoice choice;
   fs::create_directories(options.folder);
   choice.folder = fs::canonical(options.folder).string();
+  const int lock = open((choice.folder + "/lock").c_str(), O_RDWR | O_CREAT | O_CLOEXEC, 0600);
+  if (lock < 0 || flock(lock, LOCK_EX | LOCK_NB) != 0) {
+    throw UserError{choice.folder + ": another rehearsal uses this folder; name another one with --folder"};
+  }
   choice.captures = options.captures.empty() ? choice.folder + "/scope" : options.captures;
   fs::create_directories(choice.captures);
   choice.captures = fs::canonical(choice.captures).string();

@@ -68,21 +68,24 @@ std::string temperature_text(const json& step) {
 }
 
 std::string settled_text(const json& settled) {
-  if (settled["by"] == "no criterion") return "not asked for";
+  const std::string by = settled["by"];
+  if (by.empty()) return "-";
+  if (by == "no criterion") return "not asked for";
   if (!settled["settled"].get<bool>()) return "NO";
-  std::string text = "by " + settled["by"].get<std::string>();
+  std::string text = "yes, by " + by;
   if (settled["after_s"].is_number())
-    text += ", " + base::print_fixed(settled["after_s"].get<double>(), 1) + " s";
+    text += " (" + base::print_fixed(settled["after_s"].get<double>(), 1) + " s)";
   return text;
 }
 
-Row step_row(const json& step) {
+Row power_row(const json& step) {
+  return {step["label"].get<std::string>(),         base::print_significant(step["load_w"].get<double>(), 4),
+          estimate_text(step["input_power"]),       estimate_text(step["output_power"]),
+          estimate_text(step["efficiency"], 100.0), estimate_text(step["loss"])};
+}
+
+Row quality_row(const json& step) {
   return {step["label"].get<std::string>(),
-          base::print_significant(step["load_w"].get<double>(), 4),
-          estimate_text(step["input_power"]),
-          estimate_text(step["output_power"]),
-          estimate_text(step["efficiency"], 100.0),
-          estimate_text(step["loss"]),
           indicated_or_dash(step["power_factor"], 1.0),
           indicated_or_dash(step["thd_voltage"], 100.0),
           indicated_or_dash(step["crest_factor"], 1.0),
@@ -90,22 +93,57 @@ Row step_row(const json& step) {
           settled_text(step["settled"])};
 }
 
+/// Notes with the steps they belong to: one that several steps share is said once.
+class Notes {
+ public:
+  void add(const std::string& step, const std::string& note) {
+    for (auto& [text, steps] : notes_) {
+      if (text != note) continue;
+      if (steps.back() != step) steps.push_back(step);
+      return;
+    }
+    notes_.push_back({note, {step}});
+  }
+
+  [[nodiscard]] std::string text(std::size_t all_steps) const {
+    std::string text;
+    for (const auto& [note, steps] : notes_) {
+      std::string where = "all steps";
+      if (steps.size() < all_steps || all_steps == 1) {
+        where.clear();
+        for (const auto& step : steps) where += (where.empty() ? "" : ", ") + step;
+      }
+      text += "  " + where + ": " + note + "\n";
+    }
+    return text;
+  }
+
+ private:
+  std::vector<std::pair<std::string, std::vector<std::string>>> notes_;
+};
+
 /// Why a step has no efficiency, and what is remarkable about it.
-std::string step_notes(const json& step) {
-  std::string text;
-  const std::string label = step["label"].get<std::string>() + ": ";
+void note_step(const json& step, Notes& notes) {
+  const std::string label = step["label"];
   if (!step["efficiency"]["value"].is_number()) {
-    text += "  " + label + step["efficiency"].value("why", std::string{"no efficiency"}) + "\n";
+    notes.add(label, "no efficiency: " + step["efficiency"].value("why", std::string{"no reason known"}));
   }
-  for (const auto& remark : step["remarks"]) text += "  " + label + remark.get<std::string>() + "\n";
-  if (!step["budget"].empty()) {
-    const auto& largest = step["budget"].front();
-    text += "  " + label + "largest share of the variance: " + largest["source"].get<std::string>() + ", " +
-            base::print_fixed(largest["share"].get<double>() * 100.0, 0) + " %";
-    const std::string action = largest["action"];
-    text += (action.empty() ? "" : "; " + action) + "\n";
-  }
-  return text;
+  for (const auto& remark : step["remarks"]) notes.add(label, remark);
+  if (step["budget"].empty()) return;
+  const auto& largest = step["budget"].front();
+  const std::string action = largest["action"];
+  notes.add(label, "most of the uncertainty: " + largest["source"].get<std::string>() + ", " +
+                       base::print_fixed(largest["share"].get<double>() * 100.0, 0) + " % of the variance" +
+                       (action.empty() ? "" : "; " + action));
+}
+
+std::string weighted_text(const json& figure) {
+  const std::string title = figure["title"];
+  const auto& efficiency = figure["efficiency"];
+  if (efficiency["value"].is_number()) return "  " + title + ": " + estimate_text(efficiency, 100.0) + " %\n";
+  std::string why = efficiency.value("why", std::string{});
+  if (why.starts_with(title + ": ")) why.erase(0, title.size() + 2);
+  return "  " + title + ": none, " + why + "\n";
 }
 
 }  // namespace
@@ -132,25 +170,22 @@ std::string result_table(const json& result) {
                      prototype["unit"].get<std::string>() + ", run " +
                      base::print_integer(result["run"].get<std::int64_t>()) + ", " +
                      result["state"].get<std::string>() + ". Intervals: 95 %.\n\n";
-  std::vector<Row> rows = {{"step", "load W", "input W", "output W", "efficiency %", "loss W", "PF", "THD %",
-                            "crest", "end temperature \u00b0C", "settled"}};
-  for (const auto& step : result["steps"]) rows.push_back(step_row(step));
-  const std::string table = table_of(rows);
+  std::vector<Row> powers = {{"step", "load W", "input W", "output W", "efficiency %", "loss W"}};
+  std::vector<Row> qualities = {{"step", "PF", "THD %", "crest", "end temperature \u00b0C", "settled"}};
+  Notes notes;
+  for (const auto& step : result["steps"]) {
+    powers.push_back(power_row(step));
+    qualities.push_back(quality_row(step));
+    note_step(step, notes);
+  }
+  const std::string table = table_of(powers) + "\n" + table_of(qualities);
   text += table;
   if (table.find("(?)") != std::string::npos) text += "\n(?): indicated, uncertainty not known\n";
-  std::string weighted;
-  for (const auto& figure : result["weighted"]) {
-    const auto& efficiency = figure["efficiency"];
-    weighted += "  " + figure["title"].get<std::string>() + ": " +
-                (efficiency["value"].is_number() ? estimate_text(efficiency, 100.0) + " %"
-                                                 : "none, " + efficiency.value("why", std::string{})) +
-                "\n";
-  }
-  if (!weighted.empty()) text += "\nWeighted, conversion only (tracking is not included)\n" + weighted;
-  std::string notes;
-  for (const auto& step : result["steps"]) notes += step_notes(step);
-  for (const auto& remark : result["remarks"]) notes += "  " + remark.get<std::string>() + "\n";
-  if (!notes.empty()) text += "\nNotes\n" + notes;
+  if (!result["weighted"].empty()) text += "\nWeighted, conversion only (tracking is not included)\n";
+  for (const auto& figure : result["weighted"]) text += weighted_text(figure);
+  std::string remarks = notes.text(result["steps"].size());
+  for (const auto& remark : result["remarks"]) remarks += "  " + remark.get<std::string>() + "\n";
+  if (!remarks.empty()) text += "\nNotes\n" + remarks;
   return text;
 }
 

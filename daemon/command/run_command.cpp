@@ -33,9 +33,8 @@ int run_stair(const RunOptions& options) {
     }
     throw;
   }
-  const auto result = daemon->get("runs/" + std::to_string(run));
-  if (!result) throw std::runtime_error{result.refusal().text()};
-  std::cout << (options.json ? result->dump(2) + "\n" : result_table(*result));
+  const auto result = final_result(*daemon, run);
+  std::cout << (options.json ? result.dump(2) + "\n" : result_table(result));
   for (const auto& warning : outcome.warnings) std::cerr << warning << "\n";
   if (!outcome.done) std::cerr << "The run did not reach its end: " << outcome.reason << "\n";
   return outcome.done && outcome.warnings.empty() ? kGood : kSaysNo;

@@ -2,6 +2,7 @@
 
 #include <poll.h>
 
+#include <cctype>
 #include <cmath>
 #include <iostream>
 #include <memory>
@@ -33,7 +34,10 @@ class TerminalPerson : public Person {
     const json& prompt = run["prompt"];
     const auto id = prompt["id"].get<std::int64_t>();
     const std::string kind = prompt["kind"];
-    if (id != shown_ || kind != shown_kind_) show(prompt);
+    if (id != shown_ || kind != shown_kind_) {
+      input_.discard();
+      show(prompt);
+    }
     shown_ = id;
     shown_kind_ = kind;
     if (input_.ended()) {
@@ -91,12 +95,13 @@ class TerminalPerson : public Person {
                 << "\nType yes and Enter to keep it, or the value again.\n> " << std::flush;
       return;
     }
-    std::cout << "Round " << prompt["round"].get<int>() << " of " << prompt["rounds"].get<int>()
-              << ". Type the value as it stands on the display, then range and weight of the last digit, in "
-              << prompt["unit"].get<std::string>() << " (ranges: " << range_words(prompt)
-              << "), for example: 385.1 600 0.1\nOr: skip and a reason; fix, then the value, to correct the "
-                 "one before.\n> "
-              << std::flush;
+    std::cout
+        << "Reading " << prompt["round"].get<int>() << " of " << prompt["rounds"].get<int>()
+        << ". Type the value as it stands on the display, then range and weight of the last digit, in "
+        << prompt["unit"].get<std::string>() << " (ranges: " << range_words(prompt)
+        << "), for example: 385.1 V 600 0.1\nOr: skip and a reason; fix, then the value, to correct the "
+           "one before.\n> "
+        << std::flush;
   }
 
   static base::Outcome<json> answer_hand(const DaemonClient& daemon, std::int64_t id,
@@ -137,8 +142,15 @@ class TerminalPerson : public Person {
       words.erase(words.begin());
     }
     if (words.empty()) return base::Refusal{"", "type the value as it stands on the display"};
+    // The unit may stand after the value; what follows are range and last digit, in the same unit.
+    std::string unit = prompt["unit"];
+    if (words.size() > 1 && std::isalpha(static_cast<unsigned char>(words[1].front())) != 0) {
+      unit = words[1];
+      words.erase(words.begin() + 1);
+    }
+    if (words.size() > 3) return base::Refusal{"", "type value, unit, range and last digit, and no more"};
     words.resize(3);
-    last_ = {{"prompt", id},           {"value", words[0]},  {"unit", prompt["unit"]}, {"range", words[1]},
+    last_ = {{"prompt", id},           {"value", words[0]},  {"unit", unit},    {"range", words[1]},
              {"last_digit", words[2]}, {"confirmed", false}, {"by", "terminal"}};
     return daemon.post("prompt/typed", last_);
   }
@@ -152,7 +164,7 @@ class TerminalPerson : public Person {
 
 std::string where(const json& run) {
   const int step = run["step"].get<int>();
-  if (step < 0) return run["phase"].get<std::string>();
+  if (step < 0 || run["step_phase"] == "none") return "Run " + run["phase"].get<std::string>();
   return "Step " + base::print_integer(step + 1) + " of " + base::print_integer(run["steps"].get<int>()) +
          " (" + run["label"].get<std::string>() + "), " + run["step_phase"].get<std::string>();
 }
@@ -165,16 +177,30 @@ class Teller {
       say(trip["at"].get<std::string>() + " guard " + trip["guard"].get<std::string>() + ": " +
           trip["text"].get<std::string>());
     for (const auto& warning : run["warnings"]) say(bold("WARNING ") + warning.get<std::string>());
+    for (const auto& event : run["events"]) {
+      if (worth_keeping(event["kind"]))
+        say(event["source"].get<std::string>() + ": " + event["text"].get<std::string>());
+    }
+    // The time first: at the end of a long line it would be cut.
     std::string moving = run["waits_for"];
     if (run["remaining_s"].is_number()) {
       const double left_s = run["remaining_s"];
-      moving += (moving.empty() ? "still " : ", still ") + base::print_fixed(std::ceil(left_s), 0) + " s";
+      moving =
+          "still " + base::print_fixed(std::ceil(left_s), 0) + " s" + (moving.empty() ? "" : ", ") + moving;
     }
     progress_.show(where(run), moving);
   }
   void finish_line() { progress_.finish_line(); }
 
  private:
+  /// What stays on the screen: whatever a person must have seen, above all whether the bench is safe.
+  static bool worth_keeping(const json& kind) {
+    static const std::set<std::string> kinds = {
+        "safe state", "discharge", "not settled",    "capture missing", "command_refused",
+        "hold",       "lost",      "identity_wrong", "record",          "broken"};
+    return kinds.contains(kind.get<std::string>());
+  }
+
   void say(const std::string& text) {
     if (!said_.insert(text).second) return;
     progress_.finish_line();
@@ -193,6 +219,15 @@ bool has_ended(const json& run, std::int64_t number) {
 
 }  // namespace
 
+json final_result(const DaemonClient& daemon, std::int64_t run) {
+  for (int look = 0;; ++look) {
+    auto result = daemon.get("runs/" + base::print_integer(run));
+    if (!result) throw std::runtime_error{result.refusal().text()};
+    if ((*result)["state"] != "running" || look == kPatience) return *std::move(result);
+    poll(nullptr, 0, kLookMs);
+  }
+}
+
 std::unique_ptr<Person> person_at_terminal() {
   return std::make_unique<TerminalPerson>();
 }
@@ -205,7 +240,12 @@ RunOutcome follow_run(const DaemonClient& daemon, std::int64_t number, Person& p
   for (;;) {
     const auto state = daemon.get("state");
     if (!state) {
-      if (++without_answer > kPatience) throw std::runtime_error{state.refusal().text()};
+      if (++without_answer > kPatience) {
+        throw std::runtime_error{
+            state.refusal().text() +
+            " The bench may still be on: start the daemon again, which makes it safe, or use the "
+            "emergency stop."};
+      }
       poll(nullptr, 0, kLookMs);
       continue;
     }

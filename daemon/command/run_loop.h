@@ -1,7 +1,7 @@
 // Follows a run through the daemon until it ends: progress, prompts, Ctrl-C.
 #pragma once
 
-#include <functional>
+#include <memory>
 #include <nlohmann/json.hpp>
 
 #include "daemon/command/daemon_client.h"
@@ -33,5 +33,9 @@ struct RunOutcome {
 /// Returns when the run has ended and the bench is in its safe state. An interrupt (terminal.h) stops the
 /// run. Throws std::runtime_error when the daemon is lost.
 [[nodiscard]] RunOutcome follow_run(const DaemonClient& daemon, std::int64_t run, Person& person);
+
+/// Results of a run that has ended; waits a moment until its end is in the record.
+/// Throws std::runtime_error when there are none.
+[[nodiscard]] nlohmann::json final_result(const DaemonClient& daemon, std::int64_t run);
 
 }  // namespace loadstair::command

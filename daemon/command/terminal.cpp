@@ -2,12 +2,14 @@
 
 #include <poll.h>
 #include <sys/ioctl.h>
+#include <termios.h>
 #include <unistd.h>
 
 #include <array>
 #include <csignal>
 #include <cstdlib>
 #include <iostream>
+#include <string_view>
 
 namespace loadstair::command {
 namespace {
@@ -18,6 +20,11 @@ std::size_t width_of_terminal() {
   winsize size{};
   if (ioctl(STDOUT_FILENO, TIOCGWINSZ, &size) == 0 && size.ws_col > 20) return size.ws_col;
   return 80;
+}
+
+bool lines_can_be_written_over() {
+  const char* kind = std::getenv("TERM");
+  return output_is_terminal() && (kind == nullptr || std::string_view{kind} != "dumb");
 }
 
 /// The first `width` characters of UTF-8 text.
@@ -45,7 +52,7 @@ std::string bold(const std::string& text) {
 }
 
 void Progress::show(const std::string& fixed, const std::string& moving) {
-  if (output_is_terminal()) {
+  if (lines_can_be_written_over()) {
     std::cout << "\r\033[K" << clipped(fixed + (moving.empty() ? "" : ", " + moving), width_of_terminal() - 1)
               << std::flush;
     open_ = true;
@@ -59,6 +66,12 @@ void Progress::show(const std::string& fixed, const std::string& moving) {
 void Progress::finish_line() {
   if (open_) std::cout << "\r\033[K" << std::flush;
   open_ = false;
+}
+
+void LineInput::discard() {
+  if (!input_is_terminal()) return;
+  tcflush(STDIN_FILENO, TCIFLUSH);
+  pending_.clear();
 }
 
 std::optional<std::string> LineInput::next(int limit_ms) {

@@ -12,8 +12,8 @@ namespace loadstair::command {
 /// Emphasis on a terminal, plain text in a pipe or with NO_COLOR set.
 [[nodiscard]] std::string bold(const std::string& text);
 
-/// Progress: on a terminal one line that is written over; in a pipe a line whenever the text without its
-/// countdown changes.
+/// Progress: on a terminal (unless TERM is dumb) one line that is written over; in a pipe a line whenever the
+/// text without its countdown changes.
 class Progress {
  public:
   /// fixed: what is going on; moving: the part that changes all the time ("still 4 s").
@@ -32,6 +32,8 @@ class LineInput {
  public:
   [[nodiscard]] std::optional<std::string> next(int limit_ms);
   [[nodiscard]] bool ended() const { return ended_; }
+  /// Throws away what was typed before a question was asked (at a terminal only: a pipe's lines were meant).
+  void discard();
 
  private:
   std::string pending_;

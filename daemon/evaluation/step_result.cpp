@@ -1,6 +1,7 @@
 #include "daemon/evaluation/step_result.h"
 
 #include <algorithm>
+#include <cmath>
 #include <utility>
 
 #include "analysis/base/number.h"
@@ -91,6 +92,16 @@ PortResult port_result(const setup::Port& declared, const efficiency::PortPower&
   return out;
 }
 
+/// A lamp bank that nobody switched, a load in another mode: the step is not the one that its label says.
+/// The tenth is common practice, no source.
+void remark_load(StepResult& result) {
+  if (!result.output_power.known || !(result.load_w > 0.0)) return;
+  if (std::abs(result.output_power.value - result.load_w) <= 0.1 * result.load_w) return;
+  result.remarks.push_back("the output power is " + base::print_significant(result.output_power.value, 3) +
+                           " W and the step says " + base::print_significant(result.load_w, 3) +
+                           " W: was the load switched as it should be?");
+}
+
 void fill_powers(StepOutcome& out, const StepValues& values) {
   StepResult& result = out.result;
   const std::string unknown = unknown_of(values);
@@ -110,6 +121,7 @@ void fill_powers(StepOutcome& out, const StepValues& values) {
         port_result(values.hookup->ports[i], real.ports.ports[i], plain.ports.ports[i], unknown));
   }
   result.remarks.insert(result.remarks.end(), totals.remarks.begin(), totals.remarks.end());
+  remark_load(result);
   out.powers = totals;
 }
 

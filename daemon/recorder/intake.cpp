@@ -235,17 +235,14 @@ void Bench::State::take_capture(std::string instrument, std::string file_name, s
           return;
         }
         if (item.run == 0 || item.run != self->run.run) {
-          self->tell(
-              self->clock.now_ns(), "capture left out", item.instrument,
-              item.file_name + " came while no run was going on; add it to a step with loadstair capture",
-              std::nullopt);
+          self->tell(self->clock.now_ns(), "capture left out", item.instrument,
+                     item.file_name + " came while no run was going on", std::nullopt);
           return;
         }
         if (!self->digests.insert(work->digest).second) return;  // the same file again
         if (!work->unbound.empty()) {
           self->tell(self->clock.now_ns(), "capture of no step", item.instrument,
-                     item.file_name + " " + work->unbound +
-                         ", so it is kept and used for no step; add it to one with loadstair capture",
+                     item.file_name + " " + work->unbound + ", so it is kept and used for no step",
                      std::nullopt);
         }
         const CaptureArrived arrived{item.instrument, item.file_name, item.step, work->samples,

@@ -324,8 +324,7 @@ awaitable<Go> Sequencer::State::capture(const setup::Step& plan) {
   const auto go = co_await wait_for(came, deadline);
   if (go == Go::on && bench.captures_of_step(step_index) == had) {
     event("capture missing", plan.label,
-          "no capture came within " + brief(options.capture_limit_s) +
-              " s; the step has none. One can be added later from its file.");
+          "no capture came within " + brief(options.capture_limit_s) + " s; the step has none");
   }
   co_return go;
 }

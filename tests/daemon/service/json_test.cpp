@@ -81,10 +81,11 @@ TEST_CASE("a table shows every step, also those without results, and never a NaN
   step.label = "100 %";
   step.efficiency = refused("apparent power only");
   step.settled.settled = false;
+  step.settled.by = "not settled";
   result.steps.push_back(step);
   const std::string text = command::result_table(service::to_json(result));
   CHECK(text.find("96.74 \u00b10.15") != std::string::npos);
-  CHECK(text.find("100 %: apparent power only") != std::string::npos);
+  CHECK(text.find("100 %: no efficiency: apparent power only") != std::string::npos);
   CHECK(text.find("by rate") != std::string::npos);
   CHECK(text.find("NO") != std::string::npos);
   CHECK(text.find("nan") == std::string::npos);
