@@ -197,7 +197,7 @@ class Teller {
   static bool worth_keeping(const json& kind) {
     static const std::set<std::string> kinds = {
         "safe state", "discharge", "not settled",    "capture missing", "command_refused",
-        "hold",       "lost",      "identity_wrong", "record",          "broken"};
+        "hold",       "lost",      "identity wrong", "command refused", "record",          "broken"};
     return kinds.contains(kind.get<std::string>());
   }
 
