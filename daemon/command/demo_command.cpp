@@ -55,9 +55,10 @@ class RehearsedPerson : public Person {
                                                       {"last_digit", digit},
                                                       {"confirmed", prompt["kind"] == "confirm"},
                                                       {"by", "rehearsal"}});
-    std::cout << "  typed " << prompt["channel"].get<std::string>() << ", round "
-              << prompt["round"].get<int>() << ": " << value << " " << unit
-              << (entered ? "" : " (" + entered.refusal().text() + ")") << std::endl;
+    std::cout << "  " << run["label"].get<std::string>() << ": " << prompt["channel"].get<std::string>()
+              << " reads " << value << " " << unit << ", reading " << prompt["round"].get<int>() << " of "
+              << prompt["rounds"].get<int>() << (entered ? "" : " (" + entered.refusal().text() + ")")
+              << std::endl;
   }
 
   /// Nobody is there to look after a hold, so a rehearsed run ends instead.
