@@ -59,7 +59,7 @@ def main():
     checked = subprocess.run([program, "check", "stoat.hookup.json", "stoat.stair.json", "--offline"], cwd=samples,
                              capture_output=True, text=True, timeout=60)
     print(checked.stdout)
-    assert "2 W" in checked.stdout and "240 W" in checked.stdout, checked.stdout
+    assert "5 milliohm" in checked.stdout and "2.00 W of 240 W" in checked.stdout, checked.stdout
     marten = subprocess.run([program, "check", "north_bench.hookup.json", "marten.stair.json", "--offline"], cwd=samples,
                             capture_output=True, text=True, timeout=60)
     print(marten.stdout)

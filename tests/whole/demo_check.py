@@ -44,9 +44,8 @@ def main():
         assert 0.6 < efficiency["value"] < 1.0
         assert abs(sum(entry["share"] for entry in step["budget"]) - 1.0) < 1e-9
         assert step["temperatures"][0]["end"]["value"] is not None
-    # Independent intervals would miss more than 2 of 8 once in 170 demos; these share their meters, and the seed is
-    # fixed, so that this is a check of the whole and not of coverage (coverage_test.cpp).
-    assert holding >= 6, "the truth is outside most intervals"
+    # How many of the eight hold is one draw, not eight: they share their meters, and one bench in twenty misses with
+    # several. How often intervals hold is coverage_test.cpp's business; that none is far off was checked above.
     captures = os.listdir(os.path.join(out, "captures"))
     assert len(captures) == 8, captures
     figures = ("power_factor", "thd_voltage", "crest_factor", "loss", "input_power", "output_power")
