@@ -43,7 +43,7 @@ link::Wait print_line(CorePtr core, Station& station, std::string text, std::opt
           co_await send(core, station, link, bytes + station.description.terminator);
     }
   }
-  station.last_reply = text;
+  if (!fault || kind != FaultKind::stale) station.last_reply = text;
 }
 
 }  // namespace

@@ -201,7 +201,8 @@ net::awaitable<void> answer(CorePtr core, Station& station, std::shared_ptr<link
     [[maybe_unused]] const bool sent =
         co_await send(core, station, link, out.bytes + station.description.terminator);
   }
-  station.last_reply = reply;
+  // A stale reply that is followed by another is what that one repeats: a display on hold.
+  if (!fault || fault->kind != FaultKind::stale) station.last_reply = reply;
 }
 
 }  // namespace
