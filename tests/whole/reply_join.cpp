@@ -15,9 +15,10 @@ namespace {
 using rehearsal::LogEntry;
 
 constexpr std::int64_t kReach_ns = 3'000'000'000;
-// A line waits while the one before it is on the wire: three lines of 20 bytes at 9600 baud.
-constexpr std::int64_t kLineWait_ns = 3'000'000'000;  // of a line that was held up
-constexpr std::int64_t kPromptLine_ns = 60'000'000;   // of any other: its own length
+// The identity is asked for twice, with 2 s of patience each, before a stranger is called one.
+constexpr std::int64_t kReachOfIdentity_ns = 5'000'000'000;
+// A line waits while those before it are on the wire: six of 12 bytes at 9600 baud, after one that was late.
+constexpr std::int64_t kLineWait_ns = 80'000'000;
 // One multiplication by a prefix, whichever way round it is done.
 constexpr double kRounding = 1e-15;
 
@@ -147,13 +148,8 @@ class Joiner {
     const bool line = reply.query.empty();
     const auto [first, last] = between(reply.instrument, line ? reply.sent_ns - kLineWait_ns : reply.sent_ns,
                                        line ? reply.sent_ns : reply.received_ns);
-    const auto& all = sent_[reply.instrument];
-    const bool held_up =
-        std::any_of(all.begin(), all.end(), [](const LogEntry* entry) { return entry->fault == "late"; });
     const LogEntry* found = nullptr;
     for (auto entry = first; entry != last; ++entry) {
-      // A line that was held up, and those behind it, cannot be told from new ones; any other came at once.
-      if (line && !held_up && (*entry)->sent_wall_ns < reply.sent_ns - kPromptLine_ns) continue;
       if (line ? (*entry)->kind == "line" && (*entry)->reply == reply.text
                : (*entry)->kind == "reply" && (*entry)->query == reply.query)
         found = *entry;
@@ -233,7 +229,8 @@ class Joiner {
   }
 
   [[nodiscard]] bool shows(const LogEntry& entry, const Signs& signs) const {
-    const auto near = [&](std::int64_t t_ns) { return std::abs(t_ns - entry.sent_wall_ns) <= kReach_ns; };
+    const auto reach_ns = entry.fault == "wrong_identity" ? kReachOfIdentity_ns : kReach_ns;
+    const auto near = [&](std::int64_t t_ns) { return std::abs(t_ns - entry.sent_wall_ns) <= reach_ns; };
     const auto seen = seen_.find(entry.instrument);
     if (seen != seen_.end() && std::any_of(seen->second.begin(), seen->second.end(), [&](const Seen& one) {
           return (one.unusable & signs.flags) != 0U && near(one.t_ns);

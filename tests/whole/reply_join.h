@@ -33,8 +33,8 @@ struct ReplyJoin {
 /// answers in order), or as a line that began to arrive when the rehearsal sent it; its value must be the
 /// number in that text, and its instant one that the declared times allow. Every typed value must be what the
 /// display showed between prompt and entry. Every fault in the log must show: as a flagged reading of that
-/// instrument, or an event of that instrument of a fitting kind, within 3 s; a condition that is told when it
-/// begins counts as shown until a good reading ends it.
+/// instrument, or an event of that instrument of a fitting kind, within 3 s (a stranger on the line: 5 s); a
+/// condition that is told when it begins counts as shown until a good reading ends it.
 [[nodiscard]] ReplyJoin join_replies(const VirtualRun& run, const setup::Hookup& hookup);
 
 }  // namespace loadstair::whole
