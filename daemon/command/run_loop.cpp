@@ -196,8 +196,8 @@ class Teller {
   /// What stays on the screen: whatever a person must have seen, above all whether the bench is safe.
   static bool worth_keeping(const json& kind) {
     static const std::set<std::string> kinds = {
-        "safe state", "discharge", "not settled",    "capture missing", "command_refused",
-        "hold",       "lost",      "identity wrong", "command refused", "record",          "broken"};
+        "safe state", "discharge",      "not settled",     "capture missing", "command_refused", "hold",
+        "lost",       "identity wrong", "command refused", "record",          "broken"};
     return kinds.contains(kind.get<std::string>());
   }
 
