@@ -22,8 +22,9 @@ bool starts_like_a_number(std::string_view text) {
   return !text.empty() && (text.front() == '.' || (text.front() >= '0' && text.front() <= '9'));
 }
 
-/// from_chars says "out of range" for too large and too small alike. Beyond double's range on either side the sum of
-/// the exponent and the place of the first digit that counts is far from zero, and its sign tells which.
+/// from_chars says "out of range" for too large and too small alike. Beyond double's range on either side the
+/// sum of the exponent and the place of the first digit that counts is far from zero, and its sign tells
+/// which.
 bool is_tiny(std::string_view text) {
   const auto mark = text.find_first_of("eE");
   const auto mantissa = text.substr(0, mark);
@@ -32,8 +33,7 @@ bool is_tiny(std::string_view text) {
     const bool has_sign = !exponent.empty() && (exponent.front() == '-' || exponent.front() == '+');
     if (exponent.size() > 6U + (has_sign ? 1U : 0U)) return exponent.front() == '-';
   }
-  const auto exponent =
-      mark == std::string_view::npos ? 0 : parse_integer(text.substr(mark + 1)).value_or(0);
+  const auto exponent = mark == std::string_view::npos ? 0 : parse_integer(text.substr(mark + 1)).value_or(0);
   const auto point = std::min(mantissa.find('.'), mantissa.size());
   const auto first = mantissa.find_first_of("123456789");
   if (first == std::string_view::npos) return true;
@@ -105,7 +105,8 @@ std::string print_significant(double value, int digits) {
   if (!std::isfinite(value)) return print_number(value);
   if (value == 0.0) return print_fixed(0.0, digits - 1);
   const std::string scientific = print(value, std::chars_format::scientific, digits - 1);
-  const int exponent = static_cast<int>(parse_integer(scientific.substr(scientific.find('e') + 1)).value_or(0));
+  const int exponent =
+      static_cast<int>(parse_integer(scientific.substr(scientific.find('e') + 1)).value_or(0));
   if (exponent < -5 || exponent > 14) return scientific;
   const int decimals = digits - 1 - exponent;
   if (decimals >= 0) return print(value, std::chars_format::fixed, decimals);

@@ -1,4 +1,5 @@
-// Numbers as text, independent of any locale. Every number that enters or leaves the program goes through here.
+// Numbers as text, independent of any locale. Every number that enters or leaves the program goes through
+// here.
 #pragma once
 
 #include <cstdint>
@@ -9,7 +10,8 @@
 namespace loadstair::base {
 
 /// Reads one decimal number that fills the whole field.
-/// text     optional sign (also "+", which instruments send), digits, decimal mark, exponent; blanks around it are
+/// text     optional sign (also "+", which instruments send), digits, decimal mark, exponent; blanks around
+/// it are
 ///          skipped. No hexadecimal, no names such as "inf" or "nan" (a dialect knows its sentinels).
 /// mark     the decimal mark, '.' or ','.
 /// Returns: the nearest double; nullopt when the text is not exactly one number or lies beyond double's range
@@ -25,7 +27,8 @@ namespace loadstair::base {
 /// `decimals` places after the point, 0 to 17, rounded half to even on the exact binary value; never "-0.00".
 [[nodiscard]] std::string print_fixed(double value, int decimals);
 
-/// `digits` significant digits, 1 to 17, plain notation where the exponent is within -5 to 14, else scientific.
+/// `digits` significant digits, 1 to 17, plain notation where the exponent is within -5 to 14, else
+/// scientific.
 [[nodiscard]] std::string print_significant(double value, int digits);
 
 /// Scientific notation with `decimals` places and a sign, as instruments print it: "+3.85012E+02".

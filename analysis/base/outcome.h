@@ -10,8 +10,8 @@
 namespace loadstair::base {
 
 /// Why something was refused.
-/// place   where it happened, as exact as known ("bench.json:12:7", "row 4, column 2", "channel output power").
-/// reason  what came instead and what would be right; one or two lines that a person can act on.
+/// place   where it happened, as exact as known ("bench.json:12:7", "row 4, column 2", "channel output
+/// power"). reason  what came instead and what would be right; one or two lines that a person can act on.
 struct Refusal {
   std::string place;
   std::string reason;
@@ -25,7 +25,7 @@ struct Refusal {
 template <class T>
 class [[nodiscard]] Outcome {
  public:
-  Outcome(T value) : state_{std::in_place_index<0>, std::move(value)} {}       // NOLINT: a value is an outcome
+  Outcome(T value) : state_{std::in_place_index<0>, std::move(value)} {}  // NOLINT: a value is an outcome
   Outcome(Refusal refusal) : state_{std::in_place_index<1>, std::move(refusal)} {}  // NOLINT: so is a refusal
 
   [[nodiscard]] bool ok() const { return state_.index() == 0; }

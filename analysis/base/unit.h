@@ -15,9 +15,9 @@ struct ParsedUnit {
   bool operator==(const ParsedUnit&) const = default;
 };
 
-/// Reads a unit with an optional SI prefix (p n u µ m k M G): "mV" -> {1e-3, "V"}, "kohm" and "kΩ" -> {1e3, "ohm"},
-/// "°C" and "degC" -> {1, "degC"}. Case counts, since m and M differ; "Vdc", "VDC", "Vac", "VAC", "Vrms" are V.
-/// Returns: nullopt for a unit that is not known.
+/// Reads a unit with an optional SI prefix (p n u µ m k M G): "mV" -> {1e-3, "V"}, "kohm" and "kΩ" -> {1e3,
+/// "ohm"}, "°C" and "degC" -> {1, "degC"}. Case counts, since m and M differ; "Vdc", "VDC", "Vac", "VAC",
+/// "Vrms" are V. Returns: nullopt for a unit that is not known.
 [[nodiscard]] std::optional<ParsedUnit> parse_unit(std::string_view text);
 
 }  // namespace loadstair::base
