@@ -7,7 +7,7 @@ import tempfile
 
 from bench_tools import Bench, check_readings_against_log
 
-program, source = sys.argv[1], sys.argv[2]
+program, source, twin = sys.argv[1], sys.argv[2], sys.argv[4]
 
 
 def main():
@@ -46,6 +46,15 @@ def main():
         assert step["temperatures"][0]["end"]["value"] is not None
     # How many of the eight hold is one draw, not eight: they share their meters, and one bench in twenty misses with
     # several. How often intervals hold is coverage_test.cpp's business; that none is far off was checked above.
+    # What can be held against one demo is its virtual twin, made by the same drawn errors: as in twins.py.
+    lines = subprocess.run([twin, "3"], check=True, capture_output=True, text=True, timeout=60).stdout.splitlines()
+    virtual = [json.loads(line) for line in lines]
+    assert [step["label"] for step in result["steps"]] == [step["label"] for step in virtual]
+    for step, other in zip(result["steps"], virtual):
+        error = step["efficiency"]["value"] - truth[step["label"]]["efficiency"]
+        half = (step["efficiency"]["high"] - step["efficiency"]["low"]) / 2
+        apart = abs(error - (other["efficiency"] - other["true_efficiency"])) / half
+        assert apart < 0.2, f"{step['label']}: demo and virtual twin are {apart:.2f} of a half-width apart"
     captures = os.listdir(os.path.join(out, "captures"))
     assert len(captures) == 8, captures
     figures = ("power_factor", "thd_voltage", "crest_factor", "loss", "input_power", "output_power")
