@@ -7,6 +7,7 @@
 #include <vector>
 
 #include "analysis/efficiency/curve.h"
+#include "analysis/efficiency/weighted.h"
 
 namespace loadstair::evaluation {
 
@@ -31,6 +32,16 @@ struct TemperatureResult {
   Quantity end;     ///< end temperature, degC
   std::string how;  ///< "measured" or "predicted"; empty when end is not known
   std::optional<Quantity> ambient;
+  std::optional<Quantity> thermal_resistance;  ///< (end - ambient) / loss, K/W
+  std::optional<Quantity> at_highest_ambient;  ///< degC, at Ratings::highest_ambient_c
+  /// Last step of a run only: the first acceptable prediction against what was measured in the end.
+  struct HoldOut {
+    double after_s = 0.0;  ///< when it could have ended the step, s after the set point
+    double predicted = 0.0, low = 0.0, high = 0.0, measured = 0.0;
+    bool held = false;
+    std::string text;
+  };
+  std::optional<HoldOut> hold_out;
 };
 
 struct SettledResult {
@@ -59,13 +70,27 @@ struct PortResult {
   std::vector<std::string> corrections;  ///< "voltmeter burden -0.016 W"
 };
 
+/// Monte Carlo beside the linear method (JCGM 101 8.1).
+struct Validation {
+  bool agrees = false;
+  std::uint64_t draws = 0;
+  double low_difference = 0.0, high_difference = 0.0, tolerance = 0.0;  ///< of the interval's ends
+  std::string text;
+};
+
 struct StepResult {
   int index = 0;
   std::string label;
-  double load_w = 0.0;       ///< nominal
-  std::string state;         ///< of the step in the run: "done", "averaging", "skipped", ...
-  std::string result_state;  ///< "measured", "apparent power only", "missing channel ...", "not measured"
+  std::string kind = "level";  ///< setup::name_of(StepKind)
+  double load_w = 0.0;         ///< nominal
+  std::string state;           ///< of the step in the run: "done", "averaging", "skipped", ...
+  std::string result_state;    ///< "measured", "apparent power only", "missing channel ...", "not measured"
   Quantity input_power, output_power, efficiency, loss, power_factor, thd_voltage, crest_factor, frequency;
+  Quantity thd_current, dc_component;  ///< of the AC output; V
+  /// Loss and efficiency at the end temperature, where the soak showed how the loss goes with temperature.
+  std::optional<Quantity> loss_projected, efficiency_projected;
+  std::string projection_text;
+  std::optional<Validation> validation;  ///< of the efficiency
   std::vector<TemperatureResult> temperatures;
   SettledResult settled;
   std::vector<BudgetEntry> budget;  ///< of the efficiency, largest share first; empty without one
@@ -89,15 +114,72 @@ struct WeightedResult {
   std::vector<Use> uses;
 };
 
+/// p0 + p1 P + p2 P^2 and what follows from it.
+struct ModelResult {
+  std::string span;  ///< "all levels", or what one piece of a split curve is called
+  Quantity p0, p1, p2;
+  double chi_squared = 0.0, degrees_of_freedom = 0.0;
+  std::string lack_of_fit;  ///< "not significant", "not tested (4 levels)", ...
+  bool used = false;        ///< whether its figures may be quoted
+  Quantity peak_power, peak_efficiency;
+};
+
+struct FoldBackResult {
+  Quantity knee_current, knee_power, expected_current;
+  std::string sense, text;
+};
+
+struct StartUpResult {
+  Quantity rise_time, overshoot;  ///< s; share of the final value
+  bool monotonic = false;
+  std::string text;
+};
+
+/// One channel's zero, or one tied channel against the tie's first.
+struct BenchCheckResult {
+  std::string kind, name, channel;  ///< "zero", "tie"
+  Quantity before, after;           ///< zero: in the channel's unit
+  Quantity ratio, offset;           ///< tie: gain over the first channel's; offset in its unit
+  bool applied = false;
+  std::string text;
+};
+
+struct ClosureResult {
+  std::string label, again;  ///< the two steps
+  Quantity difference;       ///< efficiency of the repeat minus the first
+  double allowed = 0.0;      ///< half-width that the budget allows, ratio
+  bool held = false;
+  std::string text;
+};
+
+struct DecisionResult {
+  std::string name, quantity, step;  ///< step empty: a figure of the run
+  Quantity value;
+  std::optional<double> low, high;    ///< in the unit of the value
+  std::string decision;               ///< "pass", "fail", "undecided", "indicative", "not decided"
+  std::optional<double> probability;  ///< that the true value conforms
+  std::string source, text;
+};
+
 struct RunResult {
   std::int64_t run = 0;
   std::string prototype, revision, unit, state;
   std::vector<StepResult> steps;
   std::vector<CurveEntry> curve;
-  std::vector<WeightedResult> weighted;  ///< European, CEC
+  std::vector<WeightedResult> weighted;                         ///< European, CEC
+  std::vector<ModelResult> models;                              ///< one; more where the curve is split
+  Quantity no_load, standby, load_regulation, line_regulation;  ///< W; ratios
+  std::optional<FoldBackResult> fold_back;
+  std::optional<StartUpResult> start_up;
+  std::vector<BenchCheckResult> bench_checks;
+  std::vector<ClosureResult> closure;
+  std::vector<DecisionResult> decisions;
+  std::string decision_rule;  ///< the one rule of the report
   std::vector<std::string> remarks;
   std::string method_version;                  ///< of this program's evaluation
   std::vector<efficiency::CurvePoint> points;  ///< the curve with its sources, for comparisons; not printed
+  std::vector<efficiency::Weighted> weighted_sources;  ///< the same of the weighted figures
+  double rated_power_w = 0.0;
 };
 
 }  // namespace loadstair::evaluation

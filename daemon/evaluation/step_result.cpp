@@ -53,7 +53,11 @@ void refuse_all(StepOutcome& out, const setup::Hookup& hookup, const std::string
   result.efficiency = result.power_factor = result.thd_voltage = result.crest_factor = missing("1", why);
   result.frequency = missing("Hz", why);
   for (const setup::TemperaturePoint& point : hookup.temperatures) {
-    result.temperatures.push_back({point.place, point.channel, missing("degC", why), "", std::nullopt});
+    TemperatureResult temperature;
+    temperature.place = point.place;
+    temperature.channel = point.channel;
+    temperature.end = missing("degC", why);
+    result.temperatures.push_back(std::move(temperature));
   }
   const base::Refusal refusal{result.label, why};
   out.powers.label = result.label;

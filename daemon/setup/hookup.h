@@ -47,6 +47,18 @@ struct Instrument {
   std::string calibration_due;
 };
 
+/// Where a specification holds. What is not declared is not checked; outside of what is declared a reading is
+/// flagged, and its contribution grows only where the file says how.
+struct Conditions {
+  std::optional<double> low_c, high_c;  ///< ambient span of the specification, degC
+  /// Beyond the span, per kelvin: this share of the specification is added to it.
+  std::optional<double> percent_of_spec_per_k;
+  std::optional<double> days;                    ///< since calibration, within which the figures hold
+  std::optional<double> least_percent_of_range;  ///< readings below are outside the specification
+  std::optional<double> least_hz;                ///< lower end of the band; its upper end is band_hz
+  std::optional<double> least_power_factor;      ///< wattmeters
+};
+
 /// Accuracy of one range, as the meter's book states it: +-(a % of reading + b % of range + c digits).
 struct RangeSpec {
   double upto = 0.0;  ///< full scale, in the meter's own unit (before conversion)
@@ -66,19 +78,36 @@ struct Shunt {
   double resistance_ohm = 0.0;
   double tolerance_percent = 0.0;
   double tempco_ppm_per_k = 0.0;
-  double rise_k_per_w = 0.0;  ///< self-heating
+  double rise_k_per_w = 0.0;                  ///< self-heating
+  std::optional<double> ambient_c;            ///< around the shunt; nullopt: 23 degC
+  std::optional<double> ambient_tolerance_k;  ///< half-width; nullopt: 2 K (common practice, no source)
 };
 struct Thermocouple {
   char letter = 'K';
   int tolerance_class = 2;    ///< IEC 60584-1
   std::string cold_junction;  ///< name of a temperature channel; empty: the reader compensates, value is degC
 };
-/// From what the meter says to the quantity: value * scale, then at most one of the two.
+/// A platinum thermometer read as resistance. IEC 60751.
+struct Platinum {
+  double r0_ohm = 100.0;
+  std::string tolerance_class = "B";  ///< AA, A, B, C
+  bool film = true;                   ///< else wire-wound
+  double lead_ohm = 0.0;              ///< both leads of a two-wire connection; 0: three or four wires
+};
+/// A thermistor read as resistance: by beta and the resistance at 25 degC, or by Steinhart and Hart's three.
+struct Thermistor {
+  double r25_ohm = 0.0, beta_k = 0.0;
+  double a = 0.0, b = 0.0, c = 0.0;   ///< used where r25_ohm is 0
+  std::optional<double> tolerance_k;  ///< half-width in K; nullopt: uncertainty not known
+};
+/// From what the meter says to the quantity: value * scale, then at most one of the four.
 struct Conversion {
   double scale = 1.0;
   double scale_tolerance_percent = 0.0;
   std::optional<Shunt> shunt;
   std::optional<Thermocouple> thermocouple;
+  std::optional<Platinum> platinum;
+  std::optional<Thermistor> thermistor;
 };
 
 struct Channel {
@@ -94,6 +123,12 @@ struct Channel {
   std::optional<double> band_hz;  ///< upper end of the meter's declared band
   std::optional<double> crest_limit;
   std::optional<double> low, high;  ///< plausible values, for typed entries
+  Conditions conditions;
+  /// Of a wattmeter's power: half-width of the phase error between its voltage and its current circuit.
+  std::optional<double> phase_error_deg;
+  /// Typed channels: which meter on the bench it is; the same text in two channels is one meter. Empty: its
+  /// own, named like the channel.
+  std::string meter;
 };
 
 enum class Direction { input, output };
@@ -143,8 +178,17 @@ struct CaptureSource {
   std::string voltage_column, current_column;  ///< header name or number from 1
   double voltage_scale = 1.0, current_scale = 1.0;
   double voltage_gain_percent = 0.0, current_gain_percent = 0.0;  ///< tolerance; 0: not declared
-  double delay_tolerance_s = 0.0;                                 ///< between the two channels
-  std::string port;                                               ///< the port that these columns belong to
+  double voltage_offset_v = 0.0, current_offset_a = 0.0;  ///< half-widths of the zero; 0: not declared
+  /// -3 dB, first order; nullopt: not declared. Known to 30 % (common practice, no source).
+  std::optional<double> voltage_bandwidth_hz, current_bandwidth_hz;
+  double voltage_linearity_percent = 0.0, current_linearity_percent = 0.0;  ///< of the record's peak to peak
+  double current_delay_s = 0.0;      ///< how late the current comes, as measured on a resistive signal
+  double delay_tolerance_s = 0.0;    ///< half-width of what is left between the two channels
+  std::string deskewed;              ///< ISO 8601 date of that measurement
+  double phase_tolerance_deg = 0.0;  ///< half-width at the fundamental beside the delay (a current probe's)
+  double timebase_ppm = 0.0;         ///< half-width of the sampling rate; 0: not declared
+  std::optional<double> crest_band_hz;  ///< band in which the crest factor is quoted
+  std::string port;                     ///< the port that these columns belong to
 };
 
 struct TemperaturePoint {
