@@ -94,6 +94,7 @@ struct StepResult {
   std::vector<TemperatureResult> temperatures;
   SettledResult settled;
   std::vector<BudgetEntry> budget;  ///< of the efficiency, largest share first; empty without one
+  std::vector<BudgetEntry> loss_budget;
   std::vector<PortResult> ports;
   std::vector<std::string> remarks;
 };

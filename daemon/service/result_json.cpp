@@ -5,104 +5,14 @@
 #include <nlohmann/json.hpp>
 
 #include "analysis/base/number.h"
+#include "daemon/service/result_parts.h"
 #include "daemon/setup/hookup.h"
 #include "daemon/setup/stair.h"
 
 namespace loadstair::service {
-namespace {
 
 using evaluation::Quantity;
 using nlohmann::json;
-
-json temperature_json(const evaluation::TemperatureResult& temperature) {
-  json result = {{"place", temperature.place},
-                 {"channel", temperature.channel},
-                 {"end", to_json(temperature.end)},
-                 {"how", temperature.how.empty() ? json(nullptr) : json(temperature.how)}};
-  if (temperature.ambient) result["ambient"] = to_json(*temperature.ambient);
-  return result;
-}
-
-json settled_json(const evaluation::SettledResult& settled) {
-  return {{"settled", settled.settled},
-          {"by", settled.by},
-          {"after_s", settled.after_s ? json(*settled.after_s) : json(nullptr)},
-          {"text", settled.text}};
-}
-
-json budget_json(const evaluation::BudgetEntry& entry) {
-  json result = {{"source", entry.source},
-                 {"instrument", entry.instrument},
-                 {"function", entry.function},
-                 {"range", entry.range},
-                 {"type", entry.type_a ? "A" : "B"},
-                 {"standard_uncertainty", entry.standard_uncertainty},
-                 {"share", entry.share},
-                 {"action", entry.action}};
-  if (entry.expanded_if_done) result["expanded_if_done"] = *entry.expanded_if_done;
-  return result;
-}
-
-json port_json(const evaluation::PortResult& port) {
-  return {{"name", port.name},
-          {"direction", port.direction},
-          {"counted", port.counted},
-          {"state", port.state},
-          {"method", port.method},
-          {"power", to_json(port.power)},
-          {"apparent_power", to_json(port.apparent_power)},
-          {"power_factor", to_json(port.power_factor)},
-          {"voltage", to_json(port.voltage)},
-          {"current", to_json(port.current)},
-          {"corrections", port.corrections}};
-}
-
-template <class Item>
-json list_of(const std::vector<Item>& items, json (*print)(const Item&)) {
-  json list = json::array();
-  for (const auto& item : items) list.push_back(print(item));
-  return list;
-}
-
-json step_json(const evaluation::StepResult& step) {
-  return {{"label", step.label},
-          {"load_w", step.load_w},
-          {"state", step.state},
-          {"result", step.result_state},
-          {"input_power", to_json(step.input_power)},
-          {"output_power", to_json(step.output_power)},
-          {"efficiency", to_json(step.efficiency)},
-          {"loss", to_json(step.loss)},
-          {"power_factor", to_json(step.power_factor)},
-          {"thd_voltage", to_json(step.thd_voltage)},
-          {"crest_factor", to_json(step.crest_factor)},
-          {"frequency", to_json(step.frequency)},
-          {"temperatures", list_of(step.temperatures, &temperature_json)},
-          {"settled", settled_json(step.settled)},
-          {"budget", list_of(step.budget, &budget_json)},
-          {"ports", list_of(step.ports, &port_json)},
-          {"remarks", step.remarks}};
-}
-
-json curve_json(const evaluation::CurveEntry& entry) {
-  return {{"label", entry.label},
-          {"output_power", to_json(entry.output_power)},
-          {"efficiency", to_json(entry.efficiency)},
-          {"loss", to_json(entry.loss)}};
-}
-
-json weighted_json(const evaluation::WeightedResult& weighted) {
-  json uses = json::array();
-  for (const auto& use : weighted.uses) {
-    uses.push_back({{"fraction", use.fraction},
-                    {"weight", use.weight},
-                    {"from", use.from},
-                    {"efficiency", to_json(use.efficiency)}});
-  }
-  return {{"title", weighted.title}, {"efficiency", to_json(weighted.efficiency)}, {"uses", uses}};
-}
-
-}  // namespace
 
 json to_json(const Quantity& quantity) {
   if (!quantity.known) return {{"value", nullptr}, {"why", quantity.why}};
@@ -121,15 +31,11 @@ json to_json(const Quantity& quantity) {
 }
 
 json to_json(const evaluation::RunResult& result) {
-  return {{"run", result.run},
-          {"prototype", {{"name", result.prototype}, {"revision", result.revision}, {"unit", result.unit}}},
-          {"state", result.state},
-          {"method_version", result.method_version},
-          {"steps", list_of(result.steps, &step_json)},
-          {"curve", list_of(result.curve, &curve_json)},
-          {"weighted", list_of(result.weighted, &weighted_json)},
-          {"decisions", json::array()},
-          {"remarks", result.remarks}};
+  json steps = json::array();
+  for (const auto& step : result.steps) steps.push_back(step_json(step));
+  json all = run_json(result);
+  all["steps"] = std::move(steps);
+  return all;
 }
 
 json to_json(const std::vector<store::RunSummary>& runs) {
