@@ -5,6 +5,7 @@
 
 #include "analysis/base/number.h"
 #include "analysis/estimate/coverage.h"
+#include "analysis/settling/approach.h"
 #include "analysis/settling/exponential.h"
 #include "analysis/settling/runs.h"
 #include "analysis/settling/settling.h"
@@ -136,8 +137,7 @@ base::Outcome<Prediction> predict_end(const Trace& trace, std::span<const double
     return Refusal{"prediction", "ambient has another number of readings"};
   }
   if (!(criterion.tolerance > 0.0)) return Refusal{"prediction", "the tolerance must be above zero"};
-  std::vector<double> moved(trace.value.begin(), trace.value.end());
-  for (std::size_t i = 0; i < ambient.size(); ++i) moved[i] += ambient.back() - ambient[i];
+  const std::vector<double> moved = moved_to_last_ambient(trace, ambient);
   const Trace rise{trace.time_s, moved};
   const Outcome<ExponentialFit> one = fit_exponential(rise);
   if (!one) return one.refusal();

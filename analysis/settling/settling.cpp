@@ -9,6 +9,7 @@
 #include "analysis/estimate/coverage.h"
 #include "analysis/series/correlation.h"
 #include "analysis/series/line.h"
+#include "analysis/settling/approach.h"
 #include "analysis/settling/words.h"
 
 namespace loadstair::settling {
@@ -100,8 +101,8 @@ namespace {
 
 constexpr double kEndShare = 1.0 / 20.0;  ///< of the window, over which the value at its end is found
 
-/// Value at t: a line through the last window/20 before it, read off at t; with fewer than three samples
-/// there, between the neighbours.
+}  // namespace
+
 double value_at(const Trace& trace, double t_s, double stretch_s) {
   const auto begin = trace.time_s.begin();
   const auto past = static_cast<std::size_t>(std::upper_bound(begin, trace.time_s.end(), t_s) - begin);
@@ -117,6 +118,19 @@ double value_at(const Trace& trace, double t_s, double stretch_s) {
   const double share = (t_s - trace.time_s[past - 1]) / (trace.time_s[past] - trace.time_s[past - 1]);
   return trace.value[past - 1] + share * (trace.value[past] - trace.value[past - 1]);
 }
+
+Interval present_and_rest(const Trace& trace, const base::Outcome<ExponentialFit>& fit, double window_s) {
+  const double now = value_at(trace, trace.time_s.back(), window_s * kEndShare);
+  Interval end{now, now, now};
+  if (!fit) return end;
+  const double inflation = std::sqrt(static_cast<double>(fit->points) / fit->effective_points);
+  const double half_width = 2.0 * fit->end_standard_error * inflation;
+  end.low = std::min(now, fit->end - half_width);
+  end.high = std::max(now, fit->end + half_width);
+  return end;
+}
+
+namespace {
 
 struct RateCheck {
   bool holds = false;
@@ -200,7 +214,6 @@ base::Outcome<Verdict> settled_by_rate(const Trace& trace, const RateCriterion& 
     out.settled = out.settled && check.holds;
     if (std::abs(check.largest) > std::abs(worst.largest)) worst = check;
   }
-  const double now = value_at(trace, trace.time_s.back(), criterion.window_s * kEndShare);
   const std::string changed =
       "changed by " + value_text(worst.largest) + "; criterion " + rate_text(criterion);
   if (!out.settled) {
@@ -211,15 +224,19 @@ base::Outcome<Verdict> settled_by_rate(const Trace& trace, const RateCriterion& 
   out.by = SettledBy::thermal_rate;
   out.why = changed;
   out.wait_s = 0.0;
-  Interval end{now, now, now};
-  if (fit) {
-    const double inflation = std::sqrt(static_cast<double>(fit->points) / fit->effective_points);
-    const double half_width = 2.0 * fit->end_standard_error * inflation;
-    end.low = std::min({now, fit->end - half_width});
-    end.high = std::max({now, fit->end + half_width});
-  }
-  out.end = end;
+  out.end = present_and_rest(trace, fit, criterion.window_s);
   return out;
+}
+
+std::vector<double> moved_to_last_ambient(const Trace& trace, std::span<const double> ambient) {
+  std::vector<double> moved(trace.value.begin(), trace.value.end());
+  for (std::size_t i = 0; i < ambient.size(); ++i) moved[i] += ambient.back() - ambient[i];
+  return moved;
+}
+
+double stretch_begins(const Trace& trace) {
+  const auto changes = change_points(trace);
+  return changes && !changes->empty() ? changes->back() : trace.time_s.front();
 }
 
 base::Outcome<Verdict> settled_thermally(const Trace& trace, std::span<const double> ambient,
@@ -229,12 +246,9 @@ base::Outcome<Verdict> settled_thermally(const Trace& trace, std::span<const dou
     return Refusal{"settling", "ambient has another number of readings"};
   }
   if (trace.size() < 2) return settled_by_rate(trace, criterion.rate);
-  // The rise above ambient, moved to the last ambient: the object's own approach, whatever the room does.
-  std::vector<double> moved(trace.value.begin(), trace.value.end());
-  for (std::size_t i = 0; i < ambient.size(); ++i) moved[i] += ambient.back() - ambient[i];
+  const std::vector<double> moved = moved_to_last_ambient(trace, ambient);
   const Trace whole{trace.time_s, moved};
-  const auto changes = change_points(whole);
-  const double start_s = changes && !changes->empty() ? changes->back() : trace.time_s.front();
+  const double start_s = stretch_begins(whole);
   const Trace stretch = since(whole, start_s);
   Outcome<Verdict> by_rate = settled_by_rate(stretch, criterion.rate);
   if (!by_rate) return by_rate;
