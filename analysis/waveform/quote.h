@@ -17,12 +17,20 @@ struct ChannelAccuracy {
   double offset = 0.0;      ///< in the channel's unit
   double delay_s = 0.0;     ///< of the known delay (deskew), s
   estimate::Shares shares;  ///< how gain and offset split over runs and levels
+  /// -3 dB frequency of a first-order low-pass (scope input and probe), Hz; nullopt: not declared. Results
+  /// are corrected order by order; the tolerance is what is left.
+  std::optional<double> bandwidth_hz;
+  double bandwidth_tolerance = 0.3;  ///< relative half-width of it (common practice, no source)
+  double linearity = 0.0;  ///< deviation from the straight line, relative to the record's peak to peak
+  double phase_rad = 0.0;  ///< phase error against the other channel that is no delay, at any order
 };
 
 /// What is declared of the whole record.
 struct CaptureAccuracy {
   std::vector<std::optional<ChannelAccuracy>> channels;  ///< as in the result; nullopt: nothing is declared
-  std::optional<double> timebase;                        ///< relative half-width of the sampling rate
+  /// The channels' delay was measured on one resistive signal, so that the lag of their bandwidths is in it.
+  bool deskewed = false;
+  std::optional<double> timebase;  ///< relative half-width of the sampling rate
   estimate::Owner timebase_owner;
   estimate::Occasion occasion;  ///< run and level; the level names the step
 };
@@ -37,6 +45,7 @@ struct ChannelQuote {
   estimate::Quoted ripple_rms = kUncertaintyNotKnown;
   estimate::Quoted peak = kUncertaintyNotKnown;
   estimate::Quoted crest_factor = kUncertaintyNotKnown;
+  estimate::Quoted crest_factor_in_band = kUncertaintyNotKnown;
   estimate::Quoted form_factor = kUncertaintyNotKnown;
   estimate::Quoted thd_f = kUncertaintyNotKnown;
 };
@@ -56,11 +65,28 @@ struct WaveformQuote {
   PowerQuote power;
 };
 
-/// Attaches gain, offset and delay by the chain rule (JCGM 100:2008 5.1), quantisation to the peak, the
-/// record's noise to THD. Gain, offset and delay of one channel are the same sources in all its results, so
-/// that power factor and crest factor lose the gains. The delay enters the active power as the sum over
-/// orders of 2 pi f_h Q_h u(delay). A clipped channel is refused: its results are bounds. Not contained:
-/// bandwidth, and what the caller did not declare.
+/// Attaches what is declared by the chain rule (JCGM 100:2008 5.1), and what the record itself shows.
+///   gain, offset  of one channel are the same sources in all its results: power factor, crest factor lose
+///   gains delay         enters the active power as the sum over orders of 2 pi f_h Q_h u(delay) phase one
+///   source per order: Q_h u(phase) each bandwidth     RMS, THD and powers are corrected order by order for
+///   the low-pass (|H| = 1/sqrt(1 + (f/f_b)^2),
+///                 phase -atan(f/f_b), of which -f/f_b counts as delay when deskewed); the tolerance of f_b
+///                 is the source. Orders below the floor and what lies above the highest order are not
+///                 corrected. A peak is not corrected: what the low-pass takes off is its uncertainty
+///   linearity     at most its half-width in mean, RMS, peak; voltage's half-width times the rectified mean
+///   of the
+///                 current in P; a THD may be wrong by its share of the fundamental
+///   quantisation  whole in a peak; in a mean q/sqrt 12 as far as noise and ripple do not sweep the steps
+///                 (quantisation_of_mean())
+///   scatter       Type A over cycles in mean, RMS, P and frequency
+/// A clipped channel is refused: its results are bounds. The frequency needs the time base and three cycles.
+/// Not contained: what the caller did not declare.
 WaveformQuote quote(const WaveformResult& result, const CaptureAccuracy& accuracy);
+
+/// Standard uncertainty that steps of size q leave in a mean over many samples: q/sqrt 12 for a signal at
+/// rest, less by the signal's characteristic function at 2 pi/q where it moves over the steps: exp(-2 pi^2
+/// s^2/q^2) for noise of RMS s, the envelope of J0(2 pi A/q) for a sine of amplitude A. Of both the smaller.
+/// Source: Widrow and Kollar, Quantization Noise (2008), the quantisation theorems (from memory).
+double quantisation_of_mean(double step, double noise_rms, double alternating_rms);
 
 }  // namespace loadstair::waveform
