@@ -56,6 +56,7 @@ int run_check(const CheckOptions& options);
 struct ShowOptions {
   std::int64_t run = 0;  ///< 0: the last one
   std::string record;
+  std::string budget;  ///< label or number of a step: its budget instead of the whole; empty: the whole
   bool json = false;
 };
 int list_runs(const ShowOptions& options);

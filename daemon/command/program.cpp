@@ -114,6 +114,8 @@ void declare_all(CLI::App& app, int& status) {
                    "loadstair show 3 --record out/record.db", show_run,
                    [declare_record](CLI::App& command, ShowOptions& options) {
                      command.add_option("RUN", options.run, "number of the run (default: the last)");
+                     command.add_option("--budget", options.budget,
+                                        "label or number of a step: where its uncertainty comes from");
                      declare_record(command, options);
                    });
   add<CaptureArguments>(app, status, "capture", "Analyses a scope's CSV export on its own",

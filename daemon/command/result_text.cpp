@@ -6,44 +6,18 @@
 #include <vector>
 
 #include "analysis/base/number.h"
+#include "daemon/command/figures_text.h"
+#include "daemon/command/text_table.h"
 
 namespace loadstair::command {
 namespace {
 
 using nlohmann::json;
 
-/// Characters, not bytes: continuation bytes of UTF-8 do not count.
-std::size_t width_of(const std::string& text) {
-  return static_cast<std::size_t>(std::count_if(text.begin(), text.end(), [](char letter) {
-    return (static_cast<unsigned char>(letter) & 0xC0U) != 0x80U;
-  }));
-}
-
-std::string padded(const std::string& text, std::size_t width) {
-  return text + std::string(width > width_of(text) ? width - width_of(text) : 0, ' ');
-}
-
 /// Places after the point that show `uncertainty` with two significant digits.
 int decimals_for(double uncertainty) {
   if (!(uncertainty > 0.0)) return 3;
   return std::clamp(1 - static_cast<int>(std::floor(std::log10(uncertainty))), 0, 9);
-}
-
-using Row = std::vector<std::string>;
-
-std::string table_of(const std::vector<Row>& rows) {
-  std::vector<std::size_t> widths(rows.front().size(), 0);
-  for (const auto& row : rows) {
-    for (std::size_t i = 0; i < row.size(); ++i) widths[i] = std::max(widths[i], width_of(row[i]));
-  }
-  std::string text;
-  for (const auto& row : rows) {
-    std::string line;
-    for (std::size_t i = 0; i < row.size(); ++i) line += "  " + padded(row[i], widths[i]);
-    line.erase(line.find_last_not_of(' ') + 1);
-    text += line + "\n";
-  }
-  return text;
 }
 
 std::string indicated_or_dash(const json& quantity, double scale) {
@@ -122,10 +96,16 @@ class Notes {
   std::vector<std::pair<std::string, std::vector<std::string>>> notes_;
 };
 
+/// Checks of the bench, no load and standby are not expected to have one.
+bool measures_efficiency(const json& step) {
+  const std::string kind = step.value("kind", std::string{"level"});
+  return kind == "level" || kind == "closure";
+}
+
 /// Why a step has no efficiency, and what is remarkable about it.
 void note_step(const json& step, Notes& notes) {
   const std::string label = step["label"];
-  if (!step["efficiency"]["value"].is_number()) {
+  if (!step["efficiency"]["value"].is_number() && measures_efficiency(step)) {
     notes.add(label, "no efficiency: " + step["efficiency"].value("why", std::string{"no reason known"}));
   }
   for (const auto& remark : step["remarks"]) notes.add(label, remark);
@@ -135,15 +115,6 @@ void note_step(const json& step, Notes& notes) {
   notes.add(label, "most of the uncertainty: " + largest["source"].get<std::string>() + ", " +
                        base::print_fixed(largest["share"].get<double>() * 100.0, 0) + " % of the variance" +
                        (action.empty() ? "" : "; " + action));
-}
-
-std::string weighted_text(const json& figure) {
-  const std::string title = figure["title"];
-  const auto& efficiency = figure["efficiency"];
-  if (efficiency["value"].is_number()) return "  " + title + ": " + estimate_text(efficiency, 100.0) + " %\n";
-  std::string why = efficiency.value("why", std::string{});
-  if (why.starts_with(title + ": ")) why.erase(0, title.size() + 2);
-  return "  " + title + ": none, " + why + "\n";
 }
 
 }  // namespace
@@ -181,8 +152,7 @@ std::string result_table(const json& result) {
   const std::string table = table_of(powers) + "\n" + table_of(qualities);
   text += table;
   if (table.find("(?)") != std::string::npos) text += "\n(?): indicated, uncertainty not known\n";
-  if (!result["weighted"].empty()) text += "\nWeighted, conversion only (tracking is not included)\n";
-  for (const auto& figure : result["weighted"]) text += weighted_text(figure);
+  text += figures_text(result);
   std::string remarks = notes.text(result["steps"].size());
   for (const auto& remark : result["remarks"]) remarks += "  " + remark.get<std::string>() + "\n";
   if (!remarks.empty()) text += "\nNotes\n" + remarks;

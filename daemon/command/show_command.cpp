@@ -5,6 +5,7 @@
 #include "analysis/base/number.h"
 #include "daemon/command/commands.h"
 #include "daemon/command/daemon_client.h"
+#include "daemon/command/figures_text.h"
 #include "daemon/command/result_text.h"
 #include "daemon/command/user_error.h"
 #include "daemon/service/result_json.h"
@@ -44,6 +45,21 @@ class Source {
   std::optional<store::Reader> reader_;
 };
 
+/// A step by its label, or by its number from 1 where no label says that.
+const json& step_of(const json& result, const std::string& named) {
+  std::string labels;
+  const auto& steps = result["steps"];
+  for (const auto& step : steps) {
+    if (step["label"] == named) return step;
+    labels += (labels.empty() ? "" : ", ") + step["label"].get<std::string>();
+  }
+  const auto number = base::parse_integer(named);
+  if (number && *number >= 1 && *number <= static_cast<std::int64_t>(steps.size()))
+    return steps[static_cast<std::size_t>(*number - 1)];
+  throw UserError{"run " + base::print_integer(result["run"].get<std::int64_t>()) + " has no step \"" +
+                  named + "\"; its steps: " + labels + " (or a number from 1)"};
+}
+
 }  // namespace
 
 int list_runs(const ShowOptions& options) {
@@ -73,8 +89,13 @@ int show_run(const ShowOptions& options) {
     run = runs.back()["run"].get<std::int64_t>();
   }
   const json result = source.results(run);
+  if (!options.budget.empty()) {
+    const json& step = step_of(result, options.budget);
+    std::cout << (options.json ? step.dump(2) + "\n" : budget_text(step));
+    return kGood;
+  }
   std::cout << (options.json ? result.dump(2) + "\n" : result_table(result));
-  return kGood;
+  return limit_failed(result) ? kSaysNo : kGood;
 }
 
 }  // namespace loadstair::command
