@@ -6,6 +6,7 @@
 #include "daemon/command/commands.h"
 #include "daemon/command/daemon_client.h"
 #include "daemon/command/user_error.h"
+#include "drivers/document/reader.h"
 
 namespace loadstair::command {
 namespace {
@@ -123,6 +124,19 @@ void declare_all(CLI::App& app, int& status) {
                         run_capture_command, declare_capture);
 }
 
+/// A first word that is no subcommand: the nearest one is named.
+void require_known_command(const CLI::App& app, int argc, char** argv) {
+  if (argc < 2 || argv[1][0] == '-' || argv[1][0] == '\0') return;
+  const std::string word = argv[1];
+  std::vector<std::string> names;
+  for (const auto* command : app.get_subcommands([](const CLI::App*) { return true; })) {
+    if (command->get_name() == word) return;
+    names.push_back(command->get_name());
+  }
+  const std::vector<std::string_view> known{names.begin(), names.end()};
+  throw UserError{"there is no command \"" + word + "\"" + document::suggest(word, known)};
+}
+
 }  // namespace
 
 int run_program(int argc, char** argv) {
@@ -137,6 +151,7 @@ int run_program(int argc, char** argv) {
   app.require_subcommand(1);
   declare_all(app, status);
   try {
+    require_known_command(app, argc, argv);
     app.parse(argc, argv);
     return status;
   } catch (const CLI::ParseError& error) {
