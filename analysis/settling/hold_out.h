@@ -31,7 +31,7 @@ struct HoldOutSettings {
 /// ambient    same instants, or empty. Both ends are moved to the ambient at the end of the trace.
 /// Returns: nullopt where no prediction would have been accepted before the last reading, or the criterion
 /// has none. Refused: what settled_thermally() refuses; fewer than 20 readings. Cost: `instants` times a
-/// prediction with its change points, about 2 ms each.
+/// prediction with its change points, about 10 ms each.
 [[nodiscard]] base::Outcome<std::optional<HoldOut>> hold_out(const Trace& trace,
                                                              std::span<const double> ambient,
                                                              const ThermalCriterion& criterion,

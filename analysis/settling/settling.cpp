@@ -132,20 +132,103 @@ Interval present_and_rest(const Trace& trace, const base::Outcome<ExponentialFit
 
 namespace {
 
+/// Readings with their running sum, so that the mean between two instants costs two look-ups.
+class Course {
+ public:
+  explicit Course(const Trace& trace) : trace_{trace}, sum_(trace.size() + 1, 0.0) {
+    for (std::size_t i = 0; i < trace.size(); ++i) sum_[i + 1] = sum_[i] + (trace.value[i] - trace.value[0]);
+    double squares = 0.0;
+    for (std::size_t i = 2; i < trace.size(); ++i) {
+      const double second = trace.value[i] - 2.0 * trace.value[i - 1] + trace.value[i - 2];
+      squares += second * second;
+    }
+    if (trace.size() > 2) noise_ = std::sqrt(squares / (6.0 * static_cast<double>(trace.size() - 2)));
+  }
+
+  [[nodiscard]] const Trace& trace() const { return trace_; }
+  /// Deviation of single readings from a smooth course, from second differences.
+  [[nodiscard]] double noise() const { return noise_; }
+  /// First reading at or after t.
+  [[nodiscard]] std::size_t from(double t_s) const {
+    return static_cast<std::size_t>(std::lower_bound(trace_.time_s.begin(), trace_.time_s.end(), t_s) -
+                                    trace_.time_s.begin());
+  }
+  /// Mean of the readings [first, past), less the first value of all.
+  [[nodiscard]] double mean(std::size_t first, std::size_t past) const {
+    return (sum_[past] - sum_[first]) / static_cast<double>(past - first);
+  }
+
+ private:
+  Trace trace_;
+  std::vector<double> sum_;
+  double noise_ = 0.0;
+};
+
+/// How far the course rises at most, and falls at most, from an earlier part of a window to a later one,
+/// beyond what noise makes of the means of parts: a cycle that fits the window has equal ends.
+struct Excursion {
+  double rise = 0.0, fall = 0.0;
+};
+
+Excursion excursion(const Course& course, double begin_s, double end_s) {
+  constexpr int kParts = 20;
+  // Between the largest and the least of 20 means lie less than 5 of their deviations in 99 % of cases
+  // (tables of the studentised range).
+  constexpr double kNoiseRange = 5.0;
+  Excursion out;
+  double least = 0.0;
+  double most = 0.0;
+  std::size_t fewest = 0;
+  for (int part = 0; part < kParts; ++part) {
+    const std::size_t first = course.from(begin_s + (end_s - begin_s) * part / kParts);
+    const std::size_t past = course.from(begin_s + (end_s - begin_s) * (part + 1) / kParts);
+    if (past == first) continue;
+    const double mean = course.mean(first, past);
+    const bool fresh = fewest == 0;
+    least = fresh ? mean : std::min(least, mean);
+    most = fresh ? mean : std::max(most, mean);
+    fewest = fresh ? past - first : std::min(fewest, past - first);
+    out.rise = std::max(out.rise, mean - least);
+    out.fall = std::max(out.fall, most - mean);
+  }
+  const double noise = kNoiseRange * course.noise() / std::sqrt(std::max(1.0, static_cast<double>(fewest)));
+  out.rise -= noise;
+  out.fall -= noise;
+  return out;
+}
+
 struct RateCheck {
   bool holds = false;
   double largest = 0.0;  ///< signed change of the window that changed most
 };
 
+/// One window: what lies between its ends, or more where it went up and down within.
+double change_within(const Course& course, double begin_s, double end_s, double between_ends) {
+  const Excursion within = excursion(course, begin_s, end_s);
+  double change = between_ends;
+  if (within.rise > std::abs(change)) change = within.rise;
+  if (within.fall > std::abs(change)) change = -within.fall;
+  return change;
+}
+
 /// `count` windows one after another, the last one ending at t.
-RateCheck rate_at(const Trace& trace, double t_s, const RateCriterion& criterion) {
+RateCheck rate_at(const Course& course, double t_s, const RateCriterion& criterion) {
   RateCheck out{true, 0.0};
   const double stretch_s = criterion.window_s * kEndShare;
-  double later = value_at(trace, t_s, stretch_s);
+  double later = value_at(course.trace(), t_s, stretch_s);
   for (int w = 1; w <= criterion.count; ++w) {
-    const double earlier = value_at(trace, t_s - w * criterion.window_s, stretch_s);
-    const double change = later - earlier;
-    if ((criterion.rise_only ? change : std::abs(change)) > criterion.change) out.holds = false;
+    const double end_s = t_s - (w - 1) * criterion.window_s;
+    const double begin_s = t_s - w * criterion.window_s;
+    const double earlier = value_at(course.trace(), begin_s, stretch_s);
+    double change = later - earlier;
+    if (criterion.rise_only) {
+      const double rise = std::max(change, excursion(course, begin_s, end_s).rise);
+      if (rise > criterion.change) out.holds = false;
+      if (rise > change && rise > 0.0) change = rise;
+    } else {
+      change = change_within(course, begin_s, end_s, change);
+      if (std::abs(change) > criterion.change) out.holds = false;
+    }
     if (std::abs(change) > std::abs(out.largest)) out.largest = change;
     later = earlier;
   }
@@ -209,8 +292,9 @@ base::Outcome<Verdict> settled_by_rate(const Trace& trace, const RateCriterion& 
   }
   out.settled = true;
   RateCheck worst{true, 0.0};
+  const Course course{trace};
   for (const double t : hold_instants(trace, criterion.hold_s)) {
-    const RateCheck check = rate_at(trace, t, criterion);
+    const RateCheck check = rate_at(course, t, criterion);
     out.settled = out.settled && check.holds;
     if (std::abs(check.largest) > std::abs(worst.largest)) worst = check;
   }

@@ -65,8 +65,9 @@ struct RateCriterion {
 };
 /// Settled when the value changed by at most `change` between the ends of the last window, `count` windows in
 /// a row, and did so for `hold_s`. A line over the window/20 at each end gives the value there, so that
-/// noise does not decide. `wait_s` comes from the closed form of one time constant where a fit exists: -tau
-/// ln(d/(D(exp(w/tau)-1))).
+/// noise does not decide. Within the window the course may not go farther up or down either (means of its
+/// twentieths, less what noise makes of them): a fan's cycle that fits the window has equal ends. `wait_s`
+/// comes from the closed form of one time constant where a fit exists: -tau ln(d/(D(exp(w/tau)-1))).
 base::Outcome<Verdict> settled_by_rate(const Trace& trace, const RateCriterion& criterion);
 
 // --- exponential fits
