@@ -61,5 +61,43 @@ TEST_CASE("tolerances equal the published class A and B table") {
   }
 }
 
+TEST_CASE("the exact points of the equations, for Pt100 and Pt1000") {
+  const auto rows = read_table("pt100/exact_points.csv");
+  REQUIRE(rows.size() == 17);
+  for (const auto& row : rows) {
+    const double t = number(row, "t_degC");
+    INFO(t);
+    CHECK(platinum_resistance(t)->value == Approx(number(row, "R_ohm")).epsilon(1e-14));
+    CHECK(platinum_resistance(t, 1000.0)->value == Approx(10.0 * number(row, "R_ohm")).epsilon(1e-14));
+    CHECK(std::abs(platinum_temperature(number(row, "R_ohm"))->value - t) < 1e-10);
+  }
+  // alpha is printed to four digits: (R100 - R0)/(100 R0).
+  CHECK(std::abs((platinum_resistance(100.0)->value - 100.0) / 1e4 - 0.003851) < 5e-7);
+}
+
+TEST_CASE("the four tolerance classes, wire-wound and film, inside and outside their ranges") {
+  const auto rows = read_table("pt100/classes.csv");
+  REQUIRE(rows.size() == 4);
+  for (const auto& row : rows) {
+    const auto tolerance_class = parse_platinum_class(row.at("class"));
+    REQUIRE(tolerance_class);
+    for (const bool film : {false, true}) {
+      const PlatinumBuild build = film ? PlatinumBuild::film : PlatinumBuild::wire_wound;
+      const double low = number(row, film ? "film_low_degC" : "wire_low_degC");
+      const double high = number(row, film ? "film_high_degC" : "wire_high_degC");
+      INFO(row.at("class") << (film ? " film" : " wire-wound"));
+      for (const double t : {low, 0.5 * (low + high), 0.0, high}) {
+        const auto found = platinum_tolerance_k(*tolerance_class, build, t);
+        REQUIRE(found);
+        CHECK(*found ==
+              Approx(number(row, "absolute_K") + number(row, "relative") * std::abs(t)).epsilon(1e-14));
+      }
+      CHECK_FALSE(platinum_tolerance_k(*tolerance_class, build, low - 0.1));
+      CHECK_FALSE(platinum_tolerance_k(*tolerance_class, build, high + 0.1));
+    }
+  }
+  CHECK_FALSE(parse_platinum_class("D"));
+}
+
 }  // namespace
 }  // namespace loadstair::sensors
