@@ -58,18 +58,15 @@ struct PhaseSlope {
   double standard_uncertainty = 0.0;
 };
 
-/// Least-squares slope of the fundamental's phase over cycles; three or more give an uncertainty. A record of
-/// less than two cycles is covered by two that overlap.
-PhaseSlope phase_slope(const Prepared& channel, double frequency, int whole_cycles_inside) {
-  const double period = 1.0 / frequency;
-  const int cycles = std::max(2, whole_cycles_inside);
-  const double begin = whole_cycles_inside < 2 ? -0.5 : begin_of(period * cycles, channel.size());
-  const double spacing = whole_cycles_inside < 2 ? static_cast<double>(channel.size()) - period : period;
+/// Least-squares slope of the fundamental's phase over cycles that start `spacing` samples apart; three or
+/// more give an uncertainty.
+PhaseSlope phase_slope(const Prepared& channel, double begin, double period, double spacing, int cycles) {
   std::vector<double> phase(static_cast<std::size_t>(cycles));
   double turns = 0.0;
   for (std::size_t c = 0; c < phase.size(); ++c) {
     const double start = begin + static_cast<double>(c) * spacing;
-    const SpanSum span = SpanSum::between(start, start + period, channel.size());
+    const double stop = std::min(start + period, static_cast<double>(channel.size()));
+    const SpanSum span = SpanSum::between(start, stop, channel.size());
     phase[c] = std::arg(fundamental_sum(channel, span, period)) / kTwoPi + turns;
     if (c > 0) {
       const double jump = std::round(phase[c] - phase[c - 1]);
@@ -94,6 +91,15 @@ PhaseSlope phase_slope(const Prepared& channel, double frequency, int whole_cycl
   }
   out.standard_uncertainty = std::sqrt(rest / (n - 2.0) / square);
   return out;
+}
+
+/// Of the whole record's cycles. A record of less than two cycles is covered by two that overlap.
+PhaseSlope phase_slope(const Prepared& channel, double frequency, int whole_cycles_inside) {
+  const double period = 1.0 / frequency;
+  const int cycles = std::max(2, whole_cycles_inside);
+  const double begin = whole_cycles_inside < 2 ? -0.5 : begin_of(period * cycles, channel.size());
+  const double spacing = whole_cycles_inside < 2 ? static_cast<double>(channel.size()) - period : period;
+  return phase_slope(channel, begin, period, spacing, cycles);
 }
 
 int cycles_within(double frequency, std::size_t samples, double snap) {
@@ -129,6 +135,11 @@ base::Outcome<FoundFundamental> find_fundamental(const Prepared& channel, double
     if (last_step < 1e-15) break;
   }
   return found;
+}
+
+LocalFrequency local_frequency(const Prepared& channel, double begin, double period, int cycles) {
+  const PhaseSlope slope = phase_slope(channel, begin, period, period, cycles);
+  return {(1.0 + slope.cycles_per_cycle) / period, slope.standard_uncertainty / period};
 }
 
 CycleWindow whole_cycles(const FoundFundamental& fundamental, std::size_t samples) {

@@ -22,6 +22,14 @@ struct FoundFundamental {
 /// frequency.
 base::Outcome<FoundFundamental> find_fundamental(const Prepared& channel, double low, double high);
 
+/// Frequency of a stretch of whole cycles by the slope of the fundamental's phase.
+struct LocalFrequency {
+  double frequency = 0.0;             ///< cycles per sample
+  double standard_uncertainty = 0.0;  ///< from the scatter of the phase; 0 below 3 cycles
+};
+/// begin, period   in samples; the stretch of `cycles` (2 or more) periods must lie within [-1, samples]
+LocalFrequency local_frequency(const Prepared& channel, double begin, double period, int cycles);
+
 /// The whole cycles of a record, ends snapped to samples where the frequency's uncertainty allows it.
 struct CycleWindow {
   SpanSum span;

@@ -92,21 +92,6 @@ std::vector<Complex> span_lines(const Samples& samples, const SpanSum& span, dou
   return lines;
 }
 
-/// Takes the lines out of the samples.
-void subtract_lines(std::vector<double>& samples, const std::vector<Complex>& lines, double period) {
-  const double omega = kTwoPi / period;
-  for (std::size_t k = 0; k < samples.size(); ++k) {
-    const Complex base = std::polar(1.0, std::fmod(static_cast<double>(k) * omega, kTwoPi));
-    Complex sum = 0.0;  // Horner in exp(j w k)
-    for (std::size_t h = lines.size(); h-- > 0;) {
-      const Complex term = sum + lines[h];
-      sum = {term.real() * base.real() - term.imag() * base.imag(),
-             term.real() * base.imag() + term.imag() * base.real()};
-    }
-    samples[k] -= sum.real();
-  }
-}
-
 /// Weights of eight neighbouring samples at 0 .. 7 for a position among them (Lagrange).
 std::array<double, 8> lagrange(double position) {
   std::array<double, 8> weight{};
@@ -125,6 +110,20 @@ std::array<double, 8> lagrange(double position) {
 
 Complex fundamental_sum(const Prepared& channel, const SpanSum& span, double period) {
   return span_lines(channel, span, period, 0.0, 1)[0];
+}
+
+void subtract_lines(std::vector<double>& samples, const std::vector<Complex>& lines, double period) {
+  const double omega = kTwoPi / period;
+  for (std::size_t k = 0; k < samples.size(); ++k) {
+    const Complex base = std::polar(1.0, std::fmod(static_cast<double>(k) * omega, kTwoPi));
+    Complex sum = 0.0;  // Horner in exp(j w k)
+    for (std::size_t h = lines.size(); h-- > 0;) {
+      const Complex term = sum + lines[h];
+      sum = {term.real() * base.real() - term.imag() * base.imag(),
+             term.real() * base.imag() + term.imag() * base.real()};
+    }
+    samples[k] -= sum.real();
+  }
 }
 
 std::vector<Complex> line_amplitudes(const Prepared& channel, const CycleWindow& window, double mean,

@@ -20,6 +20,10 @@ std::complex<double> fundamental_sum(const Prepared& channel, const SpanSum& spa
 std::vector<std::complex<double>> line_amplitudes(const Prepared& channel, const CycleWindow& window,
                                                   double mean, int orders);
 
+/// Takes the lines of orders 1 .. out of the samples; sample 0 is the record's first.
+void subtract_lines(std::vector<double>& samples, const std::vector<std::complex<double>>& lines,
+                    double period);
+
 /// `count` equidistant values over [begin, begin + length), by 8-point interpolation (Lagrange) of the
 /// samples; where the points fall on samples, the samples.
 void resample(const Prepared& channel, double begin, double length, std::size_t count, double* into);

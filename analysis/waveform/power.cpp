@@ -4,6 +4,9 @@
 #include <cmath>
 #include <complex>
 #include <numbers>
+#include <vector>
+
+#include "analysis/waveform/scatter.h"
 
 namespace loadstair::waveform {
 namespace {
@@ -76,6 +79,13 @@ base::Outcome<Power> powers(const Prepared& v, const Prepared& i, const ChannelA
     out.ripple_w += delay_correction(voltage, current, delay_difference_s, frequency_hz);
   }
   out.active_w = v_mean * i_mean + out.ripple_w;
+  std::vector<double> by_part;
+  for (const SpanSum& part : parts_of(window, v.size())) {
+    by_part.push_back(part.mean([&](std::size_t k) { return v[k] * i[k]; }));
+  }
+  const Scatter scatter = scatter_of(by_part);
+  out.active_standard_uncertainty_w = scatter.standard_uncertainty;
+  out.degrees_of_freedom = scatter.degrees_of_freedom;
   out.power_factor = out.active_w / out.apparent_va;
   out.nonactive_var = root_of(out.apparent_va * out.apparent_va - out.active_w * out.active_w);
   if (window.cycles == 0) {

@@ -3,6 +3,7 @@
 #include <algorithm>
 #include <cmath>
 #include <limits>
+#include <optional>
 #include <string>
 
 #include "analysis/base/number.h"
@@ -65,6 +66,24 @@ bool same_gap(double a, double b) {
   return !std::isfinite(b) && std::isinf(a) == std::isinf(b) && (!std::isinf(a) || (a > 0.0) == (b > 0.0));
 }
 
+/// Squares of squares must stay numbers: magnitudes beyond 1e60, or all below 1e-60, are no measurement.
+std::optional<Refusal> beyond_numbers(const Channel& channel, const Range& range, std::size_t finite) {
+  if (finite == 0) return std::nullopt;
+  constexpr double kMost = 1e60;
+  constexpr double kLeast = 1e-60;
+  const double scale = std::abs(channel.scale);
+  const double largest = std::max(std::abs(range.low), std::abs(range.high));
+  const bool zero = largest == 0.0;
+  const double value = scale * largest + std::abs(channel.offset);
+  const bool good = value <= kMost && scale <= kMost && scale >= kLeast && largest <= kMost &&
+                    (zero || largest >= kLeast) && (zero || scale * largest >= kLeast);
+  if (good) return std::nullopt;
+  return Refusal{"channel " + channel.name, "values of " + base::print_significant(largest, 3) +
+                                                " with a scale of " +
+                                                base::print_significant(channel.scale, 3) +
+                                                " are beyond what can be computed: check scale and unit"};
+}
+
 }  // namespace
 
 base::Outcome<Prepared> prepare(const Channel& channel) {
@@ -90,6 +109,7 @@ base::Outcome<Prepared> prepare(const Channel& channel) {
     }
   }
   const std::size_t count = channel.values.size();
+  if (const auto reason = beyond_numbers(channel, range, finite)) return *reason;
   if (finite == 0) return Refusal{place, "all " + count_text(count) + " samples are clipped or blank"};
   out.missing = count - finite;
   if (out.missing > 0) {

@@ -18,6 +18,8 @@ using base::Refusal;
 
 constexpr std::size_t kLeastSamples = 16;
 constexpr double kLeastSamplesPerCycle = 8.0;
+constexpr double kLeastInterval_s = 1e-15;
+constexpr double kMostInterval_s = 1e6;
 
 std::string count_text(std::size_t count) {
   return base::print_integer(static_cast<std::int64_t>(count));
@@ -27,6 +29,10 @@ std::optional<Refusal> unfit(const Waveform& waveform, const AnalysisSettings& s
   if (waveform.channels.empty()) return Refusal{"record", "it has no channel"};
   if (!(waveform.interval_s > 0.0) || !std::isfinite(waveform.interval_s)) {
     return Refusal{"record", "the sample interval must be above zero"};
+  }
+  if (waveform.interval_s < kLeastInterval_s || waveform.interval_s > kMostInterval_s) {
+    return Refusal{"record", "a sample interval of " + base::print_significant(waveform.interval_s, 3) +
+                                 " s is none that a scope has: check its unit"};
   }
   const std::size_t count = waveform.channels.front().values.size();
   if (count < kLeastSamples) {
@@ -54,8 +60,9 @@ std::optional<Refusal> unfit(const Waveform& waveform, const AnalysisSettings& s
 }
 
 /// The fundamental of the voltage when named, else of the channel where it stands out most.
+/// Its channel goes into `reference`.
 Outcome<FoundFundamental> common_fundamental(const Waveform& waveform, const std::vector<Prepared>& prepared,
-                                             const AnalysisSettings& settings) {
+                                             const AnalysisSettings& settings, std::size_t& reference) {
   double low = 0.0;
   double high = 0.5;
   if (settings.fundamental_hz) {
@@ -64,12 +71,15 @@ Outcome<FoundFundamental> common_fundamental(const Waveform& waveform, const std
   }
   if (waveform.voltage) {
     Outcome<FoundFundamental> found = find_fundamental(prepared[*waveform.voltage], low, high);
+    reference = *waveform.voltage;
     if (found) return found;
   }
   Outcome<FoundFundamental> best = Refusal{"record", "no fundamental: no channel alternates"};
-  for (const Prepared& channel : prepared) {
-    Outcome<FoundFundamental> found = find_fundamental(channel, low, high);
-    if (found && (!best || found->share > best->share)) best = std::move(found);
+  for (std::size_t c = 0; c < prepared.size(); ++c) {
+    Outcome<FoundFundamental> found = find_fundamental(prepared[c], low, high);
+    if (!found || (best && found->share <= best->share)) continue;
+    best = std::move(found);
+    reference = c;
   }
   return best;
 }
@@ -92,16 +102,17 @@ bool is_drift(const Prepared& channel) {
   return 2.0 * mean_square > square;
 }
 
-/// The window, or a direct one (cycles = 0), or a refusal.
+/// The window, or a direct one (cycles = 0), or a refusal. reference: the channel whose fundamental it is.
 Outcome<CycleWindow> choose_window(const Waveform& waveform, const std::vector<Prepared>& prepared,
-                                   const AnalysisSettings& settings, WaveformResult& result) {
+                                   const AnalysisSettings& settings, WaveformResult& result,
+                                   std::size_t& reference) {
   CycleWindow direct;
   direct.span = SpanSum::whole_samples(0, prepared.front().size());
   if (settings.expected == Expected::direct) {
     result.fundamental = Refusal{"record", "no fundamental: taken as direct"};
     return direct;
   }
-  const Outcome<FoundFundamental> found = common_fundamental(waveform, prepared, settings);
+  const Outcome<FoundFundamental> found = common_fundamental(waveform, prepared, settings, reference);
   if (!found) {
     if (settings.expected == Expected::alternating) return found.refusal();
     result.fundamental = found.refusal();
@@ -124,7 +135,7 @@ Outcome<CycleWindow> choose_window(const Waveform& waveform, const std::vector<P
                                  base::print_significant(kLeastSamplesPerCycle * frequency_hz, 3) +
                                  " Hz or faster"};
   }
-  result.fundamental = Fundamental{1.0 / (window.period * waveform.interval_s),
+  result.fundamental = Fundamental{1.0 / (window.period * waveform.interval_s), frequency_hz,
                                    found->standard_uncertainty / waveform.interval_s};
   return window;
 }
@@ -166,14 +177,17 @@ base::Outcome<WaveformResult> analyse(const Waveform& waveform, const AnalysisSe
   result.interval_s = waveform.interval_s;
   result.voltage = waveform.voltage;
   result.current = waveform.current;
-  const Outcome<CycleWindow> chosen = choose_window(waveform, prepared, settings, result);
+  std::size_t reference = 0;
+  const Outcome<CycleWindow> chosen = choose_window(waveform, prepared, settings, result, reference);
   if (!chosen) return chosen.refusal();
   const CycleWindow& window = chosen.value();
+  Outcome<std::vector<GroupWindow>> windows = Refusal{"grouping", "no fundamental"};
+  if (window.cycles > 0) windows = group_windows(prepared[reference], window, waveform.interval_s);
   result.window = {window.span.begin, window.span.length(), window.cycles, window.coherent};
   std::vector<ChannelAnalysis> analyses;
   for (std::size_t c = 0; c < prepared.size(); ++c) {
     analyses.push_back(
-        analyse_channel(waveform.channels[c], prepared[c], window, waveform.interval_s, settings));
+        analyse_channel(waveform.channels[c], prepared[c], window, windows, waveform.interval_s, settings));
   }
   result.power = Refusal{"power", "no voltage and current are named"};
   if (waveform.voltage && waveform.current) {

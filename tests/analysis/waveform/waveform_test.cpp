@@ -1,5 +1,6 @@
 #include "analysis/waveform/waveform.h"
 
+#include <algorithm>
 #include <catch2/catch.hpp>
 #include <cmath>
 #include <limits>
@@ -134,9 +135,16 @@ TEST_CASE("noise and 8-bit steps leave results within what they can do") {
   CHECK(std::abs(result->fundamental->frequency_hz - 50.3) <
         5.0 * result->fundamental->standard_uncertainty_hz + 1e-9);
   CHECK(result->fundamental->standard_uncertainty_hz < 0.005);
+  // The noise is taken from the median of some 350 lines between the harmonics: its power to 1/(ln 2 sqrt
+  // 350) = 7.7 %, its RMS to 3.9 %; three of that.
   CHECK(channel.thd_floor ==
-        Approx(channel.residual_rms * std::sqrt(2.0 / result->window.length_samples * 39.0) /
-               channel.harmonics[0].rms));
+        Approx(deviation * std::sqrt(2.0 / 10000.0 * 39.0) / (325.0 / std::numbers::sqrt2)).epsilon(0.12));
+  CHECK(channel.noise_rms == Approx(deviation).epsilon(0.05));
+  // Order 40 has 0.14 V, a line of noise 0.028 V; the even orders hold nothing.
+  CHECK(channel.line_floor_rms == Approx(3.0 * deviation * std::sqrt(2.0 / 10000.0)).epsilon(0.12));
+  CHECK_FALSE(channel.harmonics[39].below_floor);
+  const auto& below = channel.orders_below_floor;
+  CHECK(std::count_if(below.begin(), below.end(), [](int order) { return order % 2 == 0; }) == 19);
 }
 
 TEST_CASE("groups are given for ten cycles at 50 Hz and twelve at 60 Hz, else why not") {
