@@ -15,6 +15,10 @@ enum class Scope { fixed, per_run, per_level, other };
 /// Read off the key (source.h): meter/..., component/..., window/....
 [[nodiscard]] Scope scope_of(const Source& source);
 
+/// Which error of a meter a source is: "gain", "offset", "linearity", "resolution", ...; empty where it is
+/// none of a meter's.
+[[nodiscard]] std::string_view meter_part_of(const Source& source);
+
 /// Shares of an estimate's variance; they sum to 1, or are all zero for an exact estimate.
 struct ScopeShares {
   double fixed = 0;
