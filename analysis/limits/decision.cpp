@@ -1,27 +1,20 @@
-#include <gsl/gsl_cdf.h>
-
 #include <algorithm>
 #include <cmath>
 #include <string>
 
 #include "analysis/base/number.h"
+#include "analysis/estimate/distribution_function.h"
 #include "analysis/limits/limits.h"
 
 namespace loadstair::limits {
 
 namespace {
 
-/// Beyond this Student's t and the normal distribution agree to double's precision.
-constexpr double kNormalFrom = 1e10;
-
 /// Probability of a quantity below a limit.
 double below(double limit, const estimate::Coverage& result) {
   if (!(result.standard_uncertainty > 0)) return result.value <= limit ? 1 : 0;
   const double distance = (limit - result.value) / result.standard_uncertainty;
-  if (!(result.degrees_of_freedom > 0) || result.degrees_of_freedom > kNormalFrom) {
-    return gsl_cdf_ugaussian_P(distance);
-  }
-  return gsl_cdf_tdist_P(distance, result.degrees_of_freedom);
+  return estimate::student_below(distance, result.degrees_of_freedom);
 }
 
 std::optional<std::string> fault_of(const Tolerance& tolerance) {
@@ -38,6 +31,9 @@ std::optional<std::string> fault_of(const Tolerance& tolerance) {
 std::optional<std::string> fault_of(const estimate::Coverage& result, const Rule& rule) {
   if (!std::isfinite(result.value) || !std::isfinite(result.low) || !std::isfinite(result.high)) {
     return "the result or its interval is not a finite number";
+  }
+  if (result.standard_uncertainty > 0 && !(result.degrees_of_freedom > 0)) {
+    return "the result's degrees of freedom are not above zero";
   }
   if (!(rule.guard_factor >= 0) || !std::isfinite(rule.guard_factor)) {
     return "the guard factor is not a number from 0 up";
@@ -81,9 +77,9 @@ std::string shown(double value, int places, std::string_view unit) {
   return out;
 }
 
-/// A limit with as many places as it takes, at least those of the result.
+/// A limit to six digits, without the zeros that they would end on.
 std::string shown_limit(double limit, std::string_view unit) {
-  std::string out = base::print_significant(limit, 6);
+  std::string out = base::print_number(base::parse_number(base::print_significant(limit, 6)).value_or(limit));
   if (!unit.empty()) out += " " + std::string{unit};
   return out;
 }
@@ -109,7 +105,7 @@ std::string text_of(const Decision& decision, const estimate::Coverage& result, 
   out += ": " + shown(result.value, places, unit) + ", 95 % interval " + shown(result.low, places, unit) +
          " to " + shown(result.high, places, unit) + ", allowed " + limits_text(decision.tolerance, unit);
   out += decision.guard_factor > 0
-             ? ", guard band " + base::print_significant(decision.guard_factor, 3) + " U"
+             ? ", guard band " + base::print_number(decision.guard_factor) + " U"
              : ", simple acceptance without a guard band";
   return out + "; probability of conformity " + probability_text(decision.conforming_probability);
 }
