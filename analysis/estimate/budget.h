@@ -27,6 +27,15 @@ struct Budget {
   std::vector<BudgetLine> lines;  ///< largest share first, then by name
 };
 
+/// What an action is taken to do, each on its own:
+///   tie check           where another meter of that function, on a range within a factor of 5, acts the
+///   other way (the ratio is what counts):
+///                       made in the same run, both meters' gains go, fixed and per run, and one more
+///                       linearity error of each comes, from the tie's level; its own noise is not counted.
+///                       Without such a partner: tied to a much better meter, the fixed part goes.
+///   zero check          the offset goes, fixed and per run
+///   longer window       variance_left of the variance; the degrees of freedom grow as the readings do
+///   all others          variance_left of the variance of every source of the line
 /// Source: JCGM 100:2008 7.2.7 (what a budget states); H.1 table H.1 (its form).
 [[nodiscard]] Budget budget(const Estimate& a);
 
