@@ -8,13 +8,15 @@
 
 namespace loadstair::setup {
 
-extern const document::Form kHookupForm, kInstrumentForm, kLinkForm, kChannelForm, kConversionForm,
-    kShuntForm, kThermocoupleForm, kRangeForm, kPortForm, kControlForm, kLoadForm, kTemperatureForm,
-    kCaptureForm, kRehearsalForm, kRehearsedConverterForm, kRehearsedSourceForm, kRehearsedLoadForm,
-    kRehearsedThermalForm, kRehearsedWaveformForm, kRehearsedMetersForm, kRehearsedPersonForm;
-extern const document::Form kStairForm, kPrototypeForm, kRatingsForm, kEnvironmentForm, kStaircaseForm,
-    kStepForm, kSetPointForm, kSettleForm, kElectricalForm, kThermalForm, kPredictionForm, kGuardForm,
-    kEndForm;
+extern const document::Form kHookupForm, kInstrumentForm, kLinkForm, kChannelForm, kConditionsForm,
+    kConversionForm, kShuntForm, kThermocoupleForm, kPlatinumForm, kThermistorForm, kRangeForm, kPortForm,
+    kControlForm, kLoadForm, kTemperatureForm, kCaptureForm, kRehearsalForm, kRehearsedConverterForm,
+    kRehearsedSourceForm, kRehearsedLoadForm, kRehearsedThermalForm, kRehearsedWaveformForm,
+    kRehearsedMetersForm, kRehearsedPersonForm;
+extern const document::Form kStairForm, kPrototypeForm, kRatingsForm, kOverloadForm, kEnvironmentForm,
+    kStaircaseForm, kStepForm, kSetPointForm, kSettleForm, kElectricalForm, kThermalForm, kPredictionForm,
+    kChecksForm, kZeroForm, kTieForm, kTieLevelForm, kIdleForm, kClosureForm, kLimitForm, kDecisionForm,
+    kGuardForm, kEndForm;
 extern const document::Form kProfileForm, kProfileValueForm, kProfileQueryForm, kProfileSettingForm,
     kProfileSafeForm;
 

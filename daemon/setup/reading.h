@@ -40,6 +40,16 @@ void require_known(document::ObjectReader& reader, std::string_view key, std::st
 [[nodiscard]] std::string plain_unit(document::ObjectReader& reader, std::string_view key,
                                      const std::string& written);
 
+/// Calls `read` with a reader of the object under the key, when it is there.
+template <class Read>
+void with_object(document::ObjectReader& parent, std::string_view key, const document::Form& form,
+                 Read read) {
+  const auto* value = parent.maybe(key, document::Type::object);
+  if (value == nullptr) return;
+  document::ObjectReader reader{*value, form, parent.problem()};
+  if (!parent.problem().found()) read(reader);
+}
+
 /// Calls `each(reader, index)` for every object of the list under the key, until a problem is found.
 template <class Each>
 void for_objects(document::ObjectReader& top, std::string_view key, const document::Form& form, Each each) {

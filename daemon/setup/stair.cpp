@@ -15,9 +15,6 @@ using document::print_text;
 using document::Problem;
 using document::Type;
 
-// A day: a longer wait is a slip of the unit.
-constexpr document::Bounds kWait{0.0, 86400.0, false};
-constexpr document::Bounds kPositiveWait{0.0, 86400.0, true};
 // No bench that one person tests on is beyond these.
 constexpr document::Bounds kVoltage{0.0, 1e6, true};
 constexpr document::Bounds kPower{0.0, 1e9, true};
@@ -30,15 +27,6 @@ constexpr std::array kMissingActions = {Choice<MissingAction>{"ignore", MissingA
                                         Choice<MissingAction>{"stop", MissingAction::stop},
                                         Choice<MissingAction>{"hold", MissingAction::hold},
                                         Choice<MissingAction>{"next", MissingAction::next}};
-
-// Calls `read` with a reader of the object under the key, when it is there.
-template <class Read>
-void with_object(ObjectReader& parent, std::string_view key, const document::Form& form, Read read) {
-  const auto* value = parent.maybe(key, Type::object);
-  if (value == nullptr) return;
-  ObjectReader reader{*value, form, parent.problem()};
-  if (!parent.problem().found()) read(reader);
-}
 
 void read_prototype(ObjectReader& reader, Stair& stair) {
   stair.prototype.name = reader.text("name", "\"name\": \"Marten\"");
@@ -53,6 +41,8 @@ void read_ratings(ObjectReader& reader, Stair& stair) {
   ratings.output_power_w = reader.number("output_power_w", kPower, "\"output_power_w\": 600");
   ratings.output_frequency_hz = reader.number_or("output_frequency_hz", {0.0, 1000.0}, 0.0);
   ratings.highest_ambient_c = reader.number_or("highest_ambient_c", kCelsius, 40.0);
+  ratings.expected_efficiency_percent =
+      reader.number_or("expected_efficiency_percent", {0.0, 100.0, true}, 95.0);
 }
 
 ElectricalSettle read_electrical(ObjectReader& reader) {
@@ -77,16 +67,6 @@ ThermalSettle read_thermal(ObjectReader& reader) {
     settle.slowest_tau_s = prediction.number_or("slowest_tau_s", kWait, 0.0);
   });
   return settle;
-}
-
-void read_set_points(ObjectReader& reader, Step& step) {
-  for_objects(reader, "set", kSetPointForm, [&](ObjectReader& point_reader, std::size_t) {
-    SetPoint point;
-    point.control = point_reader.text("control", "\"control\": \"load\"");
-    point.setting = point_reader.text("setting", "\"setting\": \"power\"");
-    point.value = point_reader.number("value", document::kAnyNumber, "\"value\": 180");
-    step.set.push_back(std::move(point));
-  });
 }
 
 void read_step(ObjectReader& reader, std::size_t index, Stair& stair) {
@@ -166,6 +146,9 @@ Stair read_top(const document::Value& document, const std::string& file, Problem
     problem.report(top.place(),
                    "a stair file needs steps; add a \"staircase\" over load levels, or \"steps\"");
   }
+  if (problem.found()) return stair;
+  read_checks(top, stair);
+  read_limits(top, stair);
   for_objects(top, "guards", kGuardForm,
               [&](ObjectReader& reader, std::size_t) { read_guard(reader, stair); });
   with_object(top, "end", kEndForm, [&](ObjectReader& reader) {
@@ -176,6 +159,16 @@ Stair read_top(const document::Value& document, const std::string& file, Problem
 }
 
 }  // namespace
+
+void read_set_points(ObjectReader& reader, Step& step) {
+  for_objects(reader, "set", kSetPointForm, [&](ObjectReader& point_reader, std::size_t) {
+    SetPoint point;
+    point.control = point_reader.text("control", "\"control\": \"load\"");
+    point.setting = point_reader.text("setting", "\"setting\": \"power\"");
+    point.value = point_reader.number("value", document::kAnyNumber, "\"value\": 180");
+    step.set.push_back(std::move(point));
+  });
+}
 
 void read_conduct(ObjectReader& reader, Step& step) {
   step.prompt = reader.text_or("prompt", "");

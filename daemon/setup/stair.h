@@ -72,12 +72,13 @@ struct Step {
   std::string label;
   StepKind kind = StepKind::level;
   std::size_t check = 0;  ///< ties: which of Stair::ties; closure: index of the step that is visited again
-  std::vector<std::string> on;  ///< ties and standby: controls that are on; see controls_on()
+  std::vector<std::string> on;  ///< ties, standby, no load: controls that are on; see controls_on()
   /// Asked with everything switched off and discharged, before anything else of this step: the wiring is
   /// changed. Empty: none.
   std::string rewire;
-  std::string rewire_action;  ///< what the rehearsal does then
-  std::string written_at;     ///< where in the file: "staircase" or "steps/0", a path of drivers/document
+  std::string rewire_action;  ///< what the rehearsal does then; "; " between two actions
+  std::string written_at;     ///< where in the file: "staircase", "steps/0", "checks/zero", ...: a path of
+                              ///< drivers/document
   double load_w = 0.0;        ///< nominal output power of the step, for the curve and the weights
   std::optional<double> input_voltage_v;
   std::vector<SetPoint> set;
@@ -146,8 +147,9 @@ struct Stair {
   End end;
 };
 
-/// The controls that are on during a step: none at a zero, those of `on` at a tie, sources at standby, all
-/// but loads without load, else all. In the order of the hook-up file.
+/// The controls that are on during a step: none at a zero, those of `on` at a tie; at standby and without
+/// load those of `on`, or, where it names none, sources at standby and all but loads without load; else all.
+/// In the order of the hook-up file.
 [[nodiscard]] std::vector<std::string> controls_on(const Step& step, const Hookup& hookup);
 
 /// Reads a stair file's text; the short form over load levels is expanded into steps.

@@ -81,16 +81,6 @@ std::string voltage_label(double voltage_v) {
   return " at " + base::print_number(voltage_v) + " V";
 }
 
-// "10 %" a second time (a stair that comes down again) is "10 % (2)".
-std::string unique_label(const std::string& wanted, const std::vector<Step>& steps) {
-  const auto taken = [&](const std::string& label) {
-    return std::any_of(steps.begin(), steps.end(), [&](const Step& step) { return step.label == label; });
-  };
-  std::string label = wanted;
-  for (int n = 2; taken(label); ++n) label = wanted + " (" + base::print_integer(n) + ")";
-  return label;
-}
-
 // "Set the lamps to {load_w} W." with the figures of this step.
 std::string fill_in(std::string text, const Level& level) {
   const auto replace = [&](std::string_view what, const std::string& with) {
@@ -125,6 +115,15 @@ void add_step(ObjectReader& reader, const Plan& plan, const Level& level, std::o
 }
 
 }  // namespace
+
+std::string unique_label(const std::string& wanted, const std::vector<Step>& steps) {
+  const auto taken = [&](const std::string& label) {
+    return std::any_of(steps.begin(), steps.end(), [&](const Step& step) { return step.label == label; });
+  };
+  std::string label = wanted;
+  for (int n = 2; taken(label); ++n) label = wanted + " (" + base::print_integer(n) + ")";
+  return label;
+}
 
 void read_staircase(ObjectReader& reader, Stair& stair) {
   Plan plan;

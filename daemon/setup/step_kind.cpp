@@ -30,7 +30,7 @@ std::vector<std::string> controls_on(const Step& step, const Hookup& hookup) {
     if (step.kind == StepKind::zero) is_on = false;
     if (step.kind == StepKind::tie) is_on = named;
     if (step.kind == StepKind::standby) is_on = step.on.empty() ? control.role == "source" : named;
-    if (step.kind == StepKind::no_load) is_on = control.role != "load";
+    if (step.kind == StepKind::no_load) is_on = step.on.empty() ? control.role != "load" : named;
     if (is_on) on.push_back(control.name);
   }
   return on;
