@@ -103,6 +103,42 @@ std::string read_column(ObjectReader& reader, std::string_view key) {
   return {};
 }
 
+// An error of the voltage's or the current's column without the column says which of the two was forgotten.
+void refuse_lonely_errors(ObjectReader& reader, const CaptureSource& capture) {
+  const auto refuse = [&](bool there, std::string_view column, std::initializer_list<std::string_view> keys) {
+    for (const auto key : keys) {
+      if (there || !reader.has(key)) continue;
+      reader.complain(key, print_text(key) + " belongs to the column of the " + std::string{column} +
+                               ", but no \"" + std::string{column} + "\" is named; add it, or remove this");
+    }
+  };
+  refuse(!capture.voltage_column.empty(), "voltage",
+         {"voltage_offset_v", "voltage_bandwidth_hz", "voltage_linearity_percent"});
+  refuse(!capture.current_column.empty(), "current",
+         {"current_offset_a", "current_bandwidth_hz", "current_linearity_percent", "current_delay_s",
+          "deskewed", "phase_tolerance_deg"});
+}
+
+void read_capture_errors(ObjectReader& reader, CaptureSource& capture) {
+  // A second between two probes is a slip of the unit.
+  constexpr document::Bounds kDelay{-1.0, 1.0};
+  constexpr document::Bounds kPercent{0.0, 100.0};
+  capture.voltage_offset_v = reader.number_or("voltage_offset_v", document::kNotNegative, 0.0);
+  capture.current_offset_a = reader.number_or("current_offset_a", document::kNotNegative, 0.0);
+  capture.voltage_bandwidth_hz = reader.maybe_number("voltage_bandwidth_hz", kPositive);
+  capture.current_bandwidth_hz = reader.maybe_number("current_bandwidth_hz", kPositive);
+  capture.voltage_linearity_percent = reader.number_or("voltage_linearity_percent", kPercent, 0.0);
+  capture.current_linearity_percent = reader.number_or("current_linearity_percent", kPercent, 0.0);
+  capture.current_delay_s = reader.number_or("current_delay_s", kDelay, 0.0);
+  capture.delay_tolerance_s = reader.number_or("delay_tolerance_s", {0.0, 1.0}, 0.0);
+  capture.deskewed = read_date(reader, "deskewed");
+  capture.phase_tolerance_deg = reader.number_or("phase_tolerance_deg", {0.0, 90.0}, 0.0);
+  // A thousandth: any crystal is better, and a larger number is parts per billion.
+  capture.timebase_ppm = reader.number_or("timebase_ppm", {0.0, 1000.0}, 0.0);
+  capture.crest_band_hz = reader.maybe_number("crest_band_hz", kPositive);
+  refuse_lonely_errors(reader, capture);
+}
+
 void read_capture(ObjectReader& reader, Hookup& hookup) {
   CaptureSource capture;
   capture.instrument = reader.text("instrument", "\"instrument\": \"scope\"");
@@ -129,8 +165,7 @@ void read_capture(ObjectReader& reader, Hookup& hookup) {
   }
   capture.voltage_gain_percent = reader.number_or("voltage_gain_percent", {0.0, 100.0}, 0.0);
   capture.current_gain_percent = reader.number_or("current_gain_percent", {0.0, 100.0}, 0.0);
-  // A second between two probes is a slip of the unit.
-  capture.delay_tolerance_s = reader.number_or("delay_tolerance_s", {0.0, 1.0}, 0.0);
+  read_capture_errors(reader, capture);
   hookup.captures.push_back(std::move(capture));
 }
 

@@ -29,54 +29,6 @@ constexpr std::array kResponses = {Choice<Response>{"dc", Response::dc},
 // Shares in percent of a reading: beyond all of it nothing was measured.
 constexpr Bounds kPercent{0.0, 100.0, false};
 
-Shunt read_shunt(const document::Value& value, document::Problem& problem) {
-  Shunt shunt;
-  ObjectReader reader{value, kShuntForm, problem};
-  if (problem.found()) return shunt;
-  shunt.resistance_ohm = reader.number("resistance_ohm", kPositive, "\"resistance_ohm\": 0.1");
-  shunt.tolerance_percent = reader.number_or("tolerance_percent", kPercent, 0.0);
-  shunt.tempco_ppm_per_k = reader.number_or("tempco_ppm_per_k", {-10000.0, 10000.0}, 0.0);
-  shunt.rise_k_per_w = reader.number_or("rise_k_per_w", kNotNegative, 0.0);
-  return shunt;
-}
-
-Thermocouple read_thermocouple(const document::Value& value, document::Problem& problem) {
-  Thermocouple couple;
-  ObjectReader reader{value, kThermocoupleForm, problem};
-  if (problem.found()) return couple;
-  const std::string letter = reader.text("letter", "\"letter\": \"K\"");
-  if (letter.size() != 1 || std::string_view{"BEJKNRST"}.find(letter) == std::string_view::npos) {
-    reader.complain("letter",
-                    "\"letter\" is " + print_text(letter) + "; it must be B, E, J, K, N, R, S or T");
-  } else {
-    couple.letter = letter.front();
-  }
-  couple.tolerance_class = reader.integer_or("tolerance_class", 1, 3, 2);
-  couple.cold_junction = reader.text_or("cold_junction", "");
-  return couple;
-}
-
-Conversion read_conversion(ObjectReader& channel) {
-  Conversion conversion;
-  const auto* value = channel.maybe("conversion", Type::object);
-  if (value == nullptr) return conversion;
-  ObjectReader reader{*value, kConversionForm, channel.problem()};
-  if (channel.problem().found()) return conversion;
-  conversion.scale = reader.number_or("scale", document::kAnyNumber, 1.0);
-  if (conversion.scale == 0.0) reader.complain("scale", "\"scale\" is 0; every reading would become 0");
-  conversion.scale_tolerance_percent = reader.number_or("scale_tolerance_percent", kPercent, 0.0);
-  if (reader.has("shunt") && reader.has("thermocouple")) {
-    reader.complain("thermocouple", "a channel has a shunt or a thermocouple, not both; remove one");
-  }
-  if (const auto* shunt = reader.maybe("shunt", Type::object)) {
-    conversion.shunt = read_shunt(*shunt, channel.problem());
-  }
-  if (const auto* couple = reader.maybe("thermocouple", Type::object)) {
-    conversion.thermocouple = read_thermocouple(*couple, channel.problem());
-  }
-  return conversion;
-}
-
 void read_range(ObjectReader& reader, Channel& channel) {
   RangeSpec range;
   range.upto = reader.number("upto", kPositive, "\"upto\": 600");
@@ -118,39 +70,6 @@ void read_range(ObjectReader& reader, Channel& channel) {
                     "a tolerance without its \"impedance_ohm\"; add that, or remove it");
   }
   channel.ranges.push_back(range);
-}
-
-// What the meter must deliver, in which unit, for the conversion to give the quantity.
-std::string_view meter_unit_wanted(const Channel& channel) {
-  if (channel.conversion.shunt) return "V";
-  const auto& couple = channel.conversion.thermocouple;
-  if (couple) return couple->cold_junction.empty() ? "degC" : "V";
-  return unit_of(channel.quantity);
-}
-
-void check_conversion(ObjectReader& reader, const Channel& channel, std::string_view meter_unit) {
-  if (channel.conversion.shunt && channel.quantity != Quantity::current) {
-    reader.complain("conversion", "a shunt turns a voltage into a current, but \"quantity\" is " +
-                                      std::string{name_of(channel.quantity)} +
-                                      "; write current, or remove the shunt");
-  }
-  if (channel.conversion.thermocouple && channel.quantity != Quantity::temperature) {
-    reader.complain("conversion", "a thermocouple gives a temperature, but \"quantity\" is " +
-                                      std::string{name_of(channel.quantity)} +
-                                      "; write temperature, or remove the thermocouple");
-  }
-  if (channel.typed) return;
-  const std::string_view wanted = meter_unit_wanted(channel);
-  // A written scale may carry a unit: 10 A/V of a current probe.
-  const bool scaled =
-      channel.conversion.scale != 1.0 && !channel.conversion.shunt && !channel.conversion.thermocouple;
-  if (meter_unit == wanted || scaled) return;
-  reader.complain(
-      "value", "the value " + print_text(channel.value) + " comes in " + std::string{meter_unit} + ", but " +
-                   (channel.conversion.shunt || channel.conversion.thermocouple
-                        ? "this conversion starts from "
-                        : "a " + std::string{name_of(channel.quantity)} + " without conversion needs ") +
-                   std::string{wanted} + "; choose another value, or add the conversion between the two");
 }
 
 void check_response(ObjectReader& reader, Channel& channel) {
@@ -212,6 +131,63 @@ void check_other_channels(ObjectReader& reader, const Hookup& hookup, const Chan
   }
 }
 
+// Where the book says that its figures hold.
+Conditions read_conditions(ObjectReader& reader, const Channel& channel) {
+  Conditions conditions;
+  constexpr Bounds kCelsius{-60.0, 200.0, false};
+  conditions.low_c = reader.maybe_number("low_c", kCelsius);
+  conditions.high_c = reader.maybe_number("high_c", kCelsius);
+  conditions.percent_of_spec_per_k = reader.maybe_number("percent_of_spec_per_k", {0.0, 1000.0});
+  conditions.days = reader.maybe_number("days", {0.0, 36525.0, true});
+  conditions.least_percent_of_range = reader.maybe_number("least_percent_of_range", kPercent);
+  conditions.least_hz = reader.maybe_number("least_hz", kNotNegative);
+  conditions.least_power_factor = reader.maybe_number("least_power_factor", {0.0, 1.0});
+  if (conditions.low_c && conditions.high_c && *conditions.low_c >= *conditions.high_c) {
+    reader.complain("low_c",
+                    "\"low_c\" is not below \"high_c\", so the figures hold nowhere; the two may be "
+                    "swapped");
+  }
+  if (conditions.percent_of_spec_per_k && !conditions.low_c && !conditions.high_c) {
+    reader.complain("percent_of_spec_per_k",
+                    "beyond which temperatures? add \"low_c\" and \"high_c\", for example 18 and 28");
+  }
+  if (conditions.least_hz && channel.response == Response::dc) {
+    reader.complain("least_hz",
+                    "the response dc has no lower end of its band; remove it, or correct "
+                    "\"response\"");
+  }
+  if (conditions.least_hz && channel.band_hz && *conditions.least_hz >= *channel.band_hz) {
+    reader.complain("least_hz",
+                    "\"least_hz\" is not below \"band_hz\", so the band is empty; the two may be swapped");
+  }
+  if (conditions.least_power_factor && channel.quantity != Quantity::power) {
+    reader.complain("least_power_factor", "a least power factor belongs to a power, but \"quantity\" is " +
+                                              std::string{name_of(channel.quantity)} + "; remove it");
+  }
+  return conditions;
+}
+
+// What the meter is, beyond its ranges.
+void read_meter(ObjectReader& reader, Channel& channel) {
+  channel.band_hz = reader.maybe_number("band_hz", kPositive);
+  channel.crest_limit = reader.maybe_number("crest_limit", {1.0, 1000.0});
+  with_object(reader, "conditions", kConditionsForm,
+              [&](ObjectReader& inner) { channel.conditions = read_conditions(inner, channel); });
+  channel.phase_error_deg = reader.maybe_number("phase_error_deg", {0.0, 90.0});
+  if (channel.phase_error_deg && channel.quantity != Quantity::power) {
+    reader.complain("phase_error_deg",
+                    "a phase error between voltage and current belongs to a power, but "
+                    "\"quantity\" is " +
+                        std::string{name_of(channel.quantity)} + "; remove it");
+  }
+  if (reader.has("meter")) channel.meter = reader.text("meter", "\"meter\": \"hand meter 2\"");
+  if (reader.has("meter") && !channel.typed) {
+    reader.complain("meter",
+                    "\"meter\" names a meter that is read by eye, but this channel has an "
+                    "\"instrument\"; remove one of the two");
+  }
+}
+
 void read_channel(ObjectReader& reader, Hookup& hookup) {
   Channel channel;
   channel.name = reader.text("name", "\"name\": \"input voltage\"");
@@ -229,8 +205,7 @@ void read_channel(ObjectReader& reader, Hookup& hookup) {
   channel.conversion = read_conversion(reader);
   for_objects(reader, "ranges", kRangeForm,
               [&](ObjectReader& range, std::size_t) { read_range(range, channel); });
-  channel.band_hz = reader.maybe_number("band_hz", kPositive);
-  channel.crest_limit = reader.maybe_number("crest_limit", {1.0, 1000.0});
+  read_meter(reader, channel);
   channel.low = reader.maybe_number("low", document::kAnyNumber);
   channel.high = reader.maybe_number("high", document::kAnyNumber);
   if (reader.problem().found()) return;

@@ -110,15 +110,6 @@ std::optional<std::chrono::year_month_day> parse_date(const std::string& text) {
   return date.ok() ? std::optional{date} : std::nullopt;
 }
 
-std::string read_date(ObjectReader& reader, std::string_view key) {
-  const std::string text = reader.text_or(key, "");
-  if (reader.has(key) && !parse_date(text)) {
-    reader.complain(key, print_text(key) + " is " + print_text(text) +
-                             "; it must be a date as year-month-day, such as \"2026-03-14\"");
-  }
-  return text;
-}
-
 void read_calibration(ObjectReader& reader, Instrument& one) {
   one.serial_number = reader.text_or("serial_number", "");
   one.calibrated = read_date(reader, "calibrated");
@@ -183,6 +174,15 @@ void read_instrument(ObjectReader& reader, Hookup& hookup) {
 }
 
 }  // namespace
+
+std::string read_date(ObjectReader& reader, std::string_view key) {
+  const std::string text = reader.text_or(key, "");
+  if (reader.has(key) && !parse_date(text)) {
+    reader.complain(key, print_text(key) + " is " + print_text(text) +
+                             "; it must be a date as year-month-day, such as \"2026-03-14\"");
+  }
+  return text;
+}
 
 void read_instruments(ObjectReader& top, Hookup& hookup) {
   for_objects(top, "instruments", kInstrumentForm,

@@ -14,6 +14,14 @@ void read_bench_parts(document::ObjectReader& top,
                       Hookup& hookup);  ///< controls, loads, temperatures, captures
 void read_rehearsal(document::ObjectReader& top, Hookup& hookup);
 
+/// The channel's "conversion"; refuses two sensors at once.
+[[nodiscard]] Conversion read_conversion(document::ObjectReader& channel);
+/// Does the conversion lead from the meter's unit to the quantity? Complains otherwise.
+void check_conversion(document::ObjectReader& reader, const Channel& channel, std::string_view meter_unit);
+
+/// A date under the key, ISO 8601: "2026-03-14"; empty when left out.
+[[nodiscard]] std::string read_date(document::ObjectReader& reader, std::string_view key);
+
 /// V for a voltage, degC for a temperature, ...
 [[nodiscard]] std::string_view unit_of(Quantity quantity);
 [[nodiscard]] std::string_view name_of(Quantity quantity);
