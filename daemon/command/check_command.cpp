@@ -170,7 +170,7 @@ int run_check(const CheckOptions& options) {
   for (const auto& line : setup::explain(hookup)) std::cout << line << "\n";
   if (stair) {
     std::cout << "\n";
-    for (const auto& line : setup::explain(*stair)) std::cout << line << "\n";
+    for (const auto& line : setup::explain(*stair, &hookup)) std::cout << line << "\n";
   }
   if (answers) print_answers(*answers);
   if (stair) print_guards(*stair, hookup);

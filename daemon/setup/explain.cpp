@@ -1,6 +1,7 @@
 #include "daemon/setup/explain.h"
 
 #include <algorithm>
+#include <cmath>
 
 #include "analysis/base/number.h"
 #include "daemon/setup/hookup_parts.h"
@@ -10,10 +11,6 @@ namespace {
 
 std::string number(double value) {
   return base::print_number(value);
-}
-// Six digits at most, without trailing zeros.
-std::string short_number(double value) {
-  return number(base::parse_number(base::print_significant(value, 6)).value_or(value));
 }
 std::string count(std::size_t n) {
   return base::print_integer(static_cast<std::int64_t>(n));
@@ -45,6 +42,24 @@ std::string describe(Isolation isolation) {
   return "";
 }
 
+std::string describe(const Platinum& platinum) {
+  std::string text = ", platinum of " + number(platinum.r0_ohm) + " ohm at 0 degC, class " +
+                     platinum.tolerance_class + (platinum.film ? ", film" : ", wire-wound");
+  if (platinum.lead_ohm > 0.0) text += ", two wires of " + number(platinum.lead_ohm) + " ohm together";
+  return text;
+}
+
+std::string describe(const Thermistor& thermistor) {
+  std::string text = ", thermistor ";
+  if (thermistor.r25_ohm > 0.0) {
+    text += "of " + number(thermistor.r25_ohm) + " ohm at 25 degC, beta " + number(thermistor.beta_k) + " K";
+  } else {
+    text += "by Steinhart and Hart's coefficients";
+  }
+  return text + (thermistor.tolerance_k ? " within " + number(*thermistor.tolerance_k) + " K"
+                                        : ", tolerance not declared");
+}
+
 std::string describe_conversion(const Conversion& conversion) {
   if (conversion.shunt) return ", through a shunt of " + number(conversion.shunt->resistance_ohm) + " ohm";
   if (conversion.thermocouple) {
@@ -53,21 +68,80 @@ std::string describe_conversion(const Conversion& conversion) {
                 ? ", reader compensates"
                 : ", cold junction " + conversion.thermocouple->cold_junction);
   }
+  if (conversion.platinum) return describe(*conversion.platinum);
+  if (conversion.thermistor) return describe(*conversion.thermistor);
   if (conversion.scale != 1.0) return ", times " + number(conversion.scale);
   return "";
 }
 
-std::string describe(const Channel& channel) {
+// Of the meter's own scale, which "upto" is written in.
+std::string_view unit_of_ranges(const Hookup& hookup, const Channel& channel) {
+  const Instrument* instrument = hookup.find_instrument(channel.instrument);
+  if (instrument != nullptr) {
+    for (const auto& value : instrument->profile.values) {
+      if (value.name == channel.value) return value.unit;
+    }
+  }
+  return meter_unit_wanted(channel);
+}
+
+// "18 to 28 degC", "from 45 Hz", "up to 1000 Hz".
+std::string span(const std::optional<double>& low, const std::optional<double>& high, std::string_view unit) {
+  const std::string ending = " " + std::string{unit};
+  if (low && high) return "from " + number(*low) + " to " + number(*high) + ending;
+  return low ? "from " + number(*low) + ending : "up to " + number(*high) + ending;
+}
+
+std::string describe_conditions(const Channel& channel) {
+  const Conditions& conditions = channel.conditions;
+  std::vector<std::string> holds;
+  if (conditions.low_c || conditions.high_c) {
+    holds.push_back(span(conditions.low_c, conditions.high_c, "degC") +
+                    (conditions.percent_of_spec_per_k ? " (" + number(*conditions.percent_of_spec_per_k) +
+                                                            " % of it more for each K beyond)"
+                                                      : ""));
+  }
+  if (conditions.days) holds.push_back("for " + number(*conditions.days) + " days");
+  if (conditions.least_percent_of_range)
+    holds.push_back("from " + number(*conditions.least_percent_of_range) + " % of a range");
+  if (conditions.least_hz || channel.band_hz)
+    holds.push_back(span(conditions.least_hz, channel.band_hz, "Hz"));
+  if (conditions.least_power_factor)
+    holds.push_back("from a power factor of " + number(*conditions.least_power_factor));
+  if (channel.crest_limit) holds.push_back("up to a crest factor of " + number(*channel.crest_limit));
+  std::string line;
+  for (const std::string& one : holds) line += (line.empty() ? "; accuracy holds " : ", ") + one;
+  return line;
+}
+
+std::string describe(const Hookup& hookup, const Channel& channel) {
   std::string line =
       "channel " + channel.name + ": " + std::string{name_of(channel.quantity)} + " in " + channel.unit;
   line += channel.typed ? ", typed by a person" : ", " + channel.value + " of " + channel.instrument;
+  if (!channel.meter.empty()) line += " from " + channel.meter;
   line += describe_conversion(channel.conversion);
+  if (channel.phase_error_deg)
+    line += ", phase error within " + number(*channel.phase_error_deg) + " degrees";
   if (channel.ranges.empty()) return line + "; accuracy not declared";
   line += "; ranges up to";
   for (const RangeSpec& range : channel.ranges) {
     line += (&range == &channel.ranges.front() ? " " : ", ") + number(range.upto);
   }
-  return line;
+  return line + " " + std::string{unit_of_ranges(hookup, channel)} + describe_conditions(channel);
+}
+
+std::string describe(const CaptureSource& capture) {
+  std::string line = "capture of port " + capture.port + " by " + capture.instrument + ":";
+  if (!capture.voltage_column.empty()) line += " voltage in column " + capture.voltage_column;
+  if (!capture.current_column.empty()) {
+    line += (capture.voltage_column.empty() ? " current in column " : ", current in column ") +
+            capture.current_column;
+  }
+  if (capture.current_delay_s != 0.0) {
+    line += ", the current " + number(std::fabs(capture.current_delay_s)) + " s " +
+            (capture.current_delay_s > 0.0 ? "late" : "early");
+  }
+  return line + (capture.deskewed.empty() ? "" : ", deskewed on " + capture.deskewed);
 }
 
 std::string describe(const Port& port) {
@@ -85,18 +159,6 @@ std::string describe(const Port& port) {
   if (!port.counted) line += ", not counted in the efficiency";
   if (port.live) line += ", LIVE";
   return line;
-}
-
-std::string describe(const Step& step) {
-  std::string line = step.label + ": " + number(step.load_w) + " W";
-  for (const SetPoint& point : step.set) {
-    line += ", " + point.control + " " + point.setting + " " + short_number(point.value);
-  }
-  if (!step.prompt.empty()) line += ", by hand: " + step.prompt;
-  line += "; soak " + number(step.soak_s) + " s";
-  if (step.electrical || step.thermal) line += ", settle at most " + number(step.settle_limit_s) + " s";
-  line += ", average " + number(step.average_s) + " s";
-  return step.capture ? line + ", capture" : line;
 }
 
 }  // namespace
@@ -122,26 +184,12 @@ std::vector<std::string> explain(const Hookup& hookup) {
                     describe(one.isolation) +
                     (one.calibration_due.empty() ? "" : ", calibration due " + one.calibration_due));
   }
-  for (const Channel& channel : hookup.channels) lines.push_back(describe(channel));
+  for (const Channel& channel : hookup.channels) lines.push_back(describe(hookup, channel));
   for (const Port& port : hookup.ports) lines.push_back(describe(port));
   for (const Control& control : hookup.controls) {
     lines.push_back("control " + control.name + ": " + control.instrument + ", the " + control.role);
   }
-  return lines;
-}
-
-std::vector<std::string> explain(const Stair& stair) {
-  std::vector<std::string> lines = {
-      "prototype " + stair.prototype.name +
-      (stair.prototype.revision.empty() ? "" : " revision " + stair.prototype.revision) +
-      (stair.prototype.unit.empty() ? "" : ", unit " + stair.prototype.unit) + ": " +
-      count(stair.steps.size()) + " steps"};
-  double most_s = stair.end.cool_down_s + stair.end.discharge_s;
-  for (const Step& step : stair.steps) {
-    lines.push_back(describe(step));
-    most_s += step.soak_s + step.settle_limit_s + step.average_s;
-  }
-  lines.push_back("at most " + base::print_fixed(most_s / 60.0, 1) + " min, without prompts");
+  for (const CaptureSource& capture : hookup.captures) lines.push_back(describe(capture));
   return lines;
 }
 

@@ -26,8 +26,9 @@ struct Finding {
 
 /// What the hook-up file says, one line a fact, for a person to compare with the bench.
 [[nodiscard]] std::vector<std::string> explain(const Hookup& hookup);
-/// What the stair will do, one line a step, and how long it takes at most.
-[[nodiscard]] std::vector<std::string> explain(const Stair& stair);
+/// What the stair will do, one line a step, how long it takes at most, and what its results are held against.
+/// hookup  where the units of set points are known from; nullptr: they are left out
+[[nodiscard]] std::vector<std::string> explain(const Stair& stair, const Hookup* hookup = nullptr);
 
 /// Everything that needs saying, worst first: isolation on live nodes, lead drops that nobody declared, AC
 /// power that will be apparent power only, undeclared accuracy, guards that act on nothing, and the usual

@@ -108,15 +108,6 @@ void refuse_second(ObjectReader& reader) {
   }
 }
 
-// What the meter must deliver, in which unit, for the conversion to give the quantity.
-std::string_view meter_unit_wanted(const Channel& channel) {
-  const Conversion& conversion = channel.conversion;
-  if (conversion.shunt) return "V";
-  if (conversion.thermocouple) return conversion.thermocouple->cold_junction.empty() ? "degC" : "V";
-  if (conversion.platinum || conversion.thermistor) return "ohm";
-  return unit_of(channel.quantity);
-}
-
 std::string_view sensor_of(const Conversion& conversion) {
   if (conversion.shunt) return "shunt";
   if (conversion.thermocouple) return "thermocouple";
@@ -126,6 +117,14 @@ std::string_view sensor_of(const Conversion& conversion) {
 }
 
 }  // namespace
+
+std::string_view meter_unit_wanted(const Channel& channel) {
+  const Conversion& conversion = channel.conversion;
+  if (conversion.shunt) return "V";
+  if (conversion.thermocouple) return conversion.thermocouple->cold_junction.empty() ? "degC" : "V";
+  if (conversion.platinum || conversion.thermistor) return "ohm";
+  return unit_of(channel.quantity);
+}
 
 Conversion read_conversion(ObjectReader& channel) {
   Conversion conversion;

@@ -19,6 +19,10 @@ void read_rehearsal(document::ObjectReader& top, Hookup& hookup);
 /// Does the conversion lead from the meter's unit to the quantity? Complains otherwise.
 void check_conversion(document::ObjectReader& reader, const Channel& channel, std::string_view meter_unit);
 
+/// In which unit the meter must deliver for the conversion to give the quantity, but for a scale that carries
+/// a unit of its own.
+[[nodiscard]] std::string_view meter_unit_wanted(const Channel& channel);
+
 /// A date under the key, ISO 8601: "2026-03-14"; empty when left out.
 [[nodiscard]] std::string read_date(document::ObjectReader& reader, std::string_view key);
 
