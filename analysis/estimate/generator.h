@@ -26,22 +26,24 @@ class Generator {
   /// Fills with numbers in the open interval (0, 1): (k + 1/2)/2^52. Numbers left over in the last group of
   /// four are dropped.
   void uniform(std::span<double> out);
-  /// Standard normal: the inverse distribution function of uniform numbers.
+  /// The same numbers less 1/2: in (-1/2, 1/2).
+  void centred(std::span<double> out);
+  /// Standard normal. Source: Marsaglia and Tsang 2000, Journal of Statistical Software 5, 8 (ziggurat), in
+  /// the form of Doornik 2005 (128 layers; layer and place from different bits of one number).
   void normal(std::span<double> out);
   /// Chi-squared over its degrees of freedom (above zero): mean 1. Source: Marsaglia and Tsang 2000, ACM
   /// Transactions on Mathematical Software 26, 3 (gamma variables by rejection).
   void chi_squared_per_freedom(double degrees_of_freedom, std::span<double> out);
 
  private:
+  void fill(std::span<double> out, double one_less_shift);
+  [[nodiscard]] std::uint64_t one();
   [[nodiscard]] double one_uniform();
+  [[nodiscard]] double normal_from(std::uint64_t bits);
 
   std::array<std::array<std::uint64_t, kLanes>, 4> state_{};
-  std::array<double, kLanes> left_{};
+  std::array<std::uint64_t, kLanes> left_{};
   std::size_t left_count_ = 0;
 };
-
-/// Inverse of the standard normal distribution function, 0 < p < 1; relative error about 1e-16.
-/// Source: Wichura 1988, Applied Statistics 37, 3, algorithm AS 241 (PPND16).
-[[nodiscard]] double normal_quantile(double p);
 
 }  // namespace loadstair::estimate

@@ -75,6 +75,12 @@ void add_sample(Plan& plan, Drawn& drawn) {
   plan.samples.push_back({source.sample, stream ^ kChiStream, source.degrees_of_freedom});
 }
 
+/// Standard deviation of what draw() gives: 1, but for rectangular draws, which save a multiplication.
+double deviation_of_draw(const Source& source) {
+  const bool rectangular = source.kind == Kind::type_b && source.distribution == Distribution::rectangular;
+  return rectangular ? 1 / (2 * std::numbers::sqrt3) : 1;
+}
+
 base::Outcome<Plan> plan_for(std::span<const Estimate> inputs) {
   Plan plan;
   std::vector<std::pair<SourcePtr, Use>> all;
@@ -92,22 +98,19 @@ base::Outcome<Plan> plan_for(std::span<const Estimate> inputs) {
       }
       if (is_student(*source)) add_sample(plan, plan.sources.back());
     }
-    plan.sources.back().uses.push_back(use);
+    plan.sources.back().uses.push_back({use.input, use.contribution / deviation_of_draw(*source)});
   }
   return plan;
 }
 
-/// Standardised draws: mean 0, standard deviation 1 (a t before its chi).
-void draw_standard(Generator& generator, const Source& source, std::span<double> out) {
-  constexpr double kRootTwelve = 2 * std::numbers::sqrt3;
+/// Draws of mean 0 (a t before its chi).
+void draw(Generator& generator, const Source& source, std::span<double> out) {
   if (source.kind == Kind::type_a) return generator.normal(out);
   switch (source.distribution) {
     case Distribution::normal:
       return generator.normal(out);
     case Distribution::rectangular:
-      generator.uniform(out);
-      for (double& x : out) x = (x - 0.5) * kRootTwelve;
-      return;
+      return generator.centred(out);
     case Distribution::triangular: {
       std::array<double, kChunk> second{};
       generator.uniform(out);
@@ -156,14 +159,14 @@ void run_chunk(const Plan& plan, const BlockModel& model, std::uint64_t seed, st
   }
   for (const Drawn& drawn : plan.sources) {
     Generator generator{stream_of(seed, drawn.source->order, chunk)};
-    draw_standard(generator, *drawn.source, space.draw);
+    draw(generator, *drawn.source, space.draw);
     if (drawn.degrees_of_freedom > 0) {
       const std::vector<double>& chi = space.chi[drawn.sample];
       for (std::size_t j = 0; j < kChunk; ++j) space.draw[j] *= chi[j];
     }
     for (const Use& use : drawn.uses) {
-      double* const into = space.inputs[use.input].data();
-      const double* const from = space.draw.data();
+      double* __restrict const into = space.inputs[use.input].data();
+      const double* __restrict const from = space.draw.data();
       for (std::size_t j = 0; j < kChunk; ++j) into[j] += use.contribution * from[j];
     }
   }
@@ -185,31 +188,59 @@ void moments(std::span<const double> draws, MonteCarlo& out) {
   out.standard_deviation = std::sqrt(squares / (count - 1));
 }
 
-/// Both intervals from the draws, of which only the two tails need to be in order.
+/// The least and the greatest of many numbers, in ascending order.
+struct Tails {
+  std::vector<double> low;
+  std::vector<double> high;
+};
+
+/// So many of each. A sorted sample tells about where the tails begin; one pass collects a little more than
+/// them, and only that is sorted.
+Tails tails_of(std::span<const double> draws, std::size_t tail) {
+  constexpr std::size_t kEvery = 64;
+  std::vector<double> sample;
+  sample.reserve(draws.size() / kEvery + 1);
+  for (std::size_t i = 0; i < draws.size(); i += kEvery) sample.push_back(draws[i]);
+  std::sort(sample.begin(), sample.end());
+  const auto many = static_cast<double>(sample.size());
+  const double share = static_cast<double>(tail) / static_cast<double>(draws.size());
+  const auto rank = static_cast<std::size_t>(many * share + 5 * std::sqrt(many * share * (1 - share))) + 1;
+  Tails out;
+  if (2 * rank < sample.size()) {
+    const double below = sample[rank];
+    const double above = sample[sample.size() - 1 - rank];
+    for (const double x : draws) {
+      if (x <= below) out.low.push_back(x);
+      if (x >= above) out.high.push_back(x);
+    }
+  }
+  if (out.low.size() < tail || out.high.size() < tail) {
+    out.low.assign(draws.begin(), draws.end());
+    out.high = out.low;
+  }
+  std::sort(out.low.begin(), out.low.end());
+  out.low.resize(tail);
+  std::sort(out.high.begin(), out.high.end());
+  out.high.erase(out.high.begin(), out.high.end() - static_cast<std::ptrdiff_t>(tail));
+  return out;
+}
+
+/// Both intervals, from the tails of the draws.
 /// Source: JCGM 101:2008 7.7 (q = integer part of p M + 1/2; shortest: least y_(r+q) - y_(r)).
-void intervals(std::span<double> draws, MonteCarlo& out) {
+void intervals(std::span<const double> draws, MonteCarlo& out) {
   const std::size_t count = draws.size();
   const auto covered =
       std::min(count - 1, static_cast<std::size_t>(out.level * static_cast<double>(count) + 0.5));
-  const std::size_t tail = count - covered;
-  const auto first = draws.begin();
-  if (2 * tail < count) {
-    std::nth_element(first, first + static_cast<std::ptrdiff_t>(tail), draws.end());
-    std::sort(first, first + static_cast<std::ptrdiff_t>(tail));
-    std::nth_element(first + static_cast<std::ptrdiff_t>(tail), first + static_cast<std::ptrdiff_t>(covered),
-                     draws.end());
-    std::sort(first + static_cast<std::ptrdiff_t>(covered), draws.end());
-  } else {
-    std::sort(first, draws.end());
-  }
   // Draw number r and number r + covered enclose the level; r = 0 .. tail - 1.
+  const std::size_t tail = count - covered;
+  const Tails tails = tails_of(draws, tail);
   const std::size_t middle = (tail - 1) / 2;
-  out.symmetric = {draws[middle], draws[middle + covered]};
+  out.symmetric = {tails.low[middle], tails.high[middle]};
   std::size_t best = 0;
   for (std::size_t r = 1; r < tail; ++r) {
-    if (draws[r + covered] - draws[r] < draws[best + covered] - draws[best]) best = r;
+    if (tails.high[r] - tails.low[r] < tails.high[best] - tails.low[best]) best = r;
   }
-  out.shortest = {draws[best], draws[best + covered]};
+  out.shortest = {tails.low[best], tails.high[best]};
 }
 
 base::Refusal no_value() {

@@ -71,15 +71,46 @@ TEST_CASE("the generator is xoshiro256++ in four lanes, seeded by splitmix64") {
   CHECK(published_step(state) == 58720359U);
 }
 
-TEST_CASE("the normal quantile is the inverse of the normal distribution function") {
-  // Any table of the normal distribution.
-  CHECK(estimate::normal_quantile(0.975) == Approx(1.959963984540054).epsilon(1e-14));
-  CHECK(estimate::normal_quantile(0.5) == 0);
-  CHECK(estimate::normal_quantile(1e-12) == Approx(-7.034483825301132).epsilon(1e-13));
-  CHECK(estimate::normal_quantile(1e-3) == Approx(-3.090232306167813).epsilon(1e-14));
-  for (double x = -8; x < 5; x += 0.37) {
-    const double p = 0.5 * std::erfc(-x / std::sqrt(2));
-    CHECK(estimate::normal_quantile(p) == Approx(x).epsilon(1e-11));
+TEST_CASE("normal draws follow the normal distribution function into the tail") {
+  // Ten million draws: the share within each limit is binomial; five deviations.
+  Generator generator{7};
+  constexpr std::size_t kDraws = 10'000'000;
+  std::vector<double> x(kDraws);
+  generator.normal(x);
+  for (const double limit : {-4.5, -3.5, -3.2, -2.0, -1.0, -0.3, 0.0, 0.1, 0.7, 1.5, 2.5, 3.4, 3.6, 4.2}) {
+    const double p = 0.5 * std::erfc(-limit / std::sqrt(2.0));
+    const auto below = std::count_if(x.begin(), x.end(), [&](double one) { return one < limit; });
+    INFO(limit);
+    CHECK(std::abs(static_cast<double>(below) - p * kDraws) < 5 * std::sqrt(p * (1 - p) * kDraws));
+  }
+  // Neighbours are not correlated, nor are draws a group of lanes apart.
+  for (const std::size_t lag : {1U, 4U, 256U}) {
+    double sum = 0;
+    for (std::size_t i = 0; i + lag < kDraws; ++i) sum += x[i] * x[i + lag];
+    CHECK(std::abs(sum) < 5 * std::sqrt(static_cast<double>(kDraws)));
+  }
+}
+
+TEST_CASE("chi-squared draws have the mean, the variance and the quantiles of their degrees of freedom") {
+  // Over nu: mean 1, variance 2/nu; 5 % points of chi-squared by any table: 3.841, 0.1026 (nu = 1, 2 at 95 %
+  // and 5 %), 18.307 (nu = 10 at 95 %). A million draws, five deviations.
+  struct Point {
+    double nu;
+    double p;
+    double at;
+  };
+  for (const Point& point :
+       {Point{1, 0.95, 3.841459}, Point{2, 0.05, 0.1025866}, Point{10, 0.95, 18.30704}}) {
+    Generator generator{11};
+    std::vector<double> x(1'000'000);
+    generator.chi_squared_per_freedom(point.nu, x);
+    const auto count = static_cast<double>(x.size());
+    const double mean = std::accumulate(x.begin(), x.end(), 0.0) / count;
+    CHECK(std::abs(mean - 1) < 5 * std::sqrt(2 / point.nu / count));
+    const auto below =
+        std::count_if(x.begin(), x.end(), [&](double one) { return one * point.nu < point.at; });
+    CHECK(std::abs(static_cast<double>(below) - point.p * count) <
+          5 * std::sqrt(point.p * (1 - point.p) * count));
   }
 }
 
