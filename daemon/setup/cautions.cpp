@@ -2,6 +2,7 @@
 #include <set>
 
 #include "analysis/base/number.h"
+#include "daemon/setup/cautions_parts.h"
 #include "daemon/setup/explain.h"
 
 namespace loadstair::setup {
@@ -189,8 +190,9 @@ void check_guards(const Hookup& hookup, const Stair& stair, Findings& findings) 
 }
 
 void check_prompts(const Hookup& hookup, const Stair& stair, Findings& findings) {
-  const bool by_hand = std::any_of(stair.steps.begin(), stair.steps.end(),
-                                   [](const Step& step) { return !step.prompt.empty(); });
+  const bool by_hand = std::any_of(stair.steps.begin(), stair.steps.end(), [](const Step& step) {
+    return !step.prompt.empty() || !step.rewire.empty();
+  });
   if (by_hand) findings.push_back({Severity::note, "some steps are done by hand. " + hand_caution(hookup)});
 }
 
@@ -269,8 +271,11 @@ std::vector<Finding> cautions(const Hookup& hookup, const Stair* stair) {
       check_sensing(port, stair->ratings, findings);
     }
     check_guards(hookup, *stair, findings);
+    find_in_checks(hookup, *stair, findings);
+    find_in_limits(hookup, *stair, findings);
   }
   check_accuracy(hookup, findings);
+  find_in_conditions(hookup, stair, findings);
   if (stair != nullptr) check_prompts(hookup, *stair, findings);
   add_usual_cautions(hookup, findings);
   std::stable_sort(findings.begin(), findings.end(),

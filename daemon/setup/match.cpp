@@ -29,6 +29,18 @@ class Places {
   std::optional<document::Value> document_;
 };
 
+std::string index_text(std::size_t index) {
+  return base::print_integer(static_cast<std::int64_t>(index));
+}
+
+// Of a voltage or a current; a wattmeter sees both.
+bool sees_dc(const Channel& channel) {
+  return channel.response != Response::true_rms_ac && channel.response != Response::average_responding;
+}
+bool sees_ac(const Channel& channel) {
+  return channel.response != Response::dc;
+}
+
 struct Matcher {
   const Stair& stair;
   const Hookup& hookup;
@@ -60,7 +72,7 @@ struct Matcher {
   }
 
   void set_point(const Step& step, const SetPoint& point, std::size_t index) {
-    const std::string at = step.written_at + "/set/" + base::print_integer(static_cast<std::int64_t>(index));
+    const std::string at = step.written_at + "/set/" + index_text(index);
     const bool input = step.written_at == "staircase" && step.input_voltage_v && index == 0;
     const std::string control_key = input ? "/input_control" : "/control";
     const std::string control_place = places.of({at + "/control", step.written_at + control_key});
@@ -101,6 +113,7 @@ struct Matcher {
 
   void check_step(const Step& step) {
     for (std::size_t i = 0; i < step.set.size(); ++i) set_point(step, step.set[i], i);
+    check_on(step);
     settle(step);
     if (step.capture && hookup.captures.empty()) {
       refuse(
@@ -109,11 +122,85 @@ struct Matcher {
     }
   }
 
+  void check_on(const Step& step) {
+    const std::string at =
+        (step.kind == StepKind::tie ? "checks/ties/" + index_text(step.check) : step.written_at) + "/on/";
+    const auto controls = names_of(hookup.controls);
+    for (std::size_t i = 0; i < step.on.size(); ++i) {
+      if (contains(controls, step.on[i])) continue;
+      refuse(places.of({at + index_text(i)}), "the hook-up has no control " + print_text(step.on[i]) +
+                                                  document::suggest(step.on[i], controls));
+    }
+  }
+
+  // With its input shorted a meter that is coupled by a capacitor shows its noise, and a thermometer nothing.
+  void check_zeros() {
+    for (std::size_t i = 0; i < stair.zero_channels.size(); ++i) {
+      const std::string path = "checks/zero/channels/" + index_text(i);
+      const Channel* found = channel(stair.zero_channels[i], path);
+      if (found == nullptr) return;
+      const bool electrical = found->quantity == Quantity::voltage || found->quantity == Quantity::current ||
+                              found->quantity == Quantity::power;
+      if (!electrical) {
+        refuse(places.of({path}), "the channel " + print_text(found->name) + " is a " +
+                                      std::string{name_of(found->quantity)} +
+                                      "; voltages, currents and powers have a zero to measure; remove it");
+      }
+      if (!sees_dc(*found)) {
+        refuse(places.of({path}), "the channel " + print_text(found->name) + " has the response " +
+                                      std::string{name_of(found->response)} +
+                                      ", which does not see DC, so it has no zero to take off; remove it");
+      }
+    }
+  }
+
+  void check_tie(const Tie& tie, const std::string& at) {
+    const Channel* first = channel(tie.channels.front(), at + "0");
+    for (std::size_t i = 1; i < tie.channels.size() && !refusal; ++i) {
+      const std::string path = at + index_text(i);
+      const Channel* other = channel(tie.channels[i], path);
+      if (other == nullptr) return;
+      const std::string both = "the channels " + print_text(first->name) + " and " + print_text(other->name);
+      if (other->quantity != first->quantity || other->unit != first->unit) {
+        refuse(places.of({path}), both + " are a " + std::string{name_of(first->quantity)} + " and a " +
+                                      std::string{name_of(other->quantity)} +
+                                      "; a tie compares meters on one quantity");
+      }
+      if (sees_dc(*first) != sees_dc(*other) && !(sees_ac(*first) && sees_ac(*other))) {
+        refuse(places.of({path}), both + " have the responses " + std::string{name_of(first->response)} +
+                                      " and " + std::string{name_of(other->response)} +
+                                      ", which see nothing in common; tie meters of one response");
+      }
+      if (!first->meter.empty() && first->meter == other->meter) {
+        refuse(places.of({path}), both + " are read from one meter, " + print_text(first->meter) +
+                                      ", which always agrees with itself; tie two meters");
+      }
+    }
+  }
+
+  void check_ties() {
+    for (std::size_t i = 0; i < stair.ties.size() && !refusal; ++i) {
+      check_tie(stair.ties[i], "checks/ties/" + index_text(i) + "/channels/");
+    }
+  }
+
+  void check_limits() {
+    std::vector<std::string_view> known;
+    for (const TemperaturePoint& point : hookup.temperatures) known.push_back(point.place);
+    for (std::size_t i = 0; i < stair.limits.size(); ++i) {
+      const std::string& quantity = stair.limits[i].quantity;
+      const std::size_t blank = quantity.find(' ');
+      if (blank == std::string::npos || contains(known, quantity.substr(blank + 1))) continue;
+      const std::string place = quantity.substr(blank + 1);
+      refuse(
+          places.of({"limits/" + index_text(i) + "/quantity"}),
+          "the hook-up has no temperature at a place " + print_text(place) + document::suggest(place, known));
+    }
+  }
+
   void check_guards() {
     for (std::size_t i = 0; i < stair.guards.size(); ++i) {
-      polled_channel(stair.guards[i].channel,
-                     "guards/" + base::print_integer(static_cast<std::int64_t>(i)) + "/channel",
-                     "it cannot be guarded");
+      polled_channel(stair.guards[i].channel, "guards/" + index_text(i) + "/channel", "it cannot be guarded");
     }
   }
 
@@ -143,6 +230,9 @@ base::Outcome<void> match(const Stair& stair, const Hookup& hookup) {
     matcher.check_step(step);
     if (matcher.refusal) break;
   }
+  matcher.check_zeros();
+  matcher.check_ties();
+  matcher.check_limits();
   matcher.check_guards();
   if (matcher.refusal) return *matcher.refusal;
   return {};

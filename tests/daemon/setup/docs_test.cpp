@@ -26,7 +26,7 @@ std::map<std::string, std::set<std::string>> documented() {
   std::map<std::string, std::set<std::string>> keys;
   std::istringstream lines{docs()};
   std::string section;
-  const std::regex row{R"(^\| `([a-z_]+)` \|.*)"};
+  const std::regex row{R"(^\| `([a-z_0-9]+)` \|.*)"};
   for (std::string line; std::getline(lines, line);) {
     std::smatch match;
     if (line.starts_with("#")) section = line.substr(line.find(' ') + 1);
