@@ -5,6 +5,7 @@
 #include <string>
 #include <vector>
 
+#include "analysis/waveform/dc_component.h"
 #include "analysis/waveform/quote.h"
 #include "daemon/evaluation/channel_value.h"
 #include "daemon/evaluation/result.h"
@@ -19,6 +20,9 @@ struct CaptureAnalysis {
   base::Outcome<waveform::WaveformResult> result = base::Refusal{};
   waveform::WaveformQuote quote;
   std::optional<std::size_t> voltage, current;  ///< channel of the result
+  /// Of an alternating output's voltage, against captures at zero steps before and after in the same run.
+  base::Outcome<waveform::DcComponent> direct_component =
+      base::Refusal{"", "only the direct component of an AC output's voltage is judged"};
 };
 
 /// The last capture of every source in this step, of those that came after its averaging window began; a
@@ -33,9 +37,10 @@ struct CaptureAnalysis {
 [[nodiscard]] const CaptureAnalysis* capture_of(const std::vector<CaptureAnalysis>& captures,
                                                 const std::string& port);
 
-/// Distortion and crest factor of the output's voltage, and its frequency.
+/// Distortion, crest factor (in the declared band where there is one) and direct component of the output's
+/// voltage, its frequency, and the distortion of its current.
 struct CaptureQuantities {
-  Quantity thd_voltage, crest_factor, frequency;
+  Quantity thd_voltage, crest_factor, frequency, thd_current, dc_component;
 };
 [[nodiscard]] CaptureQuantities quantities_of(const std::vector<CaptureAnalysis>& captures);
 
