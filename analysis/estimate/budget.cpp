@@ -137,11 +137,6 @@ void set_action(const Estimate& a, Line& one) {
     line.action = "tie check in this run: " + line.owner.instrument + " and " + partner->owner.instrument +
                   " on one quantity, their ratio measured";
     line.expanded_if_done = expanded_after_tie(a, line.owner, partner->owner);
-    if (*line.expanded_if_done > coverage(a).expanded) {
-      // The tie's own linearity would bring in more than the gains take away.
-      line.action.clear();
-      line.expanded_if_done.reset();
-    }
     return;
   }
   line.expanded_if_done =
@@ -180,6 +175,12 @@ Budget budget(const Estimate& a) {
     line.share = total > 0 ? line.standard_uncertainty / total : 0;
     line.standard_uncertainty = std::sqrt(line.standard_uncertainty);
     set_action(a, one);
+    // A tie may bring in more linearity than the gains it takes away; and with little else left beside a few
+    // readings, k may grow more than u shrinks.
+    if (line.expanded_if_done && *line.expanded_if_done > out.coverage.expanded) {
+      line.action.clear();
+      line.expanded_if_done.reset();
+    }
     out.lines.push_back(std::move(line));
   }
   std::sort(out.lines.begin(), out.lines.end(), [](const BudgetLine& x, const BudgetLine& y) {

@@ -35,6 +35,16 @@ bool within_interval(const Estimate& a) {
 
 }  // namespace
 
+base::Outcome<TieLevel> tie_level(const TieLevel& type_a, const MeterRange& meter_a,
+                                  const MeterRange& meter_b, const Occasion& level, const Shares& shares_a,
+                                  const Shares& shares_b) {
+  const Quoted a = with_meter_error(type_a.a.value(), meter_a, level, shares_a);
+  if (!a) return a.refusal();
+  const Quoted b = with_meter_error(type_a.b.value(), meter_b, level, shares_b);
+  if (!b) return b.refusal();
+  return TieLevel{*a + (type_a.a - type_a.a.value()), *b + (type_a.b - type_a.b.value())};
+}
+
 base::Outcome<Tie> tie_check(const TieLevel& one, const TieLevel& other) {
   for (const Estimate* reading : {&one.a, &one.b, &other.a, &other.b}) {
     if (!finite(*reading)) return base::Refusal{"tie check", "a reading is not a finite number"};

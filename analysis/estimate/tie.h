@@ -15,6 +15,13 @@ struct TieLevel {
   Estimate b;
 };
 
+/// Readings of a tie level from the Type A estimates of its two windows: each with its meter's error added.
+/// level    names the level within the run ("tie low"), unlike any step's
+/// Errors:  as with_meter_error().
+[[nodiscard]] base::Outcome<TieLevel> tie_level(const TieLevel& type_a, const MeterRange& meter_a,
+                                                const MeterRange& meter_b, const Occasion& level,
+                                                const Shares& shares_a = {}, const Shares& shares_b = {});
+
 /// Meter B held against meter A: b = ratio x a + offset.
 struct Tie {
   /// (b_high - b_low)/(a_high - a_low) and b_low - ratio x a_low, with every source of both meters: for

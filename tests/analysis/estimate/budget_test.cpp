@@ -153,4 +153,15 @@ TEST_CASE("no action is named that would widen the interval") {
     CHECK(one.action.empty());
     CHECK_FALSE(one.expanded_if_done);
   }
+  // Two readings and a large specification: without the specification k rises from 2.8 to 12.7.
+  estimate::Source wires;
+  wires.key = "component/leads/resistance";
+  wires.name = "leads";
+  wires.remedy = estimate::Remedy::sensing_wires;
+  wires.variance_left = 0;
+  const Estimate noise{0, estimate::make_type_a("n", "noise", 1), 1};
+  for (const auto& one : estimate::budget(Estimate{5, estimate::make_source(wires), 1} + noise).lines) {
+    CHECK(one.action.empty());
+    CHECK_FALSE(one.expanded_if_done);
+  }
 }

@@ -144,3 +144,23 @@ TEST_CASE("a wattmeter's power shares its gain with its voltage and current, at 
   CHECK(tight->active_power.variance() ==
         Approx((0.207 * 0.207 + 0.75 * 0.75 + phase * phase) / 3).epsilon(1e-12));
 }
+
+TEST_CASE("a phase error moves the power by V I sin(phi) times it, as a turned phasor shows") {
+  // V I cos(phi + delta) - V I cos(phi), exactly; to first order P tan(phi) delta.
+  for (const double phi : {0.05, 0.45, 1.2, 1.5}) {
+    estimate::WattmeterReading reading;
+    reading.voltage = 230;
+    reading.current = 2;
+    reading.active_power = 460 * std::cos(phi);
+    reading.voltage_range = {{"W1", "ac voltage", "300 V"}, 300, 0, estimate::AccuracySpec{}};
+    reading.current_range = {{"W1", "ac current", "5 A"}, 5, 0, estimate::AccuracySpec{}};
+    reading.power_range = {{"W1", "active power", "300 V x 5 A"}, 1500, 0, estimate::AccuracySpec{}};
+    reading.phase_limit_rad = 1e-5;
+    const auto found = estimate::with_wattmeter_error(reading, {"r", "s"});
+    REQUIRE(found);
+    const double turned = std::abs(460 * std::cos(phi + 1e-5) - reading.active_power);
+    CHECK(found->active_power.standard_uncertainty() * std::sqrt(3.0) == Approx(turned).epsilon(2e-4));
+    CHECK(found->active_power.standard_uncertainty() * std::sqrt(3.0) ==
+          Approx(reading.active_power * std::tan(phi) * 1e-5).epsilon(1e-9));
+  }
+}

@@ -146,6 +146,19 @@ TEST_CASE("a tie's noise stays, and grows outside its levels") {
   CHECK(noise_at(90) == Approx(std::hypot(0.001, 2 * 0.002)).epsilon(1e-9));
 }
 
+TEST_CASE("a level's readings are its windows' Type A with each meter's error on top") {
+  const TieLevel windows{Estimate{10} + noise("a", 0.001), Estimate{10.02} + noise("b", 0.002)};
+  const auto found = estimate::tie_level(windows, kA, kB, {"r", "tie low"});
+  REQUIRE(found);
+  CHECK(found->a.value() == 10);
+  CHECK(found->b.value() == 10.02);
+  const double error = read(kB, 10.02, {"r", "tie low"}).variance();
+  CHECK(found->b.variance() == Approx(error + 0.002 * 0.002).epsilon(1e-12));
+  MeterRange undeclared = kB;
+  undeclared.accuracy.reset();
+  CHECK_FALSE(estimate::tie_level(windows, kA, undeclared, {"r", "tie low"}));
+}
+
 TEST_CASE("levels too near to each other, and foreign numbers, are refused") {
   CHECK_FALSE(estimate::tie_check(level(50, 50, "low", "r"), level(50, 50, "high", "r")));
   CHECK_FALSE(estimate::tie_check(level(50, 50, "low", "r"), level(50.1, 50.2, "high", "r")));
