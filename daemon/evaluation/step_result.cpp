@@ -191,6 +191,8 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   CaptureQuantities captured = quantities_of(values.captures);
   result.thd_voltage = std::move(captured.thd_voltage);
   result.crest_factor = std::move(captured.crest_factor);
+  result.thd_current = std::move(captured.thd_current);
+  result.dc_component = std::move(captured.dc_component);
   result.frequency = frequency_of(values, captured.frequency);
   remark_crest(values, result.remarks);
   const auto place = static_cast<std::size_t>(std::max(step.index, 0));
