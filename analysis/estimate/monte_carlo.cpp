@@ -230,7 +230,7 @@ Tails tails_of(std::span<const double> draws, std::size_t tail) {
 void intervals(std::span<const double> draws, MonteCarlo& out) {
   const std::size_t count = draws.size();
   const auto covered =
-      std::min(count - 1, static_cast<std::size_t>(out.level * static_cast<double>(count) + 0.5));
+      std::min(count - 1, static_cast<std::size_t>(std::floor(out.level * static_cast<double>(count) + 0.5)));
   // Draw number r and number r + covered enclose the level; r = 0 .. tail - 1.
   const std::size_t tail = count - covered;
   const Tails tails = tails_of(draws, tail);
