@@ -139,6 +139,11 @@ Outcome<void> capture(const CaptureArguments& arguments, std::ostream& out) {
     return Refusal{"--harmonics", base::print_integer(arguments.harmonics) + " is not an order from 1 to " +
                                       base::print_integer(kMostHarmonics)};
   }
+  if (arguments.crest_band_hz &&
+      !(*arguments.crest_band_hz > 0.0 && std::isfinite(*arguments.crest_band_hz))) {
+    return Refusal{"--crest-band",
+                   base::print_number(*arguments.crest_band_hz) + " is not a frequency in Hz above zero"};
+  }
   const auto options = options_of(arguments);
   if (!options) return options.refusal();
   const auto file = scope_csv::read_scope_csv_file(arguments.file, *options);
@@ -147,6 +152,7 @@ Outcome<void> capture(const CaptureArguments& arguments, std::ostream& out) {
   if (!record) return record.refusal();
   waveform::AnalysisSettings settings;
   settings.harmonics = arguments.harmonics;
+  settings.crest_band_hz = arguments.crest_band_hz;
   const auto result = waveform::analyse(*record, settings);
   if (!result) {
     const auto& refusal = result.refusal();

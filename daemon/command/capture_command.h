@@ -13,7 +13,8 @@ struct CaptureArguments {
   std::string file;
   std::string voltage;  ///< COLUMN[:SCALE]; COLUMN is a header name or a number from 1; empty: none named
   std::string current;
-  int harmonics = 40;  ///< highest order, 1 to 500
+  int harmonics = 40;                   ///< highest order, 1 to 500
+  std::optional<double> crest_band_hz;  ///< band of a second crest factor; nullopt: only the raw one
   bool json = false;
   // How to read the file, where it is not found out from the file itself. Empty: found out.
   std::string separator;  ///< "," ";" "|" "tab" or a tab itself

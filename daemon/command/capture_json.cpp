@@ -36,9 +36,23 @@ Json harmonics_json(const waveform::ChannelResult& channel) {
                     {"frequency_hz", number(line.frequency_hz)},
                     {"rms", number(line.rms)},
                     {"share", number(line.share)},
-                    {"phase_deg", number(line.phase_deg)}});
+                    {"phase_deg", number(line.phase_deg)},
+                    {"below_floor", line.below_floor}});
   }
   return list;
+}
+
+Json smoothed_json(const base::Outcome<std::vector<waveform::SmoothedOrder>>& smoothed) {
+  if (!smoothed) return refused(smoothed.refusal().text());
+  Json orders = Json::array();
+  for (const auto& order : *smoothed) {
+    orders.push_back({{"order", order.order},
+                      {"group_rms", number(order.group_rms)},
+                      {"group_rms_high", number(order.group_rms_high)},
+                      {"subgroup_rms", number(order.subgroup_rms)},
+                      {"subgroup_rms_high", number(order.subgroup_rms_high)}});
+  }
+  return orders;
 }
 
 Json groups_json(const base::Outcome<waveform::GroupedHarmonics>& groups) {
@@ -56,6 +70,8 @@ Json groups_json(const base::Outcome<waveform::GroupedHarmonics>& groups) {
   }
   return {{"cycles_per_window", groups->cycles_per_window},
           {"windows", groups->windows},
+          {"synchronisation", number(groups->synchronisation)},
+          {"smoothed", smoothed_json(groups->smoothed)},
           {"thd_group", number(groups->thd_group)},
           {"thd_subgroup", number(groups->thd_subgroup)},
           {"orders", std::move(orders)}};
@@ -73,6 +89,7 @@ Json at_least(const waveform::ChannelResult& channel) {
   add("peak", channel.peak);
   add("peak_to_peak", channel.peak_to_peak);
   if (channel.crest_factor) add("crest_factor", *channel.crest_factor);
+  if (channel.crest_factor_in_band) add("crest_factor_in_band", *channel.crest_factor_in_band);
   return names;
 }
 
@@ -87,17 +104,25 @@ Json channel_json(const waveform::ChannelResult& channel) {
           {"peak_to_peak", number(channel.peak_to_peak.value)},
           {"mean_rectified", number(channel.mean_rectified)},
           {"crest_factor", number(channel.crest_factor)},
+          {"crest_factor_in_band", number(channel.crest_factor_in_band)},
+          {"crest_band_hz", number(channel.crest_band_hz)},
           {"form_factor", number(channel.form_factor)},
           {"thd_f", number(channel.thd_f)},
           {"thd_r", number(channel.thd_r)},
           {"thd_floor", number(channel.thd_floor)},
           {"total_distortion", number(channel.total_distortion)},
+          {"total_distortion_band_hz", number(channel.total_distortion_band_hz)},
+          {"line_floor_rms", number(channel.line_floor_rms)},
+          {"orders_below_floor", channel.orders_below_floor},
           {"residual_rms", number(channel.residual_rms)},
+          {"noise_rms", number(channel.noise_rms)},
           {"quantisation_step", number(channel.quantisation_step)},
           {"missing", channel.missing},
           {"at_least", at_least(channel)},
           {"harmonics", harmonics_json(channel)},
-          {"groups", groups_json(channel.groups)}};
+          {"groups", groups_json(channel.groups)},
+          {"standard_decision",
+           channel.standard_decision ? Json(true) : refused(channel.standard_decision.refusal().text())}};
 }
 
 Json power_json(const base::Outcome<waveform::Power>& power) {

@@ -59,6 +59,55 @@ std::string ratio_text(const base::Outcome<double>& ratio) {
   return ratio ? percent(*ratio) : "-";
 }
 
+bool nothing_above_floor(const waveform::ChannelResult& channel) {
+  return channel.harmonics.size() > 1 && channel.orders_below_floor.size() + 1 == channel.harmonics.size();
+}
+
+/// No single harmonic stands out of the noise: then the sum of all is noise too.
+std::string thd_text(const waveform::ChannelResult& channel, const base::Outcome<double>& thd) {
+  return ratio_text(thd) + (thd && nothing_above_floor(channel) ? " (noise)" : "");
+}
+
+/// "2 to 12, 14, 16 to 40".
+std::string orders_text(const std::vector<int>& orders) {
+  std::string text;
+  for (std::size_t first = 0; first < orders.size();) {
+    std::size_t last = first;
+    while (last + 1 < orders.size() && orders[last + 1] == orders[last] + 1) ++last;
+    text += (text.empty() ? "" : ", ") + base::print_integer(orders[first]);
+    if (last > first) text += (last == first + 1 ? ", " : " to ") + base::print_integer(orders[last]);
+    first = last + 1;
+  }
+  return text;
+}
+
+/// Names the orders that are not told from noise, channel by channel.
+std::string below_floor_text(const CaptureReport& report) {
+  std::string text;
+  const auto names = channel_names(report);
+  for (std::size_t k = 0; k < names.size(); ++k) {
+    const auto& channel = report.result.channels[k];
+    if (channel.orders_below_floor.empty()) continue;
+    text += "  " + names[k] + ": below the floor of " + base::print_significant(channel.line_floor_rms, 2) +
+            (channel.unit.empty() ? "" : " " + channel.unit) + ", not told from noise: orders " +
+            orders_text(channel.orders_below_floor) + "\n";
+  }
+  return text;
+}
+
+/// Windows of IEC 61000-4-7, or why there are none.
+std::string groups_text(const CaptureReport& report) {
+  const auto& channel = report.result.channels.front();
+  if (!report.result.fundamental) return "";
+  if (!channel.groups)
+    return "  IEC 61000-4-7: " + channel.groups.refusal().reason + "; no decision by a standard\n";
+  std::string text = "  IEC 61000-4-7: " + base::print_integer(channel.groups->windows) +
+                     (channel.groups->windows == 1 ? " window of " : " windows of ") +
+                     base::print_integer(channel.groups->cycles_per_window) + " cycles; groups with --json";
+  if (!channel.standard_decision) text += "; " + channel.standard_decision.refusal().reason;
+  return text + "\n";
+}
+
 std::string figures_text(const CaptureReport& report) {
   using waveform::ChannelResult;
   const auto& channels = report.result.channels;
@@ -74,14 +123,27 @@ std::string figures_text(const CaptureReport& report) {
   add("peak", [](const ChannelResult& c) { return figure(c.peak, c.unit); });
   add("peak to peak", [](const ChannelResult& c) { return figure(c.peak_to_peak, c.unit); });
   add("crest factor", [](const ChannelResult& c) { return c.crest_factor ? figure(*c.crest_factor) : "-"; });
+  if (channels.front().crest_band_hz > 0.0) {
+    add("crest factor to " + base::print_significant(channels.front().crest_band_hz, 4) + " Hz",
+        [](const ChannelResult& c) {
+          return c.crest_factor_in_band ? figure(*c.crest_factor_in_band) : "-";
+        });
+  }
   add("form factor", [](const ChannelResult& c) { return c.form_factor ? figure(*c.form_factor) : "-"; });
   if (report.result.fundamental) {
     const std::string orders = " (orders 2 to " + base::print_integer(report.harmonics) + ")";
-    add("THD_F" + orders, [](const ChannelResult& c) { return ratio_text(c.thd_f); });
-    add("THD_R" + orders, [](const ChannelResult& c) { return ratio_text(c.thd_r); });
+    add("THD_F" + orders, [](const ChannelResult& c) { return thd_text(c, c.thd_f); });
+    add("THD_R" + orders, [](const ChannelResult& c) { return thd_text(c, c.thd_r); });
     add("total distortion (to " + base::print_significant(0.5 / report.result.interval_s, 3) + " Hz)",
         [](const ChannelResult& c) { return ratio_text(c.total_distortion); });
     add("THD that noise alone gives", [](const ChannelResult& c) { return percent(c.thd_floor); });
+  }
+  add("noise in the RMS", [](const ChannelResult& c) { return figure(c.noise_rms, c.unit); });
+  if (std::any_of(channels.begin(), channels.end(),
+                  [](const auto& c) { return c.quantisation_step > 0.0; })) {
+    add("smallest step q (q\u00b2/12 of the RMS\u00b2)", [](const ChannelResult& c) {
+      return c.quantisation_step > 0.0 ? figure(c.quantisation_step, c.unit) : "-";
+    });
   }
   return aligned(rows);
 }
@@ -102,6 +164,10 @@ std::string harmonics_text(const CaptureReport& report) {
         continue;
       }
       const auto& line = channel.harmonics[k];
+      if (line.below_floor) {
+        row.insert(row.end(), {"below floor", "-", "-"});
+        continue;
+      }
       is_shown = is_shown || line.share >= kShownShare;
       row.insert(row.end(), {figure(line.rms, channel.unit), percent(line.share),
                              base::print_fixed(line.phase_deg, 1) + "\u00b0"});
@@ -109,7 +175,8 @@ std::string harmonics_text(const CaptureReport& report) {
     if (is_shown) rows.push_back(std::move(row));
   }
   return "\nHarmonics, RMS (below " + percent(kShownShare) +
-         " of the fundamental only with --json; phase of the cosine at the first sample)\n" + aligned(rows);
+         " of the fundamental only with --json; phase of the cosine at the first sample)\n" + aligned(rows) +
+         below_floor_text(report) + groups_text(report);
 }
 
 std::string power_text(const waveform::Power& power) {

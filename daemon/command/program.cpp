@@ -49,6 +49,8 @@ void declare_capture(CLI::App& command, CaptureArguments& arguments) {
   command.add_option("--voltage", arguments.voltage, "COLUMN[:SCALE], a header name or a number from 1");
   command.add_option("--current", arguments.current, "COLUMN[:SCALE]");
   command.add_option("--harmonics", arguments.harmonics, "highest order")->capture_default_str();
+  command.add_option("--crest-band", arguments.crest_band_hz,
+                     "crest factor also of the signal up to this frequency, Hz (median of the cycles' peaks)");
   command.add_flag("--json", arguments.json, "results as JSON");
   command.add_option("--separator", arguments.separator, "of the fields: , ; | or tab");
   command.add_option("--decimal", arguments.decimal, "mark in numbers: . or ,");
