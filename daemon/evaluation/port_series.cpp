@@ -58,37 +58,76 @@ double mean_half_width(const Stretch& stretch) {
 
 }  // namespace
 
-std::optional<efficiency::StepNoise> noise_of(const StepValues& values, const efficiency::StepResult& ports) {
-  const std::vector<setup::Port>& declared = values.hookup->ports;
-  std::vector<Product> products;
+namespace {
+
+/// Each port's power at common instants, one row per port.
+struct Powers {
+  std::vector<double> time_s;
+  std::vector<std::vector<double>> power_w;
+};
+
+std::vector<const ChannelValue*> channels_of(const std::vector<Product>& products) {
   std::vector<const ChannelValue*> linked;
-  for (std::size_t i = 0; i < declared.size(); ++i) {
-    products.push_back(product_of(declared[i], ports.ports[i], values));
-    if (!declared[i].counted) products.back() = Product{{}, 0.0};
-    for (const ChannelValue* factor : products.back().factors) {
+  for (const Product& product : products) {
+    for (const ChannelValue* factor : product.factors) {
       if (std::find(linked.begin(), linked.end(), factor) == linked.end()) linked.push_back(factor);
     }
   }
-  if (linked.empty()) return std::nullopt;
+  return linked;
+}
+
+/// stretches   one per channel of `linked`
+std::optional<Powers> powers_of(const std::vector<Product>& products,
+                                const std::vector<const ChannelValue*>& linked,
+                                const std::vector<Stretch>& stretches) {
   std::vector<series::TimeSeries> series;
   std::vector<double> half_width_s;
-  double correlation_s = 0.0;
-  for (const ChannelValue* value : linked) {
-    series.push_back(value->stretch.values());
-    half_width_s.push_back(mean_half_width(value->stretch));
-    correlation_s = std::max(correlation_s, correlation_of(*values.hookup, *value->channel));
+  for (const Stretch& stretch : stretches) {
+    if (stretch.size() == 0) return std::nullopt;
+    series.push_back(stretch.values());
+    half_width_s.push_back(mean_half_width(stretch));
   }
-  const auto aligned = series::align_all(series, half_width_s);
+  auto aligned = series::align_all(series, half_width_s);
   if (!aligned) return std::nullopt;
-  std::vector<std::vector<double>> power_w;
+  Powers out;
   for (const Product& product : products) {
-    std::vector<double>& power = power_w.emplace_back(aligned->time_s.size(), product.constant);
+    std::vector<double>& power = out.power_w.emplace_back(aligned->time_s.size(), product.constant);
     for (const ChannelValue* factor : product.factors) {
       const auto row =
           static_cast<std::size_t>(std::find(linked.begin(), linked.end(), factor) - linked.begin());
       for (std::size_t k = 0; k < power.size(); ++k) power[k] *= aligned->value[row][k];
     }
   }
+  out.time_s = std::move(aligned->time_s);
+  return out;
+}
+
+/// A port that is not counted is nothing.
+std::vector<Product> products_of(const StepValues& values, const efficiency::StepResult& ports) {
+  std::vector<Product> products;
+  const std::vector<setup::Port>& declared = values.hookup->ports;
+  for (std::size_t i = 0; i < declared.size(); ++i) {
+    products.push_back(product_of(declared[i], ports.ports[i], values));
+    if (!declared[i].counted) products.back() = Product{{}, 0.0};
+  }
+  return products;
+}
+
+}  // namespace
+
+std::optional<efficiency::StepNoise> noise_of(const StepValues& values, const efficiency::StepResult& ports) {
+  const std::vector<setup::Port>& declared = values.hookup->ports;
+  const std::vector<Product> products = products_of(values, ports);
+  const std::vector<const ChannelValue*> linked = channels_of(products);
+  if (linked.empty()) return std::nullopt;
+  std::vector<Stretch> stretches;
+  double correlation_s = 0.0;
+  for (const ChannelValue* value : linked) {
+    stretches.push_back(value->stretch);
+    correlation_s = std::max(correlation_s, correlation_of(*values.hookup, *value->channel));
+  }
+  const auto powers = powers_of(products, linked, stretches);
+  if (!powers) return std::nullopt;
   std::vector<efficiency::PortSeries> port_series;
   for (std::size_t i = 0; i < declared.size(); ++i) {
     const bool input = declared[i].direction == setup::Direction::input;
@@ -96,12 +135,36 @@ std::optional<efficiency::StepNoise> noise_of(const StepValues& values, const ef
     if (!declared[i].counted) {
       role = input ? efficiency::Role::auxiliary_input : efficiency::Role::auxiliary_output;
     }
-    port_series.push_back({role, declared[i].counted, power_w[i]});
+    port_series.push_back({role, declared[i].counted, powers->power_w[i]});
   }
-  auto noise = efficiency::step_noise(aligned->time_s, port_series, values.context.id(),
+  auto noise = efficiency::step_noise(powers->time_s, port_series, values.context.id(),
                                       {.declared_correlation_s = correlation_s});
   if (!noise) return std::nullopt;
   return std::move(*noise);
+}
+
+std::optional<LossSeries> loss_between(const StepValues& values, const efficiency::StepResult& ports,
+                                       double from_s, double to_s) {
+  const std::vector<setup::Port>& declared = values.hookup->ports;
+  const std::vector<Product> products = products_of(values, ports);
+  for (std::size_t i = 0; i < declared.size(); ++i) {
+    if (declared[i].counted && products[i].factors.empty()) return std::nullopt;
+  }
+  const std::vector<const ChannelValue*> linked = channels_of(products);
+  if (linked.empty()) return std::nullopt;
+  std::vector<Stretch> stretches;
+  for (const ChannelValue* value : linked) stretches.push_back(stretch(*value->stretch.track, from_s, to_s));
+  auto powers = powers_of(products, linked, stretches);
+  if (!powers) return std::nullopt;
+  LossSeries out;
+  out.loss_w.assign(powers->time_s.size(), 0.0);
+  for (std::size_t i = 0; i < declared.size(); ++i) {
+    const double sign = declared[i].direction == setup::Direction::input ? 1.0 : -1.0;
+    if (!declared[i].counted) continue;
+    for (std::size_t k = 0; k < out.loss_w.size(); ++k) out.loss_w[k] += sign * powers->power_w[i][k];
+  }
+  out.time_s = std::move(powers->time_s);
+  return out;
 }
 
 }  // namespace loadstair::evaluation

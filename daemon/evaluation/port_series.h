@@ -14,4 +14,14 @@ namespace loadstair::evaluation {
 [[nodiscard]] std::optional<efficiency::StepNoise> noise_of(const StepValues& values,
                                                             const efficiency::StepResult& ports);
 
+/// Input less output power of the counted ports over a longer stretch than the window, at common instants. As
+/// the meters read: no burden, no leads; for how the loss moves, not for what it is.
+struct LossSeries {
+  std::vector<double> time_s, loss_w;
+};
+/// Returns: nullopt where a counted port's power is not read all the time, or no instants are common.
+[[nodiscard]] std::optional<LossSeries> loss_between(const StepValues& values,
+                                                     const efficiency::StepResult& ports, double from_s,
+                                                     double to_s);
+
 }  // namespace loadstair::evaluation

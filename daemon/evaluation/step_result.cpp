@@ -6,6 +6,7 @@
 
 #include "analysis/base/number.h"
 #include "analysis/estimate/budget.h"
+#include "daemon/evaluation/loss_projection.h"
 #include "daemon/evaluation/port_step.h"
 #include "daemon/evaluation/quantity.h"
 #include "daemon/evaluation/temperature_result.h"
@@ -199,8 +200,11 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   const setup::Step* plan = place < stair.steps.size() ? &stair.steps[place] : nullptr;
   const double begun_s =
       since_start(run, step.soak_begin_ns.value_or(step.begun_ns.value_or(*step.average_begin_ns)));
-  result.temperatures = temperatures_of(hookup, plan, tracks, values.channels, values.context, begun_s,
-                                        place + 1 == stair.steps.size());
+  const StepThermal thermal{plan, begun_s, place + 1 == stair.steps.size(), out.powers.loss,
+                            stair.ratings.highest_ambient_c};
+  const auto ends = temperatures_of(hookup, tracks, values.channels, values.context, thermal);
+  for (const EndTemperature& end : ends) result.temperatures.push_back(end.result);
+  fill_projection(result, values, tracks, out.powers, ends, begun_s);
   if (result.settled.by == "not settled") result.remarks.push_back(result.settled.text);
   return out;
 }
