@@ -83,3 +83,36 @@ TEST_CASE("the mean of a product differs from the product of means by no more th
   CHECK(series::fluctuation_bound(a / std::numbers::sqrt2, b / std::numbers::sqrt2) ==
         Approx(a * b / 2).epsilon(1e-14));
 }
+
+TEST_CASE("a meter 0.8 s late on a ramp is aligned; left where it was asked, it would be off by the ramp") {
+  // A ramp of 2 W/s. The prompt meter is asked every 0.5 s, the late one every 0.7 s, and shows what was
+  // there 0.8 s before: its instants are the askings less the delay.
+  const auto ramp = [](double t) { return 100 + 2 * t; };
+  std::vector<double> prompt_t, prompt, asked_t, late_t, late;
+  for (int i = 0; i <= 80; ++i) {
+    prompt_t.push_back(0.5 * i);
+    prompt.push_back(ramp(prompt_t.back()));
+  }
+  for (int i = 2; i <= 57; ++i) {
+    asked_t.push_back(0.7 * i);
+    late_t.push_back(asked_t.back() - 0.8);
+    late.push_back(ramp(late_t.back()));
+  }
+  const std::vector<double> half_width{0.0, 0.4};
+  const std::vector<series::TimeSeries> aligned_both{{prompt_t, prompt}, {late_t, late}};
+  const auto good = series::align_all(aligned_both, half_width);
+  REQUIRE(good);
+  REQUIRE(good->time_s.size() >= 50);
+  for (std::size_t i = 0; i < good->time_s.size(); ++i)
+    CHECK(good->value[0][i] == Approx(good->value[1][i]).epsilon(1e-13));
+  // The late meter is the slower one and gives the instants; what they are known to, 0.4 s, times the slope is
+  // the doubt of the other. A ramp has no curvature.
+  CHECK(good->timing_bound[0] == Approx(0.4 * 2).epsilon(1e-9));
+  CHECK(good->curvature_bound[0] == Approx(0).margin(1e-9));
+
+  const std::vector<series::TimeSeries> as_asked{{prompt_t, prompt}, {asked_t, late}};
+  const auto bad = series::align_all(as_asked, half_width);
+  REQUIRE(bad);
+  for (std::size_t i = 0; i < bad->time_s.size(); ++i)
+    CHECK(bad->value[0][i] - bad->value[1][i] == Approx(1.6).epsilon(1e-9));
+}

@@ -156,3 +156,45 @@ TEST_CASE("a few readings give a bound, a single one none") {
   REQUIRE(twenty);
   CHECK_FALSE(twenty->too_short);
 }
+
+TEST_CASE("the correlation time of the whole steady stretch counts where it is the larger one") {
+  // First-order noise with r = 0.9: g = (1 + r)/(1 - r) = 19 (closed form), read once a second.
+  tests::RandomSource random{tests::seed_of_tests() + 40};
+  constexpr int kWindow = 500;
+  constexpr int kRuns = 300;
+  int alone = 0;
+  int with_stretch = 0;
+  for (int run = 0; run < kRuns; ++run) {
+    std::vector<double> time_s, value;
+    double noise = random.normal();
+    for (int i = 0; i < 4 * kWindow; ++i) {
+      noise = 0.9 * noise + std::sqrt(1 - 0.81) * random.normal();
+      time_s.push_back(i);
+      value.push_back(noise);
+    }
+    const auto stretch = series::steady_window({time_s, value});
+    REQUIRE(stretch);
+    const series::TimeSeries last{std::span{time_s}.last(kWindow), std::span{value}.last(kWindow)};
+    const auto own = series::steady_window(last);
+    const auto both = series::steady_window(last, {0, stretch->correlation_time_s});
+    REQUIRE(own);
+    REQUIRE(both);
+    CHECK(both->correlation_time_s ==
+          Approx(std::max(own->correlation_time_s, stretch->correlation_time_s)).epsilon(1e-12));
+    CHECK(both->effective_count <= own->effective_count);
+    // Fewer than 20 correlation times claim no deviation; the bound then has to hold.
+    const auto holds = [](const series::SteadyWindow& window) {
+      const double reach =
+          window.too_short ? *window.bound : window.u * (1.96 + 2.4 / window.degrees_of_freedom);
+      return std::abs(window.value) <= reach;
+    };
+    if (holds(*own)) ++alone;
+    if (holds(*both)) ++with_stretch;
+  }
+  WARN("mean of a window of 26 correlation times: " << alone << " of " << kRuns
+                                                    << " hold by the window alone, " << with_stretch
+                                                    << " with the stretch's time");
+  CHECK(with_stretch >= alone);
+  // 95 % less three binomial deviations.
+  CHECK(with_stretch >= 273);
+}
