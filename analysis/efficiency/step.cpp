@@ -29,7 +29,17 @@ struct Totals {
   std::vector<double> efficiency;
 };
 
-/// Sums over the counted ports at every instant. The efficiency stays empty where an input is not above zero.
+double mean_of(const std::vector<double>& values) {
+  double sum = 0;
+  for (const double value : values) sum += value;
+  return sum / static_cast<double>(values.size());
+}
+
+/// Sums over the counted ports at every instant. The efficiency that is reported is a ratio of means, so its
+/// scatter is that of eta + (P_out - eta P_in) / mean P_in (Cochran, Sampling Techniques, 1977, 6.3; from
+/// memory). To first order this is the series of efficiencies, and it holds too where bursts bring single
+/// inputs down to nothing. It stays empty where the mean input is not above zero: there is no efficiency
+/// then.
 Totals totals_of(std::span<const double> time_s, std::span<const PortSeries> ports) {
   Totals out;
   out.input.assign(time_s.size(), 0);
@@ -40,8 +50,13 @@ Totals totals_of(std::span<const double> time_s, std::span<const PortSeries> por
     for (std::size_t i = 0; i < sum.size(); ++i) sum[i] += port.power_w[i];
   }
   for (std::size_t i = 0; i < time_s.size(); ++i) out.loss.push_back(out.input[i] - out.output[i]);
-  if (!std::all_of(out.input.begin(), out.input.end(), [](double p) { return p > 0; })) return out;
-  for (std::size_t i = 0; i < time_s.size(); ++i) out.efficiency.push_back(out.output[i] / out.input[i]);
+  if (time_s.empty()) return out;
+  const double input = mean_of(out.input);
+  const double efficiency = mean_of(out.output) / input;
+  if (!(input > 0) || !std::isfinite(efficiency)) return out;
+  for (std::size_t i = 0; i < time_s.size(); ++i) {
+    out.efficiency.push_back(efficiency + (out.output[i] - efficiency * out.input[i]) / input);
+  }
   return out;
 }
 

@@ -33,10 +33,11 @@ struct StepNoise {
 
 /// Type A on the aligned series of P_in, P_out, loss and efficiency themselves, with their covariances.
 /// time_s  the common instants, as many as each port's powers
-/// Errors: refused when a series is empty, of another length or not finite, when the ports hold no counted
-/// input, or
-///         when the summed input power of an instant is not above zero.
-/// Source: JCGM 100:2008 H.2.4, second approach.
+/// Errors: refused when a series is empty, of another length or not finite. Without a counted input, or with
+/// a
+///         mean input that is not above zero, the efficiency's part is empty: there is no efficiency then.
+/// Source: JCGM 100:2008 H.2.4, second approach; the efficiency as a ratio of means, so that bursts of the
+///         input count in it.
 [[nodiscard]] base::Outcome<StepNoise> step_noise(std::span<const double> time_s,
                                                   std::span<const PortSeries> ports,
                                                   const estimate::WindowId& id,

@@ -204,7 +204,32 @@ TEST_CASE("noise refuses ports of other instants and survives an input that cros
   const auto noise = efficiency::step_noise(t, idle, {"run", "step"});
   REQUIRE(noise);
   CHECK(noise->too_short);
-  CHECK(noise->efficiency.terms().empty());
+  CHECK(noise->efficiency.standard_uncertainty() == 0);
+  const std::vector<double> nothing{0, 0, 0, 0, 0};
+  const std::vector<efficiency::PortSeries> off{{Role::input, true, nothing}};
+  const auto dark = efficiency::step_noise(t, off, {"run", "step"});
+  REQUIRE(dark);
+  CHECK(dark->efficiency.terms().empty());
+}
+
+TEST_CASE("bursts that bring the input down to nothing count in the efficiency as in the input") {
+  // The output is constant, so the efficiency is known as badly as the mean input: u(eta)/eta = u(P_in)/P_in
+  // (chain rule). On for 6 of 10 readings, at random.
+  tests::RandomSource random{1};
+  std::vector<double> t, in;
+  for (int i = 0; i < 200; ++i) {
+    t.push_back(0.5 * i);
+    in.push_back(random.uniform() < 0.6 ? 10.0 / 0.6 : 0.0);
+  }
+  const std::vector<double> out(t.size(), 9.0);
+  const std::vector<efficiency::PortSeries> ports{{Role::input, true, in}, {Role::output, true, out}};
+  const auto noise = efficiency::step_noise(t, ports, {"run", "step"});
+  REQUIRE(noise);
+  double mean = 0;
+  for (const double power : in) mean += power / static_cast<double>(in.size());
+  const double relative = noise->input_power.standard_uncertainty() / mean;
+  REQUIRE(relative > 0.01);
+  CHECK(noise->efficiency.standard_uncertainty() / (9.0 / mean) == Approx(relative).epsilon(1e-9));
 }
 
 TEST_CASE("power factor is that of the one AC output") {
