@@ -103,7 +103,7 @@ void refuse_second(ObjectReader& reader) {
       first = key;
       continue;
     }
-    reader.complain(key, "a channel has one sensor, a " + std::string{first} + " or a " + std::string{key} +
+    reader.complain(key, "a channel has one sensor, " + print_text(first) + " or " + print_text(key) +
                              ", not both; remove one");
   }
 }
