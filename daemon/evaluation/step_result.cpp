@@ -157,6 +157,25 @@ void remark_crest(const StepValues& values, std::vector<std::string>& remarks) {
   }
 }
 
+/// Below a tenth of the load many converters work in bursts (common practice, no source). A few typed
+/// readings of a current that jumps may agree by chance, and then nothing shows that they are not its mean.
+void remark_bursts(const StepValues& values, double rated_w, StepResult& result) {
+  const double power_w = result.output_power.known ? result.output_power.value : result.load_w;
+  if (!(rated_w > 0.0) || !(power_w < 0.1 * rated_w)) return;
+  for (const setup::Port& port : values.hookup->ports) {
+    const CaptureAnalysis* capture = capture_of(values.captures, port.name);
+    if (port.direction != setup::Direction::input || (capture != nullptr && capture->result)) continue;
+    for (const std::string* name : {&port.current, &port.power}) {
+      const ChannelValue* value = values.find(*name);
+      if (value == nullptr || !value->typed || !value->plain) continue;
+      result.remarks.push_back(*name +
+                               ": typed, and the output is below 10 % of the rated power: should the "
+                               "converter work in bursts, these readings would not show it; link the "
+                               "meter or take a capture");
+    }
+  }
+}
+
 }  // namespace
 
 StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hookup, const setup::Stair& stair,
@@ -196,6 +215,7 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   result.dc_component = std::move(captured.dc_component);
   result.frequency = frequency_of(values, captured.frequency);
   remark_crest(values, result.remarks);
+  remark_bursts(values, stair.ratings.output_power_w, result);
   const auto place = static_cast<std::size_t>(std::max(step.index, 0));
   const setup::Step* plan = place < stair.steps.size() ? &stair.steps[place] : nullptr;
   const double begun_s =
