@@ -22,6 +22,12 @@ std::string join(const std::vector<std::string>& names) {
   return line;
 }
 
+// A sentence within a line.
+std::string without_stop(std::string text) {
+  if (text.ends_with('.')) text.pop_back();
+  return text;
+}
+
 // " W", as the control's profile says; empty where nothing says it.
 std::string unit_of(const SetPoint& point, const Hookup* hookup) {
   if (hookup == nullptr) return "";
@@ -55,13 +61,15 @@ std::string describe_power(const Step& step) {
 }
 
 std::string describe(const Step& step, const Hookup* hookup) {
-  std::string line = step.label + ": " + describe_power(step);
-  if (!step.rewire.empty()) line += ", first with everything off, by hand: " + step.rewire;
+  std::string line = step.label + ": ";
+  if (!step.rewire.empty())
+    line += "with everything off and discharged, by hand: " + without_stop(step.rewire) + "; ";
+  line += describe_power(step);
   for (const SetPoint& point : step.set) {
     line +=
         ", " + point.control + " " + point.setting + " " + short_number(point.value) + unit_of(point, hookup);
   }
-  if (!step.prompt.empty()) line += ", by hand: " + step.prompt;
+  if (!step.prompt.empty()) line += ", by hand: " + without_stop(step.prompt);
   line += "; soak " + number(step.soak_s) + " s";
   if (step.electrical || step.thermal) line += ", settle at most " + number(step.settle_limit_s) + " s";
   line += ", average " + number(step.average_s) + " s";

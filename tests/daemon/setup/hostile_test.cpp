@@ -57,8 +57,9 @@ std::size_t change_everything(const std::string& path,
 }
 
 TEST_CASE("no change of one value in a hook-up file does harm") {
-  for (const auto* name : {"north_bench.hookup.json", "stoat.hookup.json"}) {
-    const auto refused = change_everything(LOADSTAIR_SOURCE "/sample-captures/" + std::string{name},
+  for (const auto* name : {"sample-captures/north_bench.hookup.json", "sample-captures/stoat.hookup.json",
+                           "tests/daemon/setup/every_key.hookup.json"}) {
+    const auto refused = change_everything(LOADSTAIR_SOURCE "/" + std::string{name},
                                            [](const std::string& text) -> std::string {
                                              const auto read = read_hookup(text, "f");
                                              if (!read) return read.refusal().place;
@@ -72,16 +73,18 @@ TEST_CASE("no change of one value in a hook-up file does harm") {
 
 TEST_CASE("no change of one value in a stair file does harm") {
   for (const auto* pair :
-       {"north_bench.hookup.json marten.stair.json", "stoat.hookup.json stoat.stair.json"}) {
+       {"sample-captures/north_bench.hookup.json sample-captures/marten.stair.json",
+        "sample-captures/stoat.hookup.json sample-captures/stoat.stair.json",
+        "tests/daemon/setup/every_key.hookup.json tests/daemon/setup/every_key.stair.json"}) {
     const std::string both{pair};
-    const std::string folder = LOADSTAIR_SOURCE "/sample-captures/";
+    const std::string folder = LOADSTAIR_SOURCE "/";
     const auto bench = load_hookup(folder + both.substr(0, both.find(' ')));
     REQUIRE(bench);
     const auto refused =
         change_everything(folder + both.substr(both.find(' ') + 1), [&](const std::string& text) {
           const auto read = read_stair(text, "f");
           if (!read) return read.refusal().place;
-          (void)explain(*read);
+          (void)explain(*read, &*bench);
           (void)cautions(*bench, &*read);
           const auto matched = match(*read, *bench);
           if (!matched) return matched.refusal().place;
