@@ -1,6 +1,7 @@
 // docs/files.md describes every key that the readers accept, and no other; its examples are read by the
 // readers.
 #include <catch2/catch.hpp>
+#include <filesystem>
 #include <fstream>
 #include <map>
 #include <regex>
@@ -79,6 +80,18 @@ TEST_CASE("the examples of docs/files.md can be read, and hold known keys only")
     CHECK(std::any_of(forms.begin(), forms.end(), fits));
   }
   CHECK(examples >= 6);
+}
+
+TEST_CASE("every limit table stands in docs/files.md") {
+  const std::string text = docs();
+  std::size_t tables = 0;
+  for (const auto& entry : std::filesystem::directory_iterator{LOADSTAIR_SOURCE "/analysis/limits/tables"}) {
+    if (entry.path().extension() != ".csv" || entry.path().stem() == "index") continue;
+    INFO(entry.path().stem());
+    CHECK(text.find("`" + entry.path().stem().string() + "`") != std::string::npos);
+    ++tables;
+  }
+  CHECK(tables >= 3);
 }
 
 TEST_CASE("every built-in profile, its queries and its commands stand in docs/files.md") {
