@@ -124,6 +124,12 @@ void find_in_idle(const Hookup& hookup, const Stair& stair, Findings& findings) 
   }
 }
 
+bool has_ambient(const Hookup& hookup, std::string_view place) {
+  return std::any_of(
+      hookup.temperatures.begin(), hookup.temperatures.end(),
+      [&](const TemperaturePoint& point) { return point.place == place && !point.ambient_channel.empty(); });
+}
+
 }  // namespace
 
 void find_in_checks(const Hookup& hookup, const Stair& stair, Findings& findings) {
@@ -142,6 +148,9 @@ void find_in_limits(const Hookup& hookup, const Stair& stair, Findings& findings
     const std::set<std::string> of_captures = {"thd_voltage", "thd_current", "crest_factor", "dc_component"};
     if (of_captures.count(limit.quantity) > 0 && hookup.captures.empty()) {
       undecided(limit.quantity + " comes from a capture, and the hook-up has no \"captures\"");
+    }
+    if (limit.quantity.starts_with("hot ") && !has_ambient(hookup, limit.quantity.substr(4))) {
+      undecided("the temperature is projected by its rise over the air, and the place has no \"ambient\"");
     }
     if (limit.quantity == "no_load" && !any_step(stair, StepKind::no_load)) {
       undecided("the stair has no check \"no_load\"");

@@ -235,14 +235,18 @@ TEST_CASE("cautions of checks name what is dangerous, and what they cannot tell"
     return step.label == "tie voltmeters, high" || step.label == "5 % again" || step.label == "zero after" ||
            step.kind == StepKind::no_load;
   });
-  less.limits = {{"idle", "no_load", "W", {}, 10.0, {}, ""}, {"shape", "thd_voltage", "%", {}, 5.0, {}, ""}};
+  less.limits = {{"summer", "hot heatsink", "degC", {}, 90.0, {}, ""},
+                 {"idle", "no_load", "W", {}, 10.0, {}, ""},
+                 {"shape", "thd_voltage", "%", {}, 5.0, {}, ""}};
   less.ambient_c = 15.0;
   Hookup blind = hookup;
   blind.captures.clear();
+  blind.temperatures[0].ambient_channel.clear();
   const auto worse = cautions(blind, &less);
   CHECK(saying(worse, Severity::warning, "tie \"voltmeters\" has one level") == 1);
   CHECK(saying(worse, Severity::note, "closure does not end with the first level, \"5 %\"") == 1);
   CHECK(saying(worse, Severity::note, "no zero check at the end") == 1);
+  CHECK(saying(worse, Severity::warning, "limit \"summer\" will stay undecided: the temperature") == 1);
   CHECK(saying(worse, Severity::warning, "limit \"idle\" will stay undecided: the stair has no check") == 1);
   CHECK(saying(worse, Severity::warning,
                "limit \"shape\" will stay undecided: thd_voltage comes from a capture") == 1);
