@@ -75,6 +75,20 @@ double spread_of(const std::vector<Round>& rounds, const WindowContext& context)
   return difference / 2.0 + slope_per_s * (half_width_s + std::abs(mean_s - context.middle_s()));
 }
 
+/// Rounds that lie apart by more than the meter explains: the display moves, and half of what lies between
+/// two readings is then no bound of how far their mean strays.
+void remark_restless(ChannelValue& into, const std::vector<Round>& rounds, const Estimate& error) {
+  if (rounds.size() < 2) return;
+  const auto [least, most] = std::minmax_element(
+      rounds.begin(), rounds.end(), [](const Round& a, const Round& b) { return a.raw < b.raw; });
+  const double half_way = (most->raw - least->raw) / 2.0;
+  if (!(half_way > error.standard_uncertainty())) return;
+  into.remarks.push_back(into.channel->name + ": its rounds differ by " +
+                         base::print_significant(2.0 * half_way, 2) +
+                         ", more than the meter's accuracy explains; a few typed readings of a display that "
+                         "moves say little of its mean: link the meter, or type more rounds");
+}
+
 }  // namespace
 
 void fill_typed(ChannelValue& into, const store::StoredRun& run, const setup::Hookup& hookup,
@@ -115,7 +129,9 @@ void fill_typed(ChannelValue& into, const store::StoredRun& run, const setup::Ho
   if (last_digit > kCoarser * resolution) {
     add_half_width(into, context, "last digit as typed", per_raw * last_digit / 2.0);
   }
-  attach_meter_error(into, meter_error(into, hookup, context));
+  const estimate::Quoted error = meter_error(into, hookup, context);
+  if (error) remark_restless(into, rounds, *error);
+  attach_meter_error(into, error);
 }
 
 }  // namespace loadstair::evaluation

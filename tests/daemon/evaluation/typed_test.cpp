@@ -110,6 +110,43 @@ TEST_CASE("one round only, or none") {
   CHECK(*step.input_power.expanded > kNormal95 * 2.0 * 0.1 / std::sqrt(3.0));
 }
 
+namespace {
+
+/// Remarks of a typed step that hold this text.
+int remarks_with(const StepResult& step, const std::string& text) {
+  int count = 0;
+  for (const std::string& remark : step.remarks) count += remark.find(text) == std::string::npos ? 0 : 1;
+  return count;
+}
+
+HandBench typed_twice(double second_input_a, double rated_w) {
+  HandBench bench = typed_bench({.reading_percent = 0.5, .resolution = 0.001});
+  bench.stair.ratings.output_power_w = rated_w;
+  for (int round = 1; round <= 2; ++round) {
+    const double at_s = round == 1 ? 1.0 : 9.0;
+    bench.type_round("input voltage", 0, round, 48.0, at_s, 0.001);
+    bench.type_round("input current", 0, round, round == 1 ? 0.83 : second_input_a, at_s, 0.001);
+    bench.type_round("output voltage", 0, round, 12.0, at_s, 0.001);
+    bench.type_round("output current", 0, round, 3.2, at_s, 0.001);
+  }
+  return bench;
+}
+
+}  // namespace
+
+TEST_CASE("rounds that lie apart by more than the meter explains are told of") {
+  // u of the meter is 0.5 % / sqrt 3 of 0.83 A: 2.4 mA; half of what lies between is 2 and 3 mA.
+  CHECK(remarks_with(typed_twice(0.834, 40.0).evaluate().steps.at(0), "its rounds differ by") == 0);
+  CHECK(remarks_with(typed_twice(0.836, 40.0).evaluate().steps.at(0),
+                     "input current: its rounds differ by 0.006") == 1);
+}
+
+TEST_CASE("a typed input below a tenth of the load may hide bursts") {
+  // 38.4 W out: 9.6 % of 400 W, 10.1 % of 380 W.
+  CHECK(remarks_with(typed_twice(0.83, 380.0).evaluate().steps.at(0), "bursts") == 0);
+  CHECK(remarks_with(typed_twice(0.83, 400.0).evaluate().steps.at(0), "input current: typed") == 1);
+}
+
 TEST_CASE("typed and linked channels mix in one port") {
   HandBench bench = stoat_bench({.reading_percent = 0.0});
   bench.hookup.channels[0].typed = true;
