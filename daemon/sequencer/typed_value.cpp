@@ -103,6 +103,7 @@ base::Outcome<double> positive(const setup::Channel& channel, const std::string&
 std::string meter_unit(const setup::Channel& channel) {
   if (channel.conversion.shunt) return "V";
   if (channel.conversion.thermocouple && !channel.conversion.thermocouple->cold_junction.empty()) return "V";
+  if (channel.conversion.platinum || channel.conversion.thermistor) return "ohm";
   return channel.unit;
 }
 

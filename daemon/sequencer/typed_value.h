@@ -19,7 +19,7 @@ struct TypedValue {
 };
 
 /// The unit a channel's meter shows, before conversion: V across a shunt or of a thermocouple with its own
-/// cold junction channel, the channel's own unit otherwise.
+/// cold junction channel, ohm of a resistance thermometer, the channel's own unit otherwise.
 [[nodiscard]] std::string meter_unit(const setup::Channel& channel);
 
 /// Reads an entry. Number with point or comma, with or without its unit; unit and range as given.

@@ -69,6 +69,19 @@ TEST_CASE("a channel with a shunt is typed in what its meter shows") {
   CHECK_FALSE(read_typed(channel, {.value = "0.163 A"}).ok());
 }
 
+TEST_CASE("a resistance thermometer is typed in ohms") {
+  setup::Channel channel;
+  channel.quantity = setup::Quantity::temperature;
+  channel.unit = "degC";
+  channel.conversion.thermistor = setup::Thermistor{};
+  CHECK(meter_unit(channel) == "ohm");
+  CHECK(read_typed(channel, {.value = "12.5 kohm"})->value == Approx(12500.0).epsilon(1e-14));
+  CHECK_FALSE(read_typed(channel, {.value = "25 degC"}).ok());
+  channel.conversion.thermistor.reset();
+  channel.conversion.platinum = setup::Platinum{};
+  CHECK(meter_unit(channel) == "ohm");
+}
+
 TEST_CASE("implausible: outside the hook-up's span, off the range, far from the other round") {
   const auto channel = voltmeter();
   const auto why = [&channel](TypedEntry entry, std::optional<double> earlier = std::nullopt) {
