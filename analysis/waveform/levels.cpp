@@ -94,7 +94,7 @@ void set_extremes(ChannelResult& out, const Prepared& x, const Range& range) {
 /// Fewer steps than this from the mean to the peak leave its height unsure.
 constexpr double kLeastStepsToPeak = 20.0;
 
-void set_ratios(ChannelResult& out, double samples_per_cycle, bool lattice) {
+void set_ratios(ChannelResult& out, double samples_per_cycle) {
   const std::string place = "channel " + out.name;
   const bool clipped = out.peak.lower_bound;
   out.crest_factor = Refusal{place, "the signal is zero"};
@@ -108,8 +108,7 @@ void set_ratios(ChannelResult& out, double samples_per_cycle, bool lattice) {
   }
   const double step = out.quantisation_step;
   const double above_mean = std::max(out.maximum - out.mean, out.mean - out.minimum);
-  const bool coarse =
-      samples_per_cycle > 0.0 && lattice && step > 0.0 && above_mean < kLeastStepsToPeak * step;
+  const bool coarse = samples_per_cycle > 0.0 && step > 0.0 && above_mean < kLeastStepsToPeak * step;
   const double peak = out.peak.value - (coarse ? 0.5 * step : 0.0);
   out.crest_factor = Bounded{peak / out.rms.value, clipped || coarse};
 }
@@ -131,7 +130,7 @@ void set_levels(ChannelResult& out, const Prepared& x, const CycleWindow& window
   const bool told = window.cycles == 0 || steps.levels > kSwitchedLevels;
   out.quantisation_step = told ? steps.step * std::abs(x.scale) : 0.0;
   set_scatter(out, x, window);
-  set_ratios(out, window.period, steps.lattice);
+  set_ratios(out, window.period);
 }
 
 }  // namespace loadstair::waveform

@@ -1,7 +1,6 @@
 #include "analysis/waveform/noise.h"
 
 #include <algorithm>
-#include <array>
 #include <cmath>
 #include <limits>
 #include <numbers>
@@ -124,39 +123,30 @@ double noise_of_direct(const Prepared& channel) {
 }
 
 Steps steps_of(const Prepared& channel, std::size_t first, std::size_t past) {
-  double low = std::numeric_limits<double>::infinity();
-  double high = -low;
-  for (std::size_t k = first; k < past; ++k) {
-    low = std::min(low, channel.samples[k]);
-    high = std::max(high, channel.samples[k]);
-  }
-  // Smaller changes are rounding of the numbers themselves.
+  constexpr std::size_t kEnough = 65536;
+  const auto begin = channel.samples.begin() + static_cast<std::ptrdiff_t>(first);
+  std::vector<double> value(begin, begin + static_cast<std::ptrdiff_t>(std::min(past - first, kEnough)));
+  std::sort(value.begin(), value.end());
+  // Smaller gaps are rounding of the numbers themselves.
   constexpr double kSame = 1e-9;
-  const double same = kSame * (high - low);
+  const double same = kSame * (value.back() - value.front());
+  const auto end = std::unique(value.begin(), value.end(), [&](double a, double b) { return b - a <= same; });
+  value.erase(end, value.end());
   Steps out;
-  out.step = std::numeric_limits<double>::infinity();
-  std::array<double, 4> seen{};
-  for (std::size_t k = first; k < past; ++k) {
-    const double sample = channel.samples[k];
-    if (k > first) {
-      const double change = std::abs(sample - channel.samples[k - 1]);
-      if (change > same) out.step = std::min(out.step, change);
-    }
-    const auto count = static_cast<std::size_t>(out.levels);
-    const bool is_new =
-        count < seen.size() && std::none_of(seen.begin(), seen.begin() + out.levels,
-                                            [&](double v) { return std::abs(v - sample) <= same; });
-    if (is_new) seen[count] = sample, ++out.levels;
+  out.levels = static_cast<int>(std::min<std::size_t>(value.size(), 4));
+  if (value.size() < 2) return out;
+  double step = std::numeric_limits<double>::infinity();
+  for (std::size_t k = 1; k < value.size(); ++k) step = std::min(step, value[k] - value[k - 1]);
+  // Every gap a whole number of steps, to what printed digits leave; the step is refined on the way up.
+  constexpr double kOffStep = 0.1;
+  double steps = 0.0;
+  for (std::size_t k = 1; k < value.size(); ++k) {
+    const double gap = (value[k] - value[k - 1]) / step;
+    if (std::abs(gap - std::round(gap)) > kOffStep) return out;
+    steps += std::round(gap);
+    if (k > 1) step = (value[k] - value.front()) / steps;
   }
-  if (!std::isfinite(out.step)) out.step = 0.0;
-  constexpr double kMostSteps = 64.0;
-  if (!(out.step > 0.0) || high - low > kMostSteps * out.step) return out;
-  constexpr double kOnStep = 1e-3;
-  out.lattice = true;
-  for (std::size_t k = first; k < past && out.lattice; ++k) {
-    const double steps = (channel.samples[k] - low) / out.step;
-    out.lattice = std::abs(steps - std::round(steps)) < kOnStep;
-  }
+  out.step = step;
   return out;
 }
 

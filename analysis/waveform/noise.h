@@ -29,10 +29,10 @@ double noise_of_direct(const Prepared& channel);
 
 /// Steps of a converter seen in samples [first, past), in the samples' own unit.
 struct Steps {
-  double step = 0.0;     ///< smallest change between neighbours; 0: none
-  bool lattice = false;  ///< fewer than 64 steps from end to end, and every sample on one of them
-  int levels = 0;        ///< different values, counted to 4
+  double step = 0.0;  ///< of the lattice that all samples lie on; 0: they lie on none, or are all equal
+  int levels = 0;     ///< different values, counted to 4
 };
+/// Looks at the first 65536 samples of the range. Precondition: first < past.
 Steps steps_of(const Prepared& channel, std::size_t first, std::size_t past);
 
 }  // namespace loadstair::waveform

@@ -166,8 +166,9 @@ struct ChannelResult {
   /// whole band, lines of a carrier left out; of a direct record the RMS of the samples' second differences
   /// over sqrt 6.
   double noise_rms = 0.0;
-  /// Smallest step between samples; its share of RMS^2, contained in noise_rms^2, is step^2/12. 0 where it
-  /// cannot be told: all samples equal, or an alternating record on three levels or fewer.
+  /// Step of the lattice that all samples lie on; its share of RMS^2, contained in noise_rms^2, is step^2/12.
+  /// 0 where it cannot be told: samples on no lattice or all equal, or an alternating record on three levels
+  /// or fewer.
   double quantisation_step = 0.0;
   std::size_t missing = 0;  ///< samples filled in (blank) or set to the range's end (clipped)
 };

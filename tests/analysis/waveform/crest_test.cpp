@@ -139,5 +139,25 @@ TEST_CASE("noise and steps stand beside the RMS, and RMS^2 less both is the sign
   }
 }
 
+TEST_CASE("a smooth record has no steps, however few its samples; printed ones keep theirs") {
+  // 200 samples a cycle: neighbours differ by 2 % of the step's size at least, which is no step of a
+  // converter.
+  const auto smooth =
+      shaped(10.0, 2000, [](double angle) { return std::sin(angle) + 1e-4 * std::sin(9 * angle); });
+  const auto result = analyse(one_channel(smooth, 1e-4));
+  REQUIRE(result);
+  CHECK(result->channels[0].quantisation_step == 0.0);
+  CHECK(result->channels[0].noise_rms < 1e-9);
+  CHECK_FALSE(result->channels[0].harmonics[8].below_floor);
+  CHECK(result->channels[0].harmonics[7].below_floor);
+  // 8 bits of 10 V printed to three decimals: 0.039 for 0.0390625.
+  const auto printed = shaped(10.37, 20000, [](double angle) {
+    return std::round(1000.0 * std::round(4.7 * std::sin(angle) / 0.0390625) * 0.0390625) / 1000.0;
+  });
+  const auto found = analyse(one_channel(printed, 1e-5));
+  REQUIRE(found);
+  CHECK(found->channels[0].quantisation_step == Approx(0.0390625).epsilon(0.001));
+}
+
 }  // namespace
 }  // namespace loadstair::waveform
