@@ -99,6 +99,17 @@ std::optional<waveform::ZeroReading> zero_beside(const store::StoredRun& run, co
   return *zero;
 }
 
+/// A DC port's ripple over whole cycles of its own, where the record has them: parts of a cycle at the ends
+/// would count as ripple power and as scatter. Else over the whole record.
+base::Outcome<waveform::WaveformResult> analysed_direct(const waveform::Waveform& record,
+                                                        waveform::AnalysisSettings settings) {
+  settings.expected = waveform::Expected::either;
+  auto by_cycles = waveform::analyse(record, settings);
+  if (by_cycles) return by_cycles;
+  settings.expected = waveform::Expected::direct;
+  return waveform::analyse(record, settings);
+}
+
 void analyse(const store::StoredCapture& stored, const setup::Stair& stair, const WindowContext& context,
              CaptureAnalysis& into) {
   const setup::CaptureSource& source = *into.source;
@@ -118,12 +129,12 @@ void analyse(const store::StoredCapture& stored, const setup::Stair& stair, cons
   settings.harmonics = kHarmonics;
   settings.crest_band_hz = source.crest_band_hz;
   const bool alternating = into.port != nullptr && into.port->kind == setup::PortKind::ac;
-  settings.expected = alternating ? waveform::Expected::alternating : waveform::Expected::direct;
+  settings.expected = waveform::Expected::alternating;
   if (alternating && into.port->direction == setup::Direction::output &&
       stair.ratings.output_frequency_hz > 0.0) {
     settings.fundamental_hz = stair.ratings.output_frequency_hz;
   }
-  into.result = waveform::analyse(*waveform, settings);
+  into.result = alternating ? waveform::analyse(*waveform, settings) : analysed_direct(*waveform, settings);
   if (!into.result) {
     into.result = base::Refusal{stored.file_name, into.result.refusal().text()};
     return;
