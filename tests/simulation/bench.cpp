@@ -48,7 +48,8 @@ Meter draw_meter(Draw& draw, Signal signal, double most, Grade grade_of, const B
   meter.integration_s = draw.chance(0.7) ? draw.between(0.02, 0.2) : 0.0;
   meter.update_s = draw.chance(0.4) ? draw.between(0.1, 0.4) : 0.0;
   meter.delay_s = draw.chance(0.4) ? draw.between(0.02, 0.8) : 0.0;
-  meter.noise_share = choice.quiet ? 0.0 : draw.spread(1e-6, 5e-5);
+  const double noise_share = choice.noisy ? draw.spread(3e-4, 1e-2) : draw.spread(1e-6, 3e-4);
+  meter.noise_share = choice.quiet ? 0.0 : noise_share;
   meter.shares = choice.shares;
   if (choice.repeatability > 0.0) {
     meter.repeatability_percent = choice.repeatability * grade_of.reading_percent;
@@ -127,8 +128,8 @@ PortPlan draw_port(Draw& draw, bool input, bool ac, double most_w, double most_v
   return port;
 }
 
-void name_meters(Draw& draw, PortPlan& port, bool plain) {
-  const bool typed = !plain && draw.chance(0.25);
+void name_meters(Draw& draw, PortPlan& port, const BenchChoice& choice) {
+  const bool typed = draw.chance(0.25) && !choice.plain && !choice.linked;
   for (Meter& meter : port.meters) {
     static const char* const kNames[] = {" volts", " amperes", " watts", " power factor"};
     meter.channel = port.name() + kNames[static_cast<std::size_t>(meter.signal)];
@@ -202,13 +203,13 @@ Bench draw_bench(std::uint64_t seed, const BenchChoice& choice) {
   bench.board = draw_board(seed, bench.rated_w);
   bench.input = draw_port(draw, true, false, 1.15 * bench.rated_w, bench.source_v, choice);
   bench.output = draw_port(draw, false, inverter, 1.02 * bench.rated_w, bench.output_v, choice);
-  name_meters(draw, bench.input, choice.plain);
-  name_meters(draw, bench.output, choice.plain);
+  name_meters(draw, bench.input, choice);
+  name_meters(draw, bench.output, choice);
   bench.levels = {0.1, 0.25, 0.5, 0.75, 1.0};
   bench.window_s = draw.between(25.0, 60.0);
   if (!choice.quiet) {
     bench.drift_share = draw.between(-0.003, 0.003);
-    bench.wander_share = draw.spread(1e-5, 1e-3);
+    bench.wander_share = choice.noisy ? draw.spread(1e-3, 3e-2) : draw.spread(1e-5, 5e-3);
     bench.wander_s = draw.between(0.05, 0.5);
   }
   apply_trouble(draw, bench);

@@ -77,6 +77,8 @@ struct Bench {
 
 struct BenchChoice {
   bool quiet = false;          ///< no noise, no wander, no resolution: only what specifications imply
+  bool noisy = false;          ///< noise and load wander as large as the specifications' errors
+  bool linked = false;         ///< no typed channels
   bool plain = false;          ///< volts and amperes at both ends, sensed, ideal wiring
   double repeatability = 0.0;  ///< declared and true: this share of the gain's limits
   ErrorShares shares;

@@ -60,7 +60,7 @@ std::string ripple_csv(double mean_v, double mean_a, double ripple_a, double sou
     const double step = full_scale / 1024.0;
     return std::round(value / step) * step;
   };
-  for (int i = 0; i < 6000; ++i) {
+  for (int i = 0; i < 6130; ++i) {  // 12.26 cycles
     const double t_s = i * 2e-5;
     const double wave_a = ripple_a * std::numbers::sqrt2 * std::sin(2.0 * std::numbers::pi * 100.0 * t_s);
     const double volts = mean_v - source_ohm * wave_a + 0.02 * draw.normal();

@@ -30,7 +30,7 @@ void bound(std::string_view what, double value, double low, double high) {
   fmt::print("{:<58}{:9.4f}  wanted {} to {}{}\n", what, value, low, high, within ? "" : "  MISSED");
 }
 
-/// Worst draws of a figure, for a person who looks for the reason.
+/// Draws that do not hold of a figure, for a person who looks for the reason.
 void print_worst(const Outcome& one, const Judged& judged, std::string_view what) {
   if (judged.holds()) return;
   fmt::print("  seed {} {}: truth {:.6g}, {:.6g} in {:.6g} to {:.6g}, implied half-width {:.3g}\n",
@@ -51,6 +51,19 @@ void coverage(const Order& order) {
   bound("efficiency: median half-width over noise-free", study.efficiency.median_width_ratio(), 0.95, 1.25);
   bound("loss: median half-width over noise-free", study.loss.median_width_ratio(), 0.95, 1.25);
   bound("difference: median half-width over noise-free", study.difference.median_width_ratio(), 0.95, 1.25);
+  StudyChoice noisy;
+  noisy.bench.noisy = noisy.bench.linked = true;
+  const Study loud = run_study(order.first, order.draws, noisy);
+  fmt::print("with noise as large as the specifications' errors, linked meters\n{}", described(loud));
+  bound("noisy, efficiency: share that holds", loud.efficiency.share(), 0.93, 0.985);
+  bound("noisy, loss: share that holds", loud.loss.share(), 0.93, 0.985);
+  bound("noisy, difference: share that holds", loud.difference.share(), 0.93, 0.985);
+  // Two typed rounds cannot show how a restless display strays: there the remark counts.
+  noisy.bench.linked = false;
+  const Study typed = run_study(order.first, order.draws, noisy);
+  fmt::print("the same, some of them typed\n{}", described(typed));
+  bound("noisy, typed too, efficiency: holds or remarked", typed.efficiency.share_with_warnings(), 0.93, 1.0);
+  bound("noisy, typed too, difference: holds or remarked", typed.difference.share_with_warnings(), 0.93, 1.0);
 }
 
 void trouble(const Order& order) {

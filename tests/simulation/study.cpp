@@ -4,6 +4,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <utility>
 
 #include "analysis/estimate/coverage.h"  // results are read through it: differences of estimates
 #include "simulation/draw.h"
@@ -33,16 +34,22 @@ const efficiency::CurvePoint* point_of(const evaluation::RunResult& result, cons
 
 }  // namespace
 
-double median(std::vector<double> values) {
+double quantile(std::vector<double> values, double share) {
   if (values.empty()) return 0.0;
-  const auto middle = values.begin() + static_cast<std::ptrdiff_t>(values.size() / 2);
-  std::nth_element(values.begin(), middle, values.end());
-  return *middle;
+  const auto place =
+      values.begin() + static_cast<std::ptrdiff_t>(share * static_cast<double>(values.size() - 1) + 0.5);
+  std::nth_element(values.begin(), place, values.end());
+  return *place;
+}
+
+double median(std::vector<double> values) {
+  return quantile(std::move(values), 0.5);
 }
 
 void Tally::add(const Judged& one) {
   ++counted;
   if (one.holds()) ++holding;
+  if (one.warned) ++warned;
   if (one.holds() || one.warned) ++holding_or_warned;
   if (!one.known) {
     ++unknown;
@@ -144,11 +151,13 @@ std::string described(const Study& study) {
   std::string text;
   const auto line = [&](const char* name, const Tally& tally) {
     if (tally.counted == 0) return;
+    const std::vector<double>& ratios = tally.width_ratios;
     text += fmt::format(
-        "{:<12}{:6.2f} % of {} hold ({} without a figure; held or warned {:.2f} %), half-width {:.3f} of the "
-        "noise-free one\n",
-        name, 100.0 * tally.share(), tally.counted, tally.unknown, 100.0 * tally.share_with_warnings(),
-        tally.median_width_ratio());
+        "{:<11}{:6.2f} % of {} hold ({} without a figure, {} with a remark, held or remarked {:.2f} %); "
+        "half-width "
+        "over noise-free {:.3f}, one in ten above {:.2f}\n",
+        name, 100.0 * tally.share(), tally.counted, tally.unknown, tally.warned,
+        100.0 * tally.share_with_warnings(), tally.median_width_ratio(), quantile(ratios, 0.9));
   };
   line("efficiency", study.efficiency);
   line("loss", study.loss);

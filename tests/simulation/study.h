@@ -24,7 +24,7 @@ struct Judged {
 
 /// Many of them.
 struct Tally {
-  std::size_t counted = 0, holding = 0, unknown = 0, holding_or_warned = 0;
+  std::size_t counted = 0, holding = 0, unknown = 0, warned = 0, holding_or_warned = 0;
   std::vector<double> width_ratios, errors;  ///< half-width over implied; error over half-width
 
   void add(const Judged& one);
@@ -32,6 +32,7 @@ struct Tally {
   [[nodiscard]] double share_with_warnings() const;
   [[nodiscard]] double median_width_ratio() const;
 };
+[[nodiscard]] double quantile(std::vector<double> values, double share);
 [[nodiscard]] double median(std::vector<double> values);
 
 /// What is judged of a bench: one step of one run, and the same step of a second board's run.
