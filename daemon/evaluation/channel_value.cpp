@@ -6,6 +6,7 @@
 #include <utility>
 
 #include "analysis/base/number.h"
+#include "analysis/sensors/quoted.h"
 #include "analysis/series/statistics.h"
 #include "daemon/evaluation/live.h"
 #include "daemon/evaluation/sensor_of.h"
@@ -18,9 +19,6 @@ using estimate::Distribution;
 using estimate::Estimate;
 using estimate::Quoted;
 
-/// How well the temperature of a shunt is known: 2 K, and 30 % of its own rise (common practice, no source).
-constexpr double kShuntTemperatureK = 2.0;
-constexpr double kShuntRiseShare = 0.3;
 constexpr double kRoomDegc = 23.0;
 
 Estimate half_width(double value, estimate::SourcePtr source) {
@@ -65,50 +63,84 @@ void sort_into_ranges(ChannelValue& into) {
   }
 }
 
+/// The conversion's own errors around `quoted`; what is not known of them is told.
+Estimate own_errors(ChannelValue& of, const Quoted& quoted, const std::string& name) {
+  if (quoted) return quoted->with_value(0.0);
+  of.unknown = name + ": " + quoted.refusal().reason;
+  return Estimate{0.0};
+}
+
+Estimate shunt_error(ChannelValue& of, double volt) {
+  const setup::Shunt& declared = *of.channel->conversion.shunt;
+  const sensors::Shunt shunt = shunt_of(declared);
+  const auto current = sensors::shunt_current(shunt, volt, declared.ambient_c);
+  if (!current) return Estimate{0.0};
+  of.sensitivity *= current->per_volt_a;
+  sensors::ShuntErrors errors;
+  errors.tolerance_percent = declared.tolerance_percent;
+  errors.ambient_degc = declared.ambient_c;
+  if (declared.ambient_tolerance_k) errors.ambient_tolerance_k = *declared.ambient_tolerance_k;
+  // One name with the burden that the shunt is to the circuit: one resistor, one source.
+  const std::string name = burden_name(*of.channel, kNoRange);
+  return own_errors(of, sensors::quoted_shunt(shunt, errors, Estimate{volt}, name), name);
+}
+
+Estimate thermocouple_error(ChannelValue& of, double emf_v) {
+  const setup::Thermocouple& couple = *of.channel->conversion.thermocouple;
+  const auto type = thermocouple_of(couple);
+  if (!type) return Estimate{0.0};
+  Estimate sum{0.0};
+  if (!couple.cold_junction.empty()) {
+    const double cold_degc = of.cold_junction ? of.cold_junction->value() : kRoomDegc;
+    if (const auto junction = sensors::thermocouple_temperature(*type, emf_v, cold_degc)) {
+      of.sensitivity *= junction->per_emf_k_per_v;
+      if (of.cold_junction) sum = sum + junction->per_cold_junction * of.cold_junction->with_value(0.0);
+    }
+    if (!of.cold_junction) of.unknown = "its cold junction's uncertainty is not known";
+  }
+  const auto tolerance = sensors::thermocouple_tolerance_k(*type, couple.tolerance_class, of.middle);
+  const std::string name = "thermocouple of " + of.channel->name;
+  if (tolerance) return sum + half_width(*tolerance, component(name, "tolerance class"));
+  of.unknown = name + ": " + tolerance.refusal().reason;
+  return sum;
+}
+
+Estimate platinum_error(ChannelValue& of, double ohm) {
+  const setup::Platinum& platinum = *of.channel->conversion.platinum;
+  if (const auto found = platinum_temperature(platinum, ohm)) of.sensitivity *= found->sensitivity;
+  const std::string name = "platinum thermometer of " + of.channel->name;
+  const auto tolerance_class = sensors::parse_platinum_class(platinum.tolerance_class);
+  if (!tolerance_class) return own_errors(of, tolerance_class.refusal(), name);
+  const sensors::PlatinumSensor sensor{
+      .r0_ohm = platinum.r0_ohm,
+      .tolerance_class = *tolerance_class,
+      .build = platinum.film ? sensors::PlatinumBuild::film : sensors::PlatinumBuild::wire_wound,
+      .lead_ohm = platinum.lead_ohm};
+  return own_errors(of, sensors::quoted_platinum(sensor, Estimate{ohm}, name), name);
+}
+
+Estimate thermistor_error(ChannelValue& of, double ohm) {
+  const setup::Thermistor& thermistor = *of.channel->conversion.thermistor;
+  if (const auto found = thermistor_temperature(thermistor, ohm)) of.sensitivity *= found->sensitivity;
+  const std::string name = "thermistor of " + of.channel->name;
+  if (thermistor.tolerance_k) return half_width(*thermistor.tolerance_k, component(name, "tolerance"));
+  of.unknown = name + ": its tolerance is not declared";
+  return Estimate{0.0};
+}
+
 /// d value / d raw at the mean, and the errors of what converts.
 Estimate conversion_error(ChannelValue& of) {
-  const setup::Channel& channel = *of.channel;
-  const double value = of.middle;
-  const setup::Conversion& conversion = channel.conversion;
+  const setup::Conversion& conversion = of.channel->conversion;
+  const double scaled = of.raw * conversion.scale;
   Estimate sum{0.0};
   of.sensitivity = conversion.scale;
-  if (conversion.shunt) {
-    const sensors::Shunt shunt = shunt_of(*conversion.shunt);
-    const auto current = sensors::shunt_current(shunt, of.raw * conversion.scale);
-    if (current) {
-      of.sensitivity = conversion.scale * current->per_volt_a;
-      // One name with the burden that the shunt is to the circuit: one resistor, one source.
-      const std::string name = burden_name(channel, kNoRange);
-      sum = sum -
-            half_width(value * conversion.shunt->tolerance_percent / 100.0, component(name, "resistance"));
-      const double temperature_k = kShuntTemperatureK + kShuntRiseShare * std::abs(current->rise_k);
-      sum = sum - half_width(value * shunt.temperature_coefficient_per_k * temperature_k,
-                             component(name, "temperature"));
-    }
-  } else if (conversion.thermocouple) {
-    if (const auto type = thermocouple_of(*conversion.thermocouple)) {
-      if (!conversion.thermocouple->cold_junction.empty()) {
-        const double cold_degc = of.cold_junction ? of.cold_junction->value() : kRoomDegc;
-        const auto junction = sensors::thermocouple_temperature(*type, of.raw * conversion.scale, cold_degc);
-        if (junction) {
-          of.sensitivity = conversion.scale * junction->per_emf_k_per_v;
-          if (of.cold_junction) sum = sum + junction->per_cold_junction * of.cold_junction->with_value(0.0);
-        }
-        if (!of.cold_junction) of.unknown = "its cold junction's uncertainty is not known";
-      }
-      const auto tolerance =
-          sensors::thermocouple_tolerance_k(*type, conversion.thermocouple->tolerance_class, value);
-      const std::string name = "thermocouple of " + channel.name;
-      if (tolerance) {
-        sum = sum + half_width(*tolerance, component(name, "tolerance class"));
-      } else {
-        of.unknown = name + ": " + tolerance.refusal().reason;
-      }
-    }
-  }
+  if (conversion.shunt) sum = shunt_error(of, scaled);
+  if (conversion.thermocouple) sum = thermocouple_error(of, scaled);
+  if (conversion.platinum) sum = platinum_error(of, scaled);
+  if (conversion.thermistor) sum = thermistor_error(of, scaled);
   if (conversion.scale_tolerance_percent > 0.0) {
     const double error = of.sensitivity * of.raw * conversion.scale_tolerance_percent / 100.0;
-    sum = sum + half_width(error, component("scale of " + channel.name, "ratio"));
+    sum = sum + half_width(error, component("scale of " + of.channel->name, "ratio"));
   }
   return sum;
 }

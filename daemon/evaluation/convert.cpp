@@ -35,6 +35,38 @@ base::Outcome<sensors::Thermocouple> thermocouple_of(const setup::Thermocouple& 
   return sensors::parse_thermocouple({&couple.letter, 1});
 }
 
+base::Outcome<sensors::Converted> platinum_temperature(const setup::Platinum& platinum, double ohm) {
+  return sensors::platinum_temperature(ohm - platinum.lead_ohm, platinum.r0_ohm);
+}
+
+base::Outcome<sensors::Converted> thermistor_temperature(const setup::Thermistor& thermistor, double ohm) {
+  if (thermistor.r25_ohm > 0.0) {
+    return sensors::thermistor_temperature(
+        sensors::Beta{.r25_ohm = thermistor.r25_ohm, .beta_k = thermistor.beta_k}, ohm);
+  }
+  return sensors::thermistor_temperature(sensors::SteinhartHart{thermistor.a, thermistor.b, thermistor.c},
+                                         ohm);
+}
+
+std::optional<double> thermistor_resistance(const setup::Thermistor& thermistor, double degc) {
+  if (thermistor.r25_ohm > 0.0) {
+    const auto ohm = sensors::thermistor_resistance(
+        sensors::Beta{.r25_ohm = thermistor.r25_ohm, .beta_k = thermistor.beta_k}, degc);
+    return ohm ? std::optional{ohm->value} : std::nullopt;
+  }
+  // Falling with temperature: halving ln R between a milliohm and a gigaohm.
+  double low = std::log(1e-3);
+  double high = std::log(1e9);
+  for (int i = 0; i < 100; ++i) {
+    const double middle = (low + high) / 2.0;
+    const double inverse_k = thermistor.a + thermistor.b * middle + thermistor.c * middle * middle * middle;
+    (inverse_k < 1.0 / (degc + 273.15) ? low : high) = middle;
+  }
+  const auto back = thermistor_temperature(thermistor, std::exp(low));
+  if (!back || std::abs(back->value - degc) > 1e-3) return std::nullopt;
+  return std::exp(low);
+}
+
 std::string_view why_unusable(std::uint32_t flags) {
   for (const FlagText& one : kFlagTexts) {
     if ((flags & one.flag) != 0) return one.text;
@@ -48,7 +80,8 @@ base::Outcome<double> convert(const setup::Channel& channel, double raw,
   const setup::Conversion& conversion = channel.conversion;
   double value = raw * conversion.scale;
   if (conversion.shunt) {
-    const auto current = sensors::shunt_current(shunt_of(*conversion.shunt), value);
+    const auto current =
+        sensors::shunt_current(shunt_of(*conversion.shunt), value, conversion.shunt->ambient_c);
     if (!current) return base::Refusal{channel.name, current.refusal().text()};
     value = current->current_a;
   } else if (conversion.thermocouple && !conversion.thermocouple->cold_junction.empty()) {
@@ -61,6 +94,11 @@ base::Outcome<double> convert(const setup::Channel& channel, double raw,
     const auto junction = sensors::thermocouple_temperature(*type, value, *cold_junction_degc);
     if (!junction) return base::Refusal{channel.name, junction.refusal().text()};
     value = junction->temperature_degc;
+  } else if (conversion.platinum || conversion.thermistor) {
+    const auto found = conversion.platinum ? platinum_temperature(*conversion.platinum, value)
+                                           : thermistor_temperature(*conversion.thermistor, value);
+    if (!found) return base::Refusal{channel.name, found.refusal().text()};
+    value = found->value;
   }
   if (!std::isfinite(value))
     return base::Refusal{channel.name, "beyond every number: " + base::print_number(raw)};

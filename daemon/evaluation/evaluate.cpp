@@ -32,11 +32,17 @@ std::vector<std::string> unique_names(const std::vector<store::StoredStep>& step
   return names;
 }
 
-bool at_rated_voltage(const setup::Stair& stair, std::int32_t index) {
-  const auto place = static_cast<std::size_t>(std::max(index, 0));
-  if (place >= stair.steps.size() || !stair.steps[place].input_voltage_v) return true;
+bool at_rated_voltage(const setup::Step* plan, const setup::Stair& stair) {
+  if (plan == nullptr || !plan->input_voltage_v) return true;
   const double rated = stair.ratings.input_voltage_v;
-  return std::abs(*stair.steps[place].input_voltage_v - rated) <= kSameVoltage * rated;
+  return std::abs(*plan->input_voltage_v - rated) <= kSameVoltage * rated;
+}
+
+/// Levels make the curve, each once: a closure's second visit is held against the first.
+bool on_curve(const StepOutcome& outcome, const setup::Stair& stair) {
+  const Quantity& efficiency = outcome.result.efficiency;
+  return outcome.kind == setup::StepKind::level && efficiency.known && efficiency.uncertainty_known &&
+         at_rated_voltage(outcome.plan, stair);
 }
 
 /// q / sqrt 12 of the power's resolution, as far as the sources tell.
@@ -149,13 +155,13 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
   result.method_version = kMethodVersion;
   const std::vector<Track> tracks = tracks_of(run, hookup);
   const std::vector<std::string> names = unique_names(run.steps);
+  std::vector<StepOutcome> outcomes;
   std::vector<efficiency::StepResult> of_curve;
   for (std::size_t i = 0; i < run.steps.size(); ++i) {
-    StepOutcome outcome = step_outcome(run, hookup, stair, tracks, run.steps[i], names[i]);
-    result.steps.push_back(std::move(outcome.result));
-    const bool finite =
-        result.steps.back().efficiency.known && result.steps.back().efficiency.uncertainty_known;
-    if (finite && at_rated_voltage(stair, run.steps[i].index)) of_curve.push_back(std::move(outcome.powers));
+    outcomes.push_back(step_outcome(run, hookup, stair, tracks, run.steps[i], names[i]));
+    const StepOutcome& outcome = outcomes.back();
+    result.steps.push_back(outcome.result);
+    if (on_curve(outcome, stair)) of_curve.push_back(outcome.powers);
   }
   result.points = efficiency::curve(of_curve);
   for (const efficiency::CurvePoint& point : result.points) {

@@ -13,7 +13,7 @@
 
 namespace loadstair::evaluation {
 
-/// From what an instrument said to the channel's quantity: value * scale, then shunt or thermocouple.
+/// From what an instrument said to the channel's quantity: value * scale, then shunt or thermometer.
 /// raw            in the unit that the profile declares
 /// cold_junction_degc   of a thermocouple channel that names one; without it such a channel is refused
 /// Returns: in channel.unit. Refusal (place: the channel's name): not a number, beyond the sensor's range.

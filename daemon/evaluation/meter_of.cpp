@@ -27,15 +27,22 @@ std::string_view quantity_name(const setup::Channel& channel) {
   return "";
 }
 
-/// What the meter itself measures: volts, where a shunt or a thermocouple makes another quantity of them.
+bool resistive(const setup::Channel& channel) {
+  return channel.conversion.platinum || channel.conversion.thermistor;
+}
+
+/// What the meter itself measures: volts or ohms, where a sensor makes another quantity of them.
 std::string_view meter_unit(const setup::Channel& channel) {
   if (channel.conversion.shunt) return "V";
+  if (resistive(channel)) return "ohm";
   if (channel.conversion.thermocouple && !channel.conversion.thermocouple->cold_junction.empty()) return "V";
   return channel.unit;
 }
 
 std::string function_of(const setup::Channel& channel) {
-  std::string function{channel.conversion.shunt ? "dc voltage" : quantity_name(channel)};
+  std::string function{quantity_name(channel)};
+  if (channel.conversion.shunt) function = "dc voltage";
+  if (resistive(channel)) function = "resistance";
   // A meter has several inputs of one quantity only if its values have names of their own.
   const bool plain = channel.value.empty() || channel.value == "reading" ||
                      function.find(channel.value) != std::string::npos;
@@ -46,7 +53,8 @@ std::string function_of(const setup::Channel& channel) {
 
 estimate::MeterRange meter_range(const setup::Channel& channel, int range) {
   estimate::MeterRange meter;
-  meter.meter.instrument = channel.typed ? channel.name : channel.instrument;
+  meter.meter.instrument = channel.instrument;
+  if (channel.typed) meter.meter.instrument = channel.meter.empty() ? channel.name : channel.meter;
   meter.meter.function = function_of(channel);
   if (range == kNoRange) return meter;
   const setup::RangeSpec& spec = channel.ranges[static_cast<std::size_t>(range)];

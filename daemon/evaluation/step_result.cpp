@@ -34,10 +34,10 @@ SettledResult settled_of(const store::StoredStep& step) {
   return out;
 }
 
-std::vector<BudgetEntry> budget_of(const estimate::Quoted& efficiency) {
+std::vector<BudgetEntry> budget_of(const estimate::Quoted& quoted) {
   std::vector<BudgetEntry> out;
-  if (!efficiency) return out;
-  for (const estimate::BudgetLine& line : estimate::budget(*efficiency).lines) {
+  if (!quoted) return out;
+  for (const estimate::BudgetLine& line : estimate::budget(*quoted).lines) {
     if (!(line.share > 0.0)) continue;
     out.push_back({line.name, line.owner.instrument, line.owner.function, line.owner.range,
                    line.kind == estimate::Kind::type_a, line.standard_uncertainty, line.share, line.action,
@@ -97,6 +97,36 @@ PortResult port_result(const setup::Port& declared, const efficiency::PortPower&
   return out;
 }
 
+/// What is no level on the curve has no efficiency: why. Empty for levels, visited for the first time or
+/// again.
+std::string why_no_efficiency(setup::StepKind kind) {
+  switch (kind) {
+    case setup::StepKind::zero:
+    case setup::StepKind::tie:
+      return "a check of the bench";
+    case setup::StepKind::no_load:
+      return "without a load there is no efficiency";
+    case setup::StepKind::standby:
+      return "the converter is off: there is no efficiency";
+    case setup::StepKind::level:
+    case setup::StepKind::closure:
+      break;
+  }
+  return "";
+}
+
+/// Idle steps: what goes in is the result. The output may not even be connected.
+void keep_input_only(StepOutcome& out, const std::string& why) {
+  StepResult& result = out.result;
+  result.efficiency = result.power_factor = missing("1", why);
+  result.budget.clear();
+  out.powers.efficiency = base::Refusal{result.label, why};
+  out.powers.power_factor = out.powers.efficiency;
+  if (result.input_power.known) {
+    result.result_state = result.input_power.uncertainty_known ? "measured" : "uncertainty not known";
+  }
+}
+
 /// A lamp bank that nobody switched, a load in another mode: the step is not the one that its label says.
 /// The tenth is common practice, no source.
 void remark_load(StepResult& result) {
@@ -121,6 +151,7 @@ void fill_powers(StepOutcome& out, const StepValues& values) {
   result.efficiency = either(totals.efficiency, plain.totals.efficiency, "1", unknown);
   result.power_factor = either(real.ports.power_factor, plain.ports.power_factor, "1", unknown);
   result.budget = budget_of(totals.efficiency);
+  result.loss_budget = budget_of(totals.loss);
   for (std::size_t i = 0; i < values.hookup->ports.size(); ++i) {
     result.ports.push_back(
         port_result(values.hookup->ports[i], real.ports.ports[i], plain.ports.ports[i], unknown));
@@ -178,12 +209,20 @@ void remark_bursts(const StepValues& values, double rated_w, StepResult& result)
 
 }  // namespace
 
+const setup::Step* plan_of(const setup::Stair& stair, const store::StoredStep& step) {
+  const auto place = static_cast<std::size_t>(std::max(step.index, 0));
+  return place < stair.steps.size() ? &stair.steps[place] : nullptr;
+}
+
 StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hookup, const setup::Stair& stair,
                          const std::vector<Track>& tracks, const store::StoredStep& step,
                          const std::string& name) {
   StepOutcome out;
   StepResult& result = out.result;
+  out.plan = plan_of(stair, step);
+  if (out.plan != nullptr) out.kind = out.plan->kind;
   result.index = step.index;
+  result.kind = setup::name_of(out.kind);
   result.label = step.label;
   result.load_w = step.load_w;
   result.state = store::name_of(step.state);
@@ -192,6 +231,12 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
       step.average_begin_ns && step.average_end_ns && *step.average_end_ns > *step.average_begin_ns;
   if (!measured) {
     refuse_all(out, hookup, why_not_measured(step));
+    return out;
+  }
+  const std::string no_efficiency = why_no_efficiency(out.kind);
+  if (out.kind == setup::StepKind::zero || out.kind == setup::StepKind::tie) {
+    refuse_all(out, hookup, no_efficiency);
+    result.result_state = no_efficiency;
     return out;
   }
   StepValues values;
@@ -208,6 +253,7 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   // yet.
   values.captures = captures_of(run, hookup, stair, values.context, result.remarks);
   fill_powers(out, values);
+  if (!no_efficiency.empty()) keep_input_only(out, no_efficiency);
   CaptureQuantities captured = quantities_of(values.captures);
   result.thd_voltage = std::move(captured.thd_voltage);
   result.crest_factor = std::move(captured.crest_factor);
@@ -215,13 +261,11 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   result.dc_component = std::move(captured.dc_component);
   result.frequency = frequency_of(values, captured.frequency);
   remark_crest(values, result.remarks);
-  remark_bursts(values, stair.ratings.output_power_w, result);
-  const auto place = static_cast<std::size_t>(std::max(step.index, 0));
-  const setup::Step* plan = place < stair.steps.size() ? &stair.steps[place] : nullptr;
+  if (no_efficiency.empty()) remark_bursts(values, stair.ratings.output_power_w, result);
   const double begun_s =
       since_start(run, step.soak_begin_ns.value_or(step.begun_ns.value_or(*step.average_begin_ns)));
-  const StepThermal thermal{plan, begun_s, place + 1 == stair.steps.size(), out.powers.loss,
-                            stair.ratings.highest_ambient_c};
+  const bool last = out.plan != nullptr && out.plan == &stair.steps.back();
+  const StepThermal thermal{out.plan, begun_s, last, out.powers.loss, stair.ratings.highest_ambient_c};
   const auto ends = temperatures_of(hookup, tracks, values.channels, values.context, thermal);
   for (const EndTemperature& end : ends) result.temperatures.push_back(end.result);
   fill_projection(result, values, tracks, out.powers, ends, begun_s);

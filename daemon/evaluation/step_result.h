@@ -12,8 +12,16 @@ namespace loadstair::evaluation {
 
 struct StepOutcome {
   StepResult result;
-  efficiency::StepResult powers;  ///< for the curve; refused quantities where the step has none
+  setup::StepKind kind = setup::StepKind::level;
+  const setup::Step* plan =
+      nullptr;  ///< in the stair file; nullptr when the record has a step that it has not
+  /// With their sources, for the curve and for figures of the run; refused quantities where the step has
+  /// none. Without load and at standby there is an input power, and no efficiency.
+  efficiency::StepResult powers;
 };
+
+/// The step of the stair file that a recorded one is; nullptr when the file has no such step.
+[[nodiscard]] const setup::Step* plan_of(const setup::Stair& stair, const store::StoredStep& step);
 
 /// `name` is the step's label, made unique within the run.
 [[nodiscard]] StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hookup,
