@@ -1,12 +1,12 @@
 #!/bin/bash
 # The heavy checks, run before work is called done. A summary of one line a check is printed at the end.
-# usage: tests/deep.sh [check...]   checks: headers format tidy asan tsan fuzz coverage twins kills
+# usage: tests/deep.sh [check...]   checks: headers format tidy asan tsan fuzz coverage simulation twins kills
 #   FUZZ_S=60    seconds for each fuzz target
 #   KILLS=60     kill -9 of the daemon
 set -u
 cd "$(dirname "$0")/.."
 bash .ci/setup deep || exit 3
-checks=${*:-headers format asan tsan fuzz coverage twins kills tidy}
+checks=${*:-headers format asan tsan fuzz coverage simulation twins kills tidy}
 log=build/deep; mkdir -p "$log"
 summary=""; failed=0
 note() { summary="$summary$(printf '%-9s %s' "$1" "$2")"$'\n'; echo "== $1: $2"; }
@@ -50,6 +50,11 @@ fuzz() {
   done
 }
 coverage() { cmake --preset dev && cmake --build --preset dev --target coverage && build/dev/tests/whole/coverage 400 1001; }
+simulation() {
+  cmake --preset dev && cmake --build --preset dev --target simulation || return 1
+  local part
+  for part in coverage trouble differences; do build/dev/tests/simulation/simulation "$part" 2000 || return 1; done
+}
 twins() { cmake --preset dev && cmake --build --preset dev && /usr/bin/python3 tests/whole/twins.py build/dev/loadstair "$PWD" build/dev/tests/whole/twin; }
 kills() {
   cmake --preset dev && cmake --build --preset dev || return 1

@@ -64,8 +64,26 @@ TEST_CASE("every room's folder has its library, and every test file is in a fold
     const fs::path folder = fs::relative(entry.path(), kRoot / "tests").parent_path();
     const std::string top = folder.begin()->string();
     INFO(entry.path());
-    CHECK((rooms.contains(folder.string()) || top == "published" || top == "house" || top == "whole"));
+    CHECK((rooms.contains(folder.string()) || top == "published" || top == "house" || top == "whole" ||
+           top == "simulation"));
   }
+}
+
+TEST_CASE("the simulation's draws, its physics and what it holds to be true share nothing with analysis") {
+  int looked_at = 0;
+  for (const auto& entry : fs::directory_iterator{kRoot / "tests/simulation"}) {
+    const std::string name = entry.path().stem().string();
+    if (name != "draw" && name != "bench" && name != "plant" && name != "record" && name != "implied")
+      continue;
+    ++looked_at;
+    std::ifstream file{entry.path()};
+    for (std::string line; std::getline(file, line);) {
+      INFO(entry.path() << ": " << line);
+      CHECK((line.rfind("#include", 0) != 0 || (line.find("\"analysis/") == std::string::npos &&
+                                                line.find("\"daemon/evaluation/") == std::string::npos)));
+    }
+  }
+  CHECK(looked_at == 9);
 }
 
 TEST_CASE("the rules catch what breaks them") {
