@@ -8,9 +8,11 @@
 #include "analysis/base/number.h"
 #include "daemon/command/commands.h"
 #include "daemon/command/daemon_client.h"
+#include "daemon/command/forecast_text.h"
 #include "daemon/command/user_error.h"
 #include "daemon/recorder/bench.h"
 #include "daemon/service/address.h"
+#include "daemon/service/forecast_json.h"
 #include "daemon/service/state_json.h"
 #include "daemon/setup/explain.h"
 #include "daemon/setup/hookup.h"
@@ -138,6 +140,13 @@ void print_guards(const setup::Stair& stair, const setup::Hookup& hookup) {
   }
 }
 
+/// What the run would give if it were made now.
+json forecast_of(const setup::Hookup& hookup, const setup::Stair& stair) {
+  const auto clock = link::make_real_clock();
+  const auto now_ns = clock->now_ns() + clock->utc_offset_ns();
+  return service::to_json(evaluation::forecast(hookup, stair, now_ns));
+}
+
 }  // namespace
 
 int run_check(const CheckOptions& options) {
@@ -158,8 +167,10 @@ int run_check(const CheckOptions& options) {
   if (!options.offline) answers = answers_for(hookup);
   good = good && (!answers || all_there(*answers));
 
+  const json forecast = stair ? forecast_of(hookup, *stair) : json{};
   if (options.json) {
     json result = {{"findings", found}};
+    if (stair) result["forecast"] = forecast;
     if (answers) {
       result["instruments"] = answers->instruments;
       result["channels"] = answers->channels;
@@ -173,6 +184,7 @@ int run_check(const CheckOptions& options) {
     for (const auto& line : setup::explain(*stair, &hookup)) std::cout << line << "\n";
   }
   if (answers) print_answers(*answers);
+  if (stair) std::cout << forecast_text(forecast);
   if (stair) print_guards(*stair, hookup);
   std::cout << "\nFindings and cautions\n";
   for (const auto& finding : findings) {

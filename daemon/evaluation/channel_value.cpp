@@ -6,8 +6,11 @@
 #include <utility>
 
 #include "analysis/base/number.h"
+#include "analysis/estimate/sharing.h"
 #include "analysis/sensors/quoted.h"
 #include "analysis/series/statistics.h"
+#include "daemon/evaluation/bench_checks.h"
+#include "daemon/evaluation/circumstances.h"
 #include "daemon/evaluation/live.h"
 #include "daemon/evaluation/sensor_of.h"
 #include "daemon/evaluation/typed_value.h"
@@ -235,10 +238,18 @@ Quoted ChannelValue::with_noise(const WindowContext& context) const {
   return *value + noise->with_value(0.0);
 }
 
-/// Each range's errors for the share of the readings that were taken on it: a new range is a new source.
-estimate::Quoted meter_error(const ChannelValue& of, const setup::Hookup& hookup,
-                             const WindowContext& context) {
+MeterNow meter_now(const ChannelValue& of, const RangePart& part, const setup::Hookup& hookup) {
   const setup::Channel& channel = *of.channel;
+  const auto found = estimate::judge_conditions(part.raw, meter_range(channel, part.range),
+                                                conditions_of(channel, part.range), of.conditions);
+  const estimate::Shares shares = shares_of(hookup, channel, part.range);
+  return {found.meter, found.fixed_is_common ? shares : estimate::without_fixed(shares)};
+}
+
+/// Each range's errors for the share of the readings that were taken on it: a new range is a new source.
+estimate::Quoted meter_error(ChannelValue& of, const setup::Hookup& hookup, const WindowContext& context) {
+  const setup::Channel& channel = *of.channel;
+  const ZeroOf* zero = context.checks == nullptr ? nullptr : context.checks->zero_of(channel.name);
   Estimate sum{0.0};
   for (const RangePart& part : of.parts) {
     if (part.range == kNoRange) {
@@ -248,10 +259,17 @@ estimate::Quoted meter_error(const ChannelValue& of, const setup::Hookup& hookup
               ? "uncertainty not known: no accuracy is declared"
               : "uncertainty not known: read beyond the largest range whose accuracy is declared"};
     }
-    const auto one =
-        estimate::with_meter_error(part.raw, meter_range(channel, part.range), occasion_of(context, channel),
-                                   shares_of(hookup, channel, part.range));
+    const MeterNow now = meter_now(of, part, hookup);
+    const estimate::Occasion occasion = occasion_of(context, channel);
+    const bool zeroed = zero != nullptr && zero->range == part.range;
+    Quoted one =
+        estimate::with_meter_error(part.raw + (zeroed ? zero->mean() : 0.0), now.meter, occasion, now.shares);
+    if (one && zeroed && zero->twice) one = estimate::zero_corrected(*one, zero->check, now.meter, occasion);
     if (!one) return base::Refusal{channel.name, one.refusal().reason};
+    if (zero != nullptr && !zeroed) {
+      of.remarks.push_back(channel.name + ": its zero was measured on another range than it was read on, " +
+                           now.meter.meter.range + ", and is not taken off here");
+    }
     sum = sum + part.share * *one;
   }
   return sum.with_value(of.raw);
@@ -272,12 +290,32 @@ void attach_meter_error(ChannelValue& into, const Quoted& raw) {
                    : Quoted{base::Refusal{into.channel->name, "uncertainty not known: " + into.unknown}};
 }
 
+namespace {
+
+/// A tied channel's value as the tie's first meter would have shown it.
+void apply_tie(ChannelValue& into, const WindowContext& context) {
+  const TieOf* tied = context.checks == nullptr ? nullptr : context.checks->tie_of(into.channel->name);
+  if (tied == nullptr || !into.value) return;
+  if (into.parts.size() != 1 || into.parts.front().range != tied->range) {
+    into.remarks.push_back(into.channel->name + ": tied to " + tied->first +
+                           " on another range than it was read on; the tie is not used here");
+    return;
+  }
+  into.value = estimate::tied(*into.value, tied->tie);
+  into.plain = into.value;
+}
+
+}  // namespace
+
 ChannelValue channel_value(const store::StoredRun& run, const setup::Hookup& hookup,
                            const std::vector<Track>& tracks, std::size_t index,
                            const WindowContext& context) {
   ChannelValue into;
   into.channel = &hookup.channels[index];
   into.typed = into.channel->typed;
+  into.conditions.ambient_c = context.ambient_c;
+  if (const setup::Instrument* instrument = hookup.find_instrument(into.channel->instrument))
+    into.conditions.days_since_adjustment = days_since(instrument->calibrated, context.at_ns);
   const auto& couple = into.channel->conversion.thermocouple;
   for (std::size_t i = 0; couple && !couple->cold_junction.empty() && i < tracks.size(); ++i) {
     const setup::Channel& other = hookup.channels[i];
@@ -292,6 +330,7 @@ ChannelValue channel_value(const store::StoredRun& run, const setup::Hookup& hoo
   } else {
     fill_linked(into, hookup, tracks[index], context);
   }
+  apply_tie(into, context);
   return into;
 }
 

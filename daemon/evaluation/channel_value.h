@@ -7,6 +7,7 @@
 #include <string>
 #include <vector>
 
+#include "analysis/estimate/conditions.h"
 #include "analysis/estimate/estimate.h"
 #include "analysis/estimate/meter.h"
 #include "analysis/estimate/type_a.h"
@@ -15,12 +16,18 @@
 
 namespace loadstair::evaluation {
 
+struct BenchChecks;
+
 /// A step's window, and what its sources are called by.
 struct WindowContext {
   std::string run;   ///< part of keys
   std::string step;  ///< label, made unique within the run: part of keys and names
   std::int32_t step_index = 0;
   double from_s = 0.0, to_s = 0.0;
+  std::optional<double> ambient_c;      ///< around the meters
+  std::int64_t at_ns = 0;               ///< UTC: how old a calibration is
+  const BenchChecks* checks = nullptr;  ///< zeros and ties that are applied; nullptr: none
+  std::optional<double> steady_from_s;  ///< from when on the step is settled; nullopt: not known
 
   [[nodiscard]] double middle_s() const { return (from_s + to_s) / 2.0; }
   [[nodiscard]] estimate::WindowId id() const { return {run, step}; }
@@ -52,7 +59,8 @@ struct ChannelValue {
       0.0};  ///< what the window itself adds, of value zero: instants, spread of typed rounds
   std::optional<estimate::Estimate> cold_junction;  ///< degC, of a thermocouple channel that names one
   double sensitivity = 1.0;                         ///< d value / d raw
-  double deviation = 0.0;  ///< how far single readings stray within the window, channel's unit
+  double deviation = 0.0;           ///< how far single readings stray within the window, channel's unit
+  estimate::Conditions conditions;  ///< ambient and age of the calibration, as far as they are known
   std::vector<std::string> remarks;
 
   /// The range most readings were taken on; nullptr when none fits.
@@ -72,8 +80,9 @@ struct ChannelValue {
 /// Makes value and plain anew from the meter's error on the raw reading (a wattmeter's functions share
 /// sources). raw   contributions in the meter's unit; refused where the accuracy is not known
 void attach_meter_error(ChannelValue& into, const estimate::Quoted& raw);
-/// The meter's error on the raw mean: for each range the share of the readings that were taken on it.
-[[nodiscard]] estimate::Quoted meter_error(const ChannelValue& of, const setup::Hookup& hookup,
+/// The meter's error on the raw mean: for each range the share of the readings that were taken on it. Where a
+/// zero was measured on that range it takes the offset's place.
+[[nodiscard]] estimate::Quoted meter_error(ChannelValue& of, const setup::Hookup& hookup,
                                            const WindowContext& context);
 
 /// The meter as the owner of its errors on one range.
@@ -82,6 +91,13 @@ void attach_meter_error(ChannelValue& into, const estimate::Quoted& raw);
 /// Shares of the meter's variance, from the declared 24-hour repeatability where there is one.
 [[nodiscard]] estimate::Shares shares_of(const setup::Hookup& hookup, const setup::Channel& channel,
                                          int range);
+
+/// The accuracy that applies under the window's conditions, and what of it other runs have in common.
+struct MeterNow {
+  estimate::MeterRange meter;
+  estimate::Shares shares;
+};
+[[nodiscard]] MeterNow meter_now(const ChannelValue& of, const RangePart& part, const setup::Hookup& hookup);
 
 /// Name of what a channel's resistance to the circuit is: its shunt, or its meter on a range.
 [[nodiscard]] std::string burden_name(const setup::Channel& channel, int range);

@@ -8,6 +8,7 @@
 #include "analysis/base/number.h"
 #include "analysis/efficiency/loss_model.h"
 #include "analysis/efficiency/weighted.h"
+#include "daemon/evaluation/bench_checks.h"
 #include "daemon/evaluation/quantity.h"
 #include "daemon/evaluation/step_result.h"
 
@@ -153,12 +154,18 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
   result.unit = run.summary.unit;
   result.state = store::name_of(run.summary.state);
   result.method_version = kMethodVersion;
-  const std::vector<Track> tracks = tracks_of(run, hookup);
+  std::vector<Track> tracks = tracks_of(run, hookup);
   const std::vector<std::string> names = unique_names(run.steps);
+  Windows windows;
+  for (std::size_t i = 0; i < run.steps.size(); ++i)
+    windows.push_back(window_of(run, hookup, stair, tracks, run.steps[i], names[i]));
+  const BenchChecks checks = bench_checks(run, hookup, stair, windows, tracks);
+  result.bench_checks = checks.results;
   std::vector<StepOutcome> outcomes;
   std::vector<efficiency::StepResult> of_curve;
   for (std::size_t i = 0; i < run.steps.size(); ++i) {
-    outcomes.push_back(step_outcome(run, hookup, stair, tracks, run.steps[i], names[i]));
+    if (windows[i]) windows[i]->checks = &checks;
+    outcomes.push_back(step_outcome(run, hookup, stair, tracks, run.steps[i], windows[i]));
     const StepOutcome& outcome = outcomes.back();
     result.steps.push_back(outcome.result);
     if (on_curve(outcome, stair)) of_curve.push_back(outcome.powers);

@@ -6,6 +6,7 @@
 
 #include "analysis/base/number.h"
 #include "analysis/estimate/budget.h"
+#include "daemon/evaluation/circumstances.h"
 #include "daemon/evaluation/loss_projection.h"
 #include "daemon/evaluation/port_step.h"
 #include "daemon/evaluation/quantity.h"
@@ -214,9 +215,23 @@ const setup::Step* plan_of(const setup::Stair& stair, const store::StoredStep& s
   return place < stair.steps.size() ? &stair.steps[place] : nullptr;
 }
 
+std::optional<WindowContext> window_of(const store::StoredRun& run, const setup::Hookup& hookup,
+                                       const setup::Stair& stair, const std::vector<Track>& tracks,
+                                       const store::StoredStep& step, const std::string& name) {
+  const bool measured =
+      step.average_begin_ns && step.average_end_ns && *step.average_end_ns > *step.average_begin_ns;
+  if (!measured) return std::nullopt;
+  WindowContext window{base::print_integer(run.summary.started_ns), name, step.index,
+                       since_start(run, *step.average_begin_ns), since_start(run, *step.average_end_ns)};
+  window.ambient_c = ambient_of(hookup, stair, tracks, window.from_s, window.to_s);
+  window.at_ns = *step.average_begin_ns;
+  if (step.settled_ns) window.steady_from_s = since_start(run, *step.settled_ns);
+  return window;
+}
+
 StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hookup, const setup::Stair& stair,
                          const std::vector<Track>& tracks, const store::StoredStep& step,
-                         const std::string& name) {
+                         const std::optional<WindowContext>& window) {
   StepOutcome out;
   StepResult& result = out.result;
   out.plan = plan_of(stair, step);
@@ -227,9 +242,7 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   result.load_w = step.load_w;
   result.state = store::name_of(step.state);
   result.settled = settled_of(step);
-  const bool measured =
-      step.average_begin_ns && step.average_end_ns && *step.average_end_ns > *step.average_begin_ns;
-  if (!measured) {
+  if (!window) {
     refuse_all(out, hookup, why_not_measured(step));
     return out;
   }
@@ -241,8 +254,7 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   }
   StepValues values;
   values.hookup = &hookup;
-  values.context = {base::print_integer(run.summary.started_ns), name, step.index,
-                    since_start(run, *step.average_begin_ns), since_start(run, *step.average_end_ns)};
+  values.context = *window;
   for (std::size_t i = 0; i < hookup.channels.size(); ++i) {
     values.channels.push_back(channel_value(run, hookup, tracks, i, values.context));
     const std::vector<std::string>& remarks = values.channels.back().remarks;
@@ -261,6 +273,8 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   result.dc_component = std::move(captured.dc_component);
   result.frequency = frequency_of(values, captured.frequency);
   remark_crest(values, result.remarks);
+  for (std::string& remark : condition_remarks(values, stair, result))
+    result.remarks.push_back(std::move(remark));
   if (no_efficiency.empty()) remark_bursts(values, stair.ratings.output_power_w, result);
   const double begun_s =
       since_start(run, step.soak_begin_ns.value_or(step.begun_ns.value_or(*step.average_begin_ns)));

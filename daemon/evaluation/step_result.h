@@ -1,9 +1,12 @@
 // One step's results. Of this room only.
 #pragma once
 
+#include <optional>
+#include <string>
 #include <vector>
 
 #include "analysis/efficiency/step.h"
+#include "daemon/evaluation/channel_value.h"
 #include "daemon/evaluation/result.h"
 #include "daemon/evaluation/track.h"
 #include "daemon/setup/stair.h"
@@ -23,9 +26,17 @@ struct StepOutcome {
 /// The step of the stair file that a recorded one is; nullptr when the file has no such step.
 [[nodiscard]] const setup::Step* plan_of(const setup::Stair& stair, const store::StoredStep& step);
 
-/// `name` is the step's label, made unique within the run.
+/// The averaging window of a step with what was around it; nullopt when it was not measured. `name` is the
+/// step's label, made unique within the run.
+[[nodiscard]] std::optional<WindowContext> window_of(const store::StoredRun& run, const setup::Hookup& hookup,
+                                                     const setup::Stair& stair,
+                                                     const std::vector<Track>& tracks,
+                                                     const store::StoredStep& step, const std::string& name);
+
+/// window   of window_of(), with the checks of the bench that are applied
 [[nodiscard]] StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hookup,
                                        const setup::Stair& stair, const std::vector<Track>& tracks,
-                                       const store::StoredStep& step, const std::string& name);
+                                       const store::StoredStep& step,
+                                       const std::optional<WindowContext>& window);
 
 }  // namespace loadstair::evaluation

@@ -5,6 +5,7 @@
 #include <numbers>
 
 #include "analysis/base/number.h"
+#include "daemon/evaluation/bench_checks.h"
 #include "daemon/evaluation/live.h"
 
 namespace loadstair::evaluation {
@@ -17,9 +18,17 @@ using estimate::Estimate;
 constexpr double kCoarser = 1.5;
 
 struct Round {
-  double raw = 0.0, value = 0.0, range = 0.0, last_digit = 0.0;
+  double raw = 0.0, value = 0.0;
+  int range = kNoRange;
+  double last_digit = 0.0;
   double time_s = 0.0, half_width_s = 0.0;
 };
+
+/// The zero that was measured on that range, meter's unit; 0 where none was.
+double zero_on(const WindowContext& context, const std::string& channel, int range) {
+  const ZeroOf* zero = context.checks == nullptr ? nullptr : context.checks->zero_of(channel);
+  return zero != nullptr && zero->range == range ? zero->mean() : 0.0;
+}
 
 std::vector<Round> rounds_of(ChannelValue& into, const store::StoredRun& run, const Track& track,
                              const WindowContext& context) {
@@ -29,7 +38,9 @@ std::vector<Round> rounds_of(ChannelValue& into, const store::StoredRun& run, co
     if ((answer.flags & instrument::kUnusable) != 0) continue;
     const std::optional<double> cold_degc =
         into.cold_junction ? std::optional{into.cold_junction->value()} : std::nullopt;
-    const auto value = convert(*into.channel, answer.value, cold_degc);
+    const int range = range_of(*into.channel, answer.value, answer.range);
+    const double raw = answer.value - zero_on(context, into.channel->name, range);
+    const auto value = convert(*into.channel, raw, cold_degc);
     if (!value) {
       into.remarks.push_back(into.channel->name + ": \"" + answer.text +
                              "\" not used: " + value.refusal().reason);
@@ -41,7 +52,7 @@ std::vector<Round> rounds_of(ChannelValue& into, const store::StoredRun& run, co
     }
     const double prompted_s = since_start(run, answer.prompted_ns);
     const double entered_s = since_start(run, answer.entered_ns);
-    rounds.push_back({answer.value, *value, answer.range, answer.last_digit, (prompted_s + entered_s) / 2.0,
+    rounds.push_back({raw, *value, range, answer.last_digit, (prompted_s + entered_s) / 2.0,
                       std::abs(entered_s - prompted_s) / 2.0});
   }
   return rounds;
@@ -104,7 +115,7 @@ void fill_typed(ChannelValue& into, const store::StoredRun& run, const setup::Ho
     into.raw += round.raw / static_cast<double>(rounds.size());
     into.middle += round.value / static_cast<double>(rounds.size());
     last_digit = std::max(last_digit, round.last_digit);
-    const int range = range_of(channel, round.raw, round.range);
+    const int range = round.range;
     const auto same = std::find_if(into.parts.begin(), into.parts.end(),
                                    [&](const RangePart& part) { return part.range == range; });
     const double share = 1.0 / static_cast<double>(rounds.size());

@@ -15,6 +15,7 @@ template <class Item>
   return list;
 }
 
+[[nodiscard]] nlohmann::json budget_json(const evaluation::BudgetEntry& entry);
 [[nodiscard]] nlohmann::json step_json(const evaluation::StepResult& step);
 /// Everything of a run but its steps.
 [[nodiscard]] nlohmann::json run_json(const evaluation::RunResult& run);

@@ -31,19 +31,6 @@ json settled_json(const evaluation::SettledResult& settled) {
           {"text", settled.text}};
 }
 
-json budget_json(const evaluation::BudgetEntry& entry) {
-  json result = {{"source", entry.source},
-                 {"instrument", entry.instrument},
-                 {"function", entry.function},
-                 {"range", entry.range},
-                 {"type", entry.type_a ? "A" : "B"},
-                 {"standard_uncertainty", entry.standard_uncertainty},
-                 {"share", entry.share},
-                 {"action", entry.action}};
-  if (entry.expanded_if_done) result["expanded_if_done"] = *entry.expanded_if_done;
-  return result;
-}
-
 json port_json(const evaluation::PortResult& port) {
   return {{"name", port.name},
           {"direction", port.direction},
@@ -68,6 +55,19 @@ json validation_json(const evaluation::Validation& validation) {
 }
 
 }  // namespace
+
+json budget_json(const evaluation::BudgetEntry& entry) {
+  json result = {{"source", entry.source},
+                 {"instrument", entry.instrument},
+                 {"function", entry.function},
+                 {"range", entry.range},
+                 {"type", entry.type_a ? "A" : "B"},
+                 {"standard_uncertainty", entry.standard_uncertainty},
+                 {"share", entry.share},
+                 {"action", entry.action}};
+  if (entry.expanded_if_done) result["expanded_if_done"] = *entry.expanded_if_done;
+  return result;
+}
 
 json step_json(const evaluation::StepResult& step) {
   json result = {{"label", step.label},
