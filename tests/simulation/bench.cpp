@@ -138,6 +138,22 @@ void name_meters(Draw& draw, PortPlan& port, const BenchChoice& choice) {
   }
 }
 
+/// One handheld voltmeter for both ends, moved between them: one meter, one error.
+void share_voltmeter(Draw& draw, Bench& bench) {
+  const bool shared = draw.chance(0.5);
+  if (bench.input.meters.empty() || bench.output.meters.empty() || bench.output.ac || !shared) return;
+  Meter& in = bench.input.meters.front();
+  Meter& out = bench.output.meters.front();
+  if (!in.typed || !out.typed || in.signal != Signal::voltage || out.signal != Signal::voltage) return;
+  const std::string out_channel = out.channel;
+  const std::string in_channel = in.channel;
+  (in.ranges.back().upto > out.ranges.back().upto ? out : in) =
+      in.ranges.back().upto > out.ranges.back().upto ? in : out;
+  in.unit_name = out.unit_name = "handheld";
+  in.channel = in_channel;
+  out.channel = out_channel;
+}
+
 void apply_trouble(Draw& draw, Bench& bench) {
   switch (bench.trouble) {
     case Trouble::hidden_latency:
@@ -205,6 +221,7 @@ Bench draw_bench(std::uint64_t seed, const BenchChoice& choice) {
   bench.output = draw_port(draw, false, inverter, 1.02 * bench.rated_w, bench.output_v, choice);
   name_meters(draw, bench.input, choice);
   name_meters(draw, bench.output, choice);
+  share_voltmeter(draw, bench);
   bench.levels = {0.1, 0.25, 0.5, 0.75, 1.0};
   bench.window_s = draw.between(25.0, 60.0);
   if (!choice.quiet) {

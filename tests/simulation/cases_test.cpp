@@ -197,7 +197,7 @@ TEST_CASE("a fan that starts in mid-step does not fool the settling") {
   step.thermal = setup::ThermalSettle{"heatsink", 0.5, 60.0, 1, 0.0, true, 1.0, 0.0};
   int ended_wrongly = 0;
   int by_prediction = 0;
-  constexpr int kPlants = 60;
+  constexpr int kPlants = 40;
   Draw draw{11};
   for (int i = 0; i < kPlants; ++i) {
     const FanPlant plant = draw_fan(draw);
@@ -206,7 +206,7 @@ TEST_CASE("a fan that starts in mid-step does not fool the settling") {
     for (double t_s = 0.0; t_s < 3000.0 && !settled; t_s += 2.0) {
       time_s.push_back(t_s);
       value.push_back(plant.at(t_s) + 0.03 * draw.normal());
-      if (time_s.size() % 8 != 0) continue;
+      if (time_s.size() % 16 != 0) continue;
       evaluation::LiveTraces traces;
       traces.thermal = {time_s, value};
       const auto state = evaluation::live_window(step, traces);

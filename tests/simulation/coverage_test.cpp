@@ -58,3 +58,10 @@ TEST_CASE("sources that two runs share narrow their difference by what is shared
   ideal.bench.repeatability = 0.25;  // of the limits: the unshared share of the variance is 1/16
   CHECK(median(run_study(1, 40, ideal).narrowing) == Approx(4.0).epsilon(0.05));
 }
+
+TEST_CASE("what is forecast before power is on is what the run then achieves") {
+  const std::vector<double> ratios = forecast_ratios(1, 40);
+  CHECK(ratios.size() >= 38);
+  CHECK(median(ratios) >= 0.8);
+  CHECK(median(ratios) <= 1.25);
+}

@@ -88,6 +88,15 @@ std::string faults_of(const evaluation::RunResult& run) {
       faults_of(*one, "curve " + entry.label, text);
   }
   for (const auto& weighted : run.weighted) faults_of(weighted.efficiency, weighted.title, text);
+  for (const auto& model : run.models) {
+    for (const evaluation::Quantity* one :
+         {&model.p0, &model.p1, &model.p2, &model.peak_power, &model.peak_efficiency})
+      faults_of(*one, "model of " + model.span, text);
+  }
+  for (const evaluation::Quantity* one :
+       {&run.no_load, &run.standby, &run.load_regulation, &run.line_regulation})
+    faults_of(*one, "figure of the run", text);
+  for (const auto& decision : run.decisions) faults_of(decision.value, decision.name, text);
   return text;
 }
 

@@ -1,4 +1,4 @@
-// The simulation in full. usage: simulation coverage|trouble|differences [DRAWS] [FIRST SEED]
+// The simulation in full. usage: simulation coverage|trouble|differences|forecast [DRAWS] [FIRST SEED]
 // Exit code 0: every figure is within its bounds, 1: one is not, 2: no such part.
 #include <fmt/format.h>
 #include <gsl/gsl_errno.h>
@@ -104,6 +104,15 @@ void differences(const Order& order) {
   }
 }
 
+void forecasts(const Order& order) {
+  const std::vector<double> ratios = forecast_ratios(order.first, order.draws);
+  fmt::print("{} of {} benches have both figures; one in ten below {:.3f}, one in ten above {:.3f}\n",
+             ratios.size(), order.draws, quantile(ratios, 0.1), quantile(ratios, 0.9));
+  bound("forecast over achieved half-width, median", median(ratios), 0.8, 1.25);
+  bound("share of benches with both", static_cast<double>(ratios.size()) / static_cast<double>(order.draws),
+        0.95, 1.0);
+}
+
 }  // namespace
 
 int main(int count, char** words) {
@@ -120,8 +129,10 @@ int main(int count, char** words) {
     trouble(order);
   } else if (part == "differences") {
     differences(order);
+  } else if (part == "forecast") {
+    forecasts(order);
   } else {
-    fmt::print(stderr, "usage: simulation coverage|trouble|differences [DRAWS] [FIRST SEED]\n");
+    fmt::print(stderr, "usage: simulation coverage|trouble|differences|forecast [DRAWS] [FIRST SEED]\n");
     return 2;
   }
   return good ? 0 : 1;

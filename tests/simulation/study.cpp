@@ -7,6 +7,7 @@
 #include <utility>
 
 #include "analysis/estimate/coverage.h"  // results are read through it: differences of estimates
+#include "daemon/evaluation/forecast.h"
 #include "simulation/draw.h"
 
 namespace loadstair::simulation {
@@ -145,6 +146,21 @@ Study run_study(std::uint64_t first, std::uint64_t draws, const StudyChoice& cho
     if (each) each(one);
   }
   return out;
+}
+
+std::vector<double> forecast_ratios(std::uint64_t first, std::uint64_t draws) {
+  std::vector<double> ratios;
+  for (std::uint64_t seed = first; seed < first + draws; ++seed) {
+    const Bench bench = draw_bench(seed);
+    const setup::Hookup hookup = hookup_of(bench);
+    const Recorded run = record_run(bench, bench.board, {seed % kLevels}, 1);
+    const evaluation::Quantity got =
+        evaluation::evaluate(run.run, hookup, run.stair).steps.front().efficiency;
+    const evaluation::Forecast told = evaluation::forecast(hookup, run.stair);
+    if (told.steps.empty() || !got.expanded || !told.steps.front().efficiency.expanded) continue;
+    ratios.push_back(*told.steps.front().efficiency.expanded / *got.expanded);
+  }
+  return ratios;
 }
 
 std::string described(const Study& study) {
