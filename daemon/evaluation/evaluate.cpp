@@ -172,8 +172,13 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
   }
   result.points = efficiency::curve(of_curve);
   for (const efficiency::CurvePoint& point : result.points) {
+    const auto step =
+        static_cast<std::size_t>(std::find(names.begin(), names.end(), point.label) - names.begin());
+    // One figure, one interval: where Monte Carlo took the linear one's place, it stands here too.
+    const bool found = step < names.size();
     result.curve.push_back({point.label, to_quantity(point.output_power, "W"),
-                            to_quantity(point.efficiency, "1"), to_quantity(point.loss, "W")});
+                            found ? result.steps[step].efficiency : to_quantity(point.efficiency, "1"),
+                            to_quantity(point.loss, "W")});
   }
   result.weighted = weighted_of(hookup, stair, result.points);
   add_remarks(run, hookup, stair, result);

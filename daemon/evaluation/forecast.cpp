@@ -58,6 +58,19 @@ ForecastStep step_of(StepResult& result) {
   return step;
 }
 
+/// Leads that nobody declared weigh most at the greatest power: said there only.
+void keep_worst_leads(Forecast& forecast) {
+  constexpr std::string_view kLeads = "sensing is not declared";
+  const auto most = std::max_element(
+      forecast.steps.begin(), forecast.steps.end(),
+      [](const auto& a, const auto& b) { return a.output_power.value < b.output_power.value; });
+  for (auto step = forecast.steps.begin(); step != forecast.steps.end(); ++step) {
+    if (step == most) continue;
+    std::erase_if(step->remarks,
+                  [&](const std::string& remark) { return remark.find(kLeads) != std::string::npos; });
+  }
+}
+
 /// What every step says is said once.
 void gather_remarks(Forecast& forecast) {
   std::map<std::string, std::size_t> counts;
@@ -87,6 +100,7 @@ Forecast forecast(const setup::Hookup& hookup, const setup::Stair& stair, std::i
     out.steps.push_back(step_of(result));
   }
   for (const BenchCheckResult& check : found.bench_checks) out.bench_checks.push_back(check.text);
+  keep_worst_leads(out);
   gather_remarks(out);
   return out;
 }

@@ -197,7 +197,8 @@ const ChannelValue* StepValues::find(const std::string& channel) const {
 
 StepPowers step_powers(const StepValues& values, bool plain) {
   StepPowers powers;
-  powers.ports = efficiency::step_result(input_of(values, plain, Noise::in_readings));
+  powers.input = input_of(values, plain, Noise::in_readings);
+  powers.ports = efficiency::step_result(powers.input);
   const bool measured = powers.ports.input_power.ok() && powers.ports.output_power.ok();
   std::optional<efficiency::StepNoise> noise;
   if (measured && !plain) noise = noise_of(values, powers.ports);
@@ -205,9 +206,9 @@ StepPowers step_powers(const StepValues& values, bool plain) {
     powers.totals = powers.ports;
     return powers;
   }
-  efficiency::StepInput input = input_of(values, plain, Noise::on_its_own);
-  input.noise = std::move(noise);
-  powers.totals = efficiency::step_result(input);
+  powers.input = input_of(values, plain, Noise::on_its_own);
+  powers.input.noise = std::move(noise);
+  powers.totals = efficiency::step_result(powers.input);
   return powers;
 }
 

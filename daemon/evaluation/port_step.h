@@ -24,6 +24,7 @@ struct StepValues {
 struct StepPowers {
   efficiency::StepResult totals;  ///< with the statistical parts of the aligned series
   efficiency::StepResult ports;   ///< each port on its own: its noise through the chain rule
+  efficiency::StepInput input;    ///< what the totals were made from
 };
 /// plain   what is not known of uncertainties is left out: values only
 [[nodiscard]] StepPowers step_powers(const StepValues& values, bool plain);

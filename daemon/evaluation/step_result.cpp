@@ -11,6 +11,7 @@
 #include "daemon/evaluation/port_step.h"
 #include "daemon/evaluation/quantity.h"
 #include "daemon/evaluation/temperature_result.h"
+#include "daemon/evaluation/validation.h"
 
 namespace loadstair::evaluation {
 namespace {
@@ -138,7 +139,15 @@ void remark_load(StepResult& result) {
                            " W: was the load switched as it should be?");
 }
 
-void fill_powers(StepOutcome& out, const StepValues& values) {
+void validate(StepOutcome& out, const StepPowers& powers, const store::StoredRun& run) {
+  auto validated =
+      validated_efficiency(powers.input, powers.totals, run.seed, most_draws_of(run.steps.size()));
+  if (!validated) return;
+  out.result.validation = std::move(validated->validation);
+  if (validated->instead) out.result.efficiency = *std::move(validated->instead);
+}
+
+void fill_powers(StepOutcome& out, const StepValues& values, const store::StoredRun& run) {
   StepResult& result = out.result;
   const std::string unknown = unknown_of(values);
   const StepPowers real = step_powers(values, false);
@@ -160,6 +169,7 @@ void fill_powers(StepOutcome& out, const StepValues& values) {
   result.remarks.insert(result.remarks.end(), totals.remarks.begin(), totals.remarks.end());
   remark_load(result);
   out.powers = totals;
+  if (why_no_efficiency(out.kind).empty()) validate(out, real, run);
 }
 
 /// A meter that measures frequency before a capture.
@@ -264,7 +274,7 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   // out of the power factor, but a specification does not promise it, and the hook-up file cannot declare it
   // yet.
   values.captures = captures_of(run, hookup, stair, values.context, result.remarks);
-  fill_powers(out, values);
+  fill_powers(out, values, run);
   if (!no_efficiency.empty()) keep_input_only(out, no_efficiency);
   CaptureQuantities captured = quantities_of(values.captures);
   result.thd_voltage = std::move(captured.thd_voltage);
