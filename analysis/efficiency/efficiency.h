@@ -4,6 +4,7 @@
 // (limits).
 #pragma once
 
+#include "analysis/efficiency/comparison.h"  // IWYU pragma: export
 #include "analysis/efficiency/curve.h"       // IWYU pragma: export
 #include "analysis/efficiency/loss_model.h"  // IWYU pragma: export
 #include "analysis/efficiency/port.h"        // IWYU pragma: export
