@@ -154,6 +154,10 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
   result.unit = run.summary.unit;
   result.state = store::name_of(run.summary.state);
   result.method_version = kMethodVersion;
+  result.no_load = missing("W", "no step of this run was found to measure it without load");
+  result.standby = missing("W", "no step of this run was found to measure standby");
+  result.load_regulation = missing("1", "no steps of this run were found to show it over loads");
+  result.line_regulation = missing("1", "no steps of this run were found to show it over input voltages");
   std::vector<Track> tracks = tracks_of(run, hookup);
   const std::vector<std::string> names = unique_names(run.steps);
   Windows windows;
