@@ -138,9 +138,12 @@ std::vector<Way> ways_of(const Port& port, const PortReading& reading) {
   return ways;
 }
 
-void cross_check(const std::vector<Way>& ways, PortPower& out) {
+void cross_check(const std::vector<Way>& ways, const PortReading& reading, PortPower& out) {
   for (std::size_t i = 1; i < ways.size(); ++i) {
-    const estimate::Coverage difference = estimate::coverage(ways[i].power - ways[0].power);
+    const bool unshared =
+        reading.product_less_power && ways[0].method == "wattmeter" && ways[i].method != "capture";
+    const estimate::Coverage difference =
+        estimate::coverage(unshared ? *reading.product_less_power : ways[i].power - ways[0].power);
     if (!(std::abs(difference.value) > difference.expanded)) continue;
     out.remarks.push_back(ways[0].method + " gives " + base::print_significant(ways[0].power.value(), 5) +
                           " W, " + ways[i].method + " " + base::print_significant(ways[i].power.value(), 5) +
@@ -217,7 +220,7 @@ PortPower port_power(const Port& port, const PortReading& reading) {
     out.state = PowerState::measured;
     out.state_text = "measured";
     out.method = ways.front().method;
-    cross_check(ways, out);
+    cross_check(ways, reading, out);
     Quantities q;
     if (has(reading.voltage)) q.voltage = **reading.voltage;
     if (has(reading.current)) q.current = **reading.current;

@@ -66,6 +66,9 @@ struct PortReading {
   std::optional<Quoted> power;          ///< active power from a wattmeter
   std::optional<Quoted> capture_power;  ///< active power from a capture of this step
   std::optional<Quoted> power_factor;   ///< from a capture of this step, or declared as bounded(low, 1)
+  /// V I PF less the wattmeter's power as if its functions had no source in common, W: for the cross-check,
+  /// which must not take for granted what no specification promises. nullopt: as the readings have it.
+  std::optional<Estimate> product_less_power;
   /// mean of (v - V)(i - I), W, on DC: from a capture, or a bound as an estimate. Added to V I.
   std::optional<Estimate> ripple_power;
 };

@@ -9,6 +9,7 @@
 #include "analysis/efficiency/loss_model.h"
 #include "analysis/efficiency/weighted.h"
 #include "daemon/evaluation/bench_checks.h"
+#include "daemon/evaluation/decisions.h"
 #include "daemon/evaluation/quantity.h"
 #include "daemon/evaluation/step_result.h"
 
@@ -185,6 +186,7 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
                             to_quantity(point.loss, "W")});
   }
   result.weighted = weighted_of(hookup, stair, result.points);
+  decide_limits(result, outcomes, stair);
   add_remarks(run, hookup, stair, result);
   return result;
 }

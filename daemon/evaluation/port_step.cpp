@@ -172,6 +172,10 @@ PortReading reading_of(const setup::Port& port, const StepValues& values, bool p
   if (capture != nullptr && capture->quote.power.active_w)
     reading.capture_power = capture->quote.power.active_w;
   reading.power_factor = power_factor_of(port, values, plain, noise);
+  for (const UnsharedPower& one : values.unshared) {
+    if (one.port == port.name && reading.power_factor && *reading.power_factor)
+      reading.product_less_power = one.volt_ampere * **reading.power_factor - one.watt;
+  }
   return reading;
 }
 

@@ -10,11 +10,18 @@
 
 namespace loadstair::evaluation {
 
+/// A wattmeter's port with its functions' errors taken as independent.
+struct UnsharedPower {
+  std::string port;
+  estimate::Estimate volt_ampere, watt;
+};
+
 /// What a step's powers are computed from.
 struct StepValues {
   const setup::Hookup* hookup = nullptr;
   std::vector<ChannelValue> channels;  ///< in the hook-up file's order
   std::vector<CaptureAnalysis> captures;
+  std::vector<UnsharedPower> unshared;  ///< for cross-checks
   WindowContext context;
 
   [[nodiscard]] const ChannelValue* find(const std::string& channel) const;

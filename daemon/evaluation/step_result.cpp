@@ -12,6 +12,7 @@
 #include "daemon/evaluation/quantity.h"
 #include "daemon/evaluation/temperature_result.h"
 #include "daemon/evaluation/validation.h"
+#include "daemon/evaluation/wattmeter.h"
 
 namespace loadstair::evaluation {
 namespace {
@@ -265,14 +266,11 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   StepValues values;
   values.hookup = &hookup;
   values.context = *window;
-  for (std::size_t i = 0; i < hookup.channels.size(); ++i) {
+  for (std::size_t i = 0; i < hookup.channels.size(); ++i)
     values.channels.push_back(channel_value(run, hookup, tracks, i, values.context));
-    const std::vector<std::string>& remarks = values.channels.back().remarks;
-    result.remarks.insert(result.remarks.end(), remarks.begin(), remarks.end());
-  }
-  // A wattmeter's functions are taken as independent. In a real one their gains are partly common and drop
-  // out of the power factor, but a specification does not promise it, and the hook-up file cannot declare it
-  // yet.
+  share_wattmeters(values);
+  for (const ChannelValue& value : values.channels)
+    result.remarks.insert(result.remarks.end(), value.remarks.begin(), value.remarks.end());
   values.captures = captures_of(run, hookup, stair, values.context, result.remarks);
   fill_powers(out, values, run);
   if (!no_efficiency.empty()) keep_input_only(out, no_efficiency);
@@ -294,6 +292,7 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   for (const EndTemperature& end : ends) result.temperatures.push_back(end.result);
   fill_projection(result, values, tracks, out.powers, ends, begun_s);
   if (result.settled.by == "not settled") result.remarks.push_back(result.settled.text);
+  out.captures = std::move(values.captures);
   return out;
 }
 

@@ -6,6 +6,7 @@
 #include <vector>
 
 #include "analysis/efficiency/step.h"
+#include "daemon/evaluation/capture_result.h"
 #include "daemon/evaluation/channel_value.h"
 #include "daemon/evaluation/result.h"
 #include "daemon/evaluation/track.h"
@@ -21,6 +22,7 @@ struct StepOutcome {
   /// With their sources, for the curve and for figures of the run; refused quantities where the step has
   /// none. Without load and at standby there is an input power, and no efficiency.
   efficiency::StepResult powers;
+  std::vector<CaptureAnalysis> captures;  ///< of this step
 };
 
 /// The step of the stair file that a recorded one is; nullptr when the file has no such step.
