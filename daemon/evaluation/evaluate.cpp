@@ -4,6 +4,7 @@
 #include <cmath>
 #include <map>
 #include <optional>
+#include <utility>
 
 #include "analysis/base/number.h"
 #include "analysis/efficiency/loss_model.h"
@@ -87,13 +88,12 @@ WeightedResult to_result(const efficiency::Weighted& weighted) {
   return out;
 }
 
-std::vector<WeightedResult> weighted_of(const setup::Hookup& hookup, const setup::Stair& stair,
-                                        const std::vector<efficiency::CurvePoint>& points) {
+/// European and CEC, with their sources where they can be had.
+void add_weighted(const setup::Hookup& hookup, const setup::Stair& stair, RunResult& result) {
   const std::vector<std::string> titles = {"European efficiency", "CEC-weighted efficiency"};
+  const auto& points = result.points;
   const auto refuse = [&](const std::string& why) {
-    std::vector<WeightedResult> out;
-    for (const std::string& title : titles) out.push_back({title, missing("1", why), {}});
-    return out;
+    for (const std::string& title : titles) result.weighted.push_back({title, missing("1", why), {}});
   };
   const bool inverter = std::any_of(hookup.ports.begin(), hookup.ports.end(), [](const setup::Port& port) {
     return port.direction == setup::Direction::output && port.kind == setup::PortKind::ac;
@@ -103,23 +103,45 @@ std::vector<WeightedResult> weighted_of(const setup::Hookup& hookup, const setup
   const double rated_w = stair.ratings.output_power_w;
   if (!(rated_w > 0.0)) return refuse("the stair file gives no rated output power");
   if (points.empty()) return refuse("no step has an efficiency");
-  const auto model = efficiency::fit_loss_model(points, floor_of(points));
-  const efficiency::LossModel* fitted = model ? &*model : nullptr;
-  std::vector<WeightedResult> out;
+  const efficiency::LossModel* fitted = result.model_source ? &*result.model_source : nullptr;
+  const auto add = [&](efficiency::Weighted weighted) {
+    result.weighted.push_back(to_result(weighted));
+    result.weighted_sources.push_back(std::move(weighted));
+  };
   if (const auto rated_dc_w = rated_input(rated_w, points, fitted)) {
-    out.push_back(to_result(
-        efficiency::weighted_efficiency(efficiency::Scheme::european, *rated_dc_w, points, fitted)));
+    add(efficiency::weighted_efficiency(efficiency::Scheme::european, *rated_dc_w, points, fitted));
   } else {
-    out.push_back({titles[0],
-                   missing("1", "the rated power was not measured, so the rated DC power is not known"),
-                   {}});
+    result.weighted.push_back(
+        {titles[0],
+         missing("1", "the rated power was not measured, so the rated DC power is not known"),
+         {}});
   }
   const std::string voltage = stair.ratings.input_voltage_v > 0.0
                                   ? base::print_number(stair.ratings.input_voltage_v) + " V"
                                   : std::string{};
-  out.push_back(
-      to_result(efficiency::weighted_efficiency(efficiency::Scheme::cec, rated_w, points, fitted, voltage)));
-  return out;
+  add(efficiency::weighted_efficiency(efficiency::Scheme::cec, rated_w, points, fitted, voltage));
+}
+
+/// For comparisons: the curve's model, what was around its points, and which meters these were.
+void add_circumstances(const setup::Hookup& hookup, const setup::Stair& stair, const Windows& windows,
+                       const std::vector<std::string>& names, RunResult& result) {
+  if (auto model = efficiency::fit_loss_model(result.points, floor_of(result.points)))
+    result.model_source = *std::move(model);
+  result.rated_power_w = std::max(0.0, stair.ratings.output_power_w);
+  for (const efficiency::CurvePoint& point : result.points) {
+    efficiency::Around& around = result.around.emplace_back();
+    const auto step =
+        static_cast<std::size_t>(std::find(names.begin(), names.end(), point.label) - names.begin());
+    if (step >= names.size()) continue;
+    if (windows[step]) around.ambient_c = windows[step]->ambient_c;
+    for (const PortResult& port : result.steps[step].ports) {
+      if (around.input_voltage_v || port.direction != "input" || !port.counted || !port.voltage.known)
+        continue;
+      around.input_voltage_v = std::abs(port.voltage.value);
+    }
+  }
+  for (const setup::Instrument& meter : hookup.instruments)
+    result.meters.push_back({meter.name, meter.profile_name, meter.serial_number, meter.calibrated});
 }
 
 void add_remarks(const store::StoredRun& run, const setup::Hookup& hookup, const setup::Stair& stair,
@@ -185,7 +207,8 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
                             found ? result.steps[step].efficiency : to_quantity(point.efficiency, "1"),
                             to_quantity(point.loss, "W")});
   }
-  result.weighted = weighted_of(hookup, stair, result.points);
+  add_circumstances(hookup, stair, windows, names, result);
+  add_weighted(hookup, stair, result);
   decide_limits(result, outcomes, stair);
   add_remarks(run, hookup, stair, result);
   return result;

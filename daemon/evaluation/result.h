@@ -6,6 +6,7 @@
 #include <string>
 #include <vector>
 
+#include "analysis/efficiency/comparison.h"
 #include "analysis/efficiency/curve.h"
 #include "analysis/efficiency/weighted.h"
 
@@ -162,6 +163,11 @@ struct DecisionResult {
   std::string source, text;
 };
 
+/// What tells one meter from another of the same name.
+struct MeterIdentity {
+  std::string name, profile, serial_number, calibrated;  ///< as in the hook-up file; may be empty
+};
+
 struct RunResult {
   std::int64_t run = 0;
   std::string prototype, revision, unit, state;
@@ -180,7 +186,10 @@ struct RunResult {
   std::string method_version;                  ///< of this program's evaluation
   std::vector<efficiency::CurvePoint> points;  ///< the curve with its sources, for comparisons; not printed
   std::vector<efficiency::Weighted> weighted_sources;  ///< the same of the weighted figures
-  double rated_power_w = 0.0;
+  std::optional<efficiency::LossModel> model_source;   ///< over all points; nullopt: none could be fitted
+  std::vector<efficiency::Around> around;              ///< of each point
+  std::vector<MeterIdentity> meters;                   ///< linked ones
+  double rated_power_w = 0.0;                          ///< output; 0: not declared
 };
 
 }  // namespace loadstair::evaluation
