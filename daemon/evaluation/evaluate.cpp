@@ -169,7 +169,8 @@ void add_remarks(const store::StoredRun& run, const setup::Hookup& hookup, const
 
 }  // namespace
 
-RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, const setup::Stair& stair) {
+RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, const setup::Stair& stair,
+                   Validate validating) {
   RunResult result;
   result.run = run.summary.run;
   result.prototype = run.summary.prototype;
@@ -192,7 +193,8 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
   std::vector<efficiency::StepResult> of_curve;
   for (std::size_t i = 0; i < run.steps.size(); ++i) {
     if (windows[i]) windows[i]->checks = &checks;
-    outcomes.push_back(step_outcome(run, hookup, stair, tracks, run.steps[i], windows[i]));
+    outcomes.push_back(
+        step_outcome(run, hookup, stair, tracks, run.steps[i], windows[i], validating == Validate::yes));
     const StepOutcome& outcome = outcomes.back();
     result.steps.push_back(outcome.result);
     if (on_curve(outcome, stair)) of_curve.push_back(outcome.powers);

@@ -148,7 +148,7 @@ void validate(StepOutcome& out, const StepPowers& powers, const store::StoredRun
   if (validated->instead) out.result.efficiency = *std::move(validated->instead);
 }
 
-void fill_powers(StepOutcome& out, const StepValues& values, const store::StoredRun& run) {
+void fill_powers(StepOutcome& out, const StepValues& values, const store::StoredRun& run, bool validating) {
   StepResult& result = out.result;
   const std::string unknown = unknown_of(values);
   const StepPowers real = step_powers(values, false);
@@ -170,7 +170,7 @@ void fill_powers(StepOutcome& out, const StepValues& values, const store::Stored
   result.remarks.insert(result.remarks.end(), totals.remarks.begin(), totals.remarks.end());
   remark_load(result);
   out.powers = totals;
-  if (why_no_efficiency(out.kind).empty()) validate(out, real, run);
+  if (validating && why_no_efficiency(out.kind).empty()) validate(out, real, run);
 }
 
 /// A meter that measures frequency before a capture.
@@ -242,7 +242,7 @@ std::optional<WindowContext> window_of(const store::StoredRun& run, const setup:
 
 StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hookup, const setup::Stair& stair,
                          const std::vector<Track>& tracks, const store::StoredStep& step,
-                         const std::optional<WindowContext>& window) {
+                         const std::optional<WindowContext>& window, bool validating) {
   StepOutcome out;
   StepResult& result = out.result;
   out.plan = plan_of(stair, step);
@@ -272,7 +272,7 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   for (const ChannelValue& value : values.channels)
     result.remarks.insert(result.remarks.end(), value.remarks.begin(), value.remarks.end());
   values.captures = captures_of(run, hookup, stair, values.context, result.remarks);
-  fill_powers(out, values, run);
+  fill_powers(out, values, run, validating);
   if (!no_efficiency.empty()) keep_input_only(out, no_efficiency);
   CaptureQuantities captured = quantities_of(values.captures);
   result.thd_voltage = std::move(captured.thd_voltage);

@@ -39,6 +39,6 @@ struct StepOutcome {
 [[nodiscard]] StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hookup,
                                        const setup::Stair& stair, const std::vector<Track>& tracks,
                                        const store::StoredStep& step,
-                                       const std::optional<WindowContext>& window);
+                                       const std::optional<WindowContext>& window, bool validating);
 
 }  // namespace loadstair::evaluation

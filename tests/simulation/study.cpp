@@ -86,7 +86,7 @@ Outcome study(std::uint64_t seed, const StudyChoice& choice) {
   const std::vector<std::size_t> levels = {level, (level + 2) % kLevels};
   const setup::Hookup hookup = hookup_of(out.bench);
   const Recorded a = record_run(out.bench, out.bench.board, levels, 1);
-  const evaluation::RunResult result = evaluation::evaluate(a.run, hookup, a.stair);
+  const evaluation::RunResult result = evaluation::evaluate(a.run, hookup, a.stair, evaluation::Validate::no);
   const evaluation::StepResult& step = result.steps.front();
   const Truth& truth = a.truths.front();
   Bench declared = out.bench;  // what the file says of the shares decides what is implied
@@ -106,7 +106,7 @@ Outcome study(std::uint64_t seed, const StudyChoice& choice) {
     one->warned = !step.remarks.empty();
   if (!choice.with_difference) return out;
   const Recorded b = record_run(out.bench, draw_board(mix(seed), out.bench.rated_w), levels, 2);
-  const evaluation::RunResult other = evaluation::evaluate(b.run, hookup, b.stair);
+  const evaluation::RunResult other = evaluation::evaluate(b.run, hookup, b.stair, evaluation::Validate::no);
   const efficiency::CurvePoint* first = point_of(result, step.label);
   const efficiency::CurvePoint* second = point_of(other, step.label);
   out.difference.truth = b.truths.front().efficiency - truth.efficiency;
@@ -155,7 +155,7 @@ std::vector<double> forecast_ratios(std::uint64_t first, std::uint64_t draws) {
     const setup::Hookup hookup = hookup_of(bench);
     const Recorded run = record_run(bench, bench.board, {seed % kLevels}, 1);
     const evaluation::Quantity got =
-        evaluation::evaluate(run.run, hookup, run.stair).steps.front().efficiency;
+        evaluation::evaluate(run.run, hookup, run.stair, evaluation::Validate::no).steps.front().efficiency;
     const evaluation::Forecast told = evaluation::forecast(hookup, run.stair);
     if (told.steps.empty() || !got.expanded || !told.steps.front().efficiency.expanded) continue;
     ratios.push_back(*told.steps.front().efficiency.expanded / *got.expanded);
