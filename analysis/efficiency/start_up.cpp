@@ -167,6 +167,7 @@ base::Outcome<Envelope> half_cycle_rms(std::span<const double> values, double in
   for (std::size_t i = 1; i < values.size(); ++i) {
     sum[i] = sum[i - 1] + (values[i - 1] * values[i - 1] + values[i] * values[i]) / 2;
   }
+  if (!std::isfinite(sum.back())) return base::Refusal{place, "the squares are beyond what a number holds"};
   const auto integral_to = [&](double place_samples) {
     const std::size_t before = std::min(static_cast<std::size_t>(place_samples), values.size() - 2);
     const double part = place_samples - static_cast<double>(before);
@@ -181,7 +182,6 @@ base::Outcome<Envelope> half_cycle_rms(std::span<const double> values, double in
     const double squares = integral_to((half + 1) * length) - integral_to(half * length);
     out.values.push_back(std::sqrt(std::max(0.0, squares) / length));
   }
-  if (!all_finite(out.values)) return base::Refusal{place, "the squares are beyond what a number holds"};
   return out;
 }
 
