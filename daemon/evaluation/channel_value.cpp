@@ -192,6 +192,16 @@ void remark_unusable(ChannelValue& into, const WindowContext& context) {
                          " readings not used, the last one since " + reason);
 }
 
+/// How long readings hang together, from the whole stretch since the step has settled: a window alone is
+/// short for that. Nullopt where the stretch is hardly longer than the window.
+std::optional<double> stretch_correlation(const Track& track, const Stretch& window, double declared_s,
+                                          const WindowContext& context) {
+  const Stretch steady = steady_stretch(track, context);
+  if (!longer_than(steady, window)) return std::nullopt;
+  const auto found = series::steady_window(steady.values(), {.declared_correlation_s = declared_s});
+  return found ? std::optional{found->correlation_time_s} : std::nullopt;
+}
+
 void fill_linked(ChannelValue& into, const setup::Hookup& hookup, const Track& track,
                  const WindowContext& context) {
   const setup::Instrument* instrument = hookup.find_instrument(into.channel->instrument);
@@ -202,8 +212,10 @@ void fill_linked(ChannelValue& into, const setup::Hookup& hookup, const Track& t
     return;
   }
   remark_unusable(into, context);
-  auto window = series::steady_window(into.stretch.values(),
-                                      {.declared_correlation_s = correlation_of(hookup, *into.channel)});
+  const double declared_s = correlation_of(hookup, *into.channel);
+  auto window = series::steady_window(into.stretch.values(), {.declared_correlation_s = declared_s,
+                                                              .stretch_correlation_s = stretch_correlation(
+                                                                  track, into.stretch, declared_s, context)});
   if (!window) {
     into.value = into.plain = base::Refusal{into.channel->name, window.refusal().reason};
     return;
@@ -220,6 +232,16 @@ void fill_linked(ChannelValue& into, const setup::Hookup& hookup, const Track& t
 }
 
 }  // namespace
+
+Stretch steady_stretch(const Track& track, const WindowContext& context) {
+  return stretch(track, std::min(context.from_s, context.steady_from_s.value_or(context.from_s)),
+                 context.to_s);
+}
+
+bool longer_than(const Stretch& steady, const Stretch& window) {
+  constexpr double kClearly = 1.2;
+  return static_cast<double>(steady.size()) > kClearly * static_cast<double>(window.size());
+}
 
 const setup::RangeSpec* ChannelValue::range() const {
   const RangePart* most = nullptr;

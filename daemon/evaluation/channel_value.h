@@ -69,6 +69,11 @@ struct ChannelValue {
   [[nodiscard]] estimate::Quoted with_noise(const WindowContext& context) const;
 };
 
+/// From the end of settling to the end of the window.
+[[nodiscard]] Stretch steady_stretch(const Track& track, const WindowContext& context);
+/// Whether a stretch tells more of the noise than the window that it contains.
+[[nodiscard]] bool longer_than(const Stretch& steady, const Stretch& window);
+
 /// The meter's filter and update, s: readings closer than this are not independent.
 [[nodiscard]] double correlation_of(const setup::Hookup& hookup, const setup::Channel& channel);
 

@@ -115,6 +115,41 @@ std::vector<Product> products_of(const StepValues& values, const efficiency::Ste
 
 }  // namespace
 
+namespace {
+
+/// Sums of the counted ports of one direction.
+std::vector<double> sum_of(const Powers& powers, const std::vector<setup::Port>& ports,
+                           setup::Direction direction) {
+  std::vector<double> sum(powers.time_s.size(), 0.0);
+  for (std::size_t i = 0; i < ports.size(); ++i) {
+    if (!ports[i].counted || ports[i].direction != direction) continue;
+    for (std::size_t k = 0; k < sum.size(); ++k) sum[k] += powers.power_w[i][k];
+  }
+  return sum;
+}
+
+/// Of input and output power over the whole steady stretch, the longer one; nullopt where it is hardly longer
+/// than the window.
+std::optional<double> stretch_correlation(const StepValues& values, const std::vector<Product>& products,
+                                          const std::vector<const ChannelValue*>& linked, double declared_s) {
+  std::vector<Stretch> stretches;
+  for (const ChannelValue* value : linked) {
+    stretches.push_back(steady_stretch(*value->stretch.track, values.context));
+    if (!longer_than(stretches.back(), value->stretch)) return std::nullopt;
+  }
+  const auto powers = powers_of(products, linked, stretches);
+  if (!powers) return std::nullopt;
+  std::optional<double> longest_s;
+  for (const setup::Direction direction : {setup::Direction::input, setup::Direction::output}) {
+    const std::vector<double> sum = sum_of(*powers, values.hookup->ports, direction);
+    const auto found = series::steady_window({powers->time_s, sum}, {.declared_correlation_s = declared_s});
+    if (found) longest_s = std::max(longest_s.value_or(0.0), found->correlation_time_s);
+  }
+  return longest_s;
+}
+
+}  // namespace
+
 std::optional<efficiency::StepNoise> noise_of(const StepValues& values, const efficiency::StepResult& ports) {
   const std::vector<setup::Port>& declared = values.hookup->ports;
   const std::vector<Product> products = products_of(values, ports);
@@ -137,8 +172,10 @@ std::optional<efficiency::StepNoise> noise_of(const StepValues& values, const ef
     }
     port_series.push_back({role, declared[i].counted, powers->power_w[i]});
   }
-  auto noise = efficiency::step_noise(powers->time_s, port_series, values.context.id(),
-                                      {.declared_correlation_s = correlation_s});
+  auto noise = efficiency::step_noise(
+      powers->time_s, port_series, values.context.id(),
+      {.declared_correlation_s = correlation_s,
+       .stretch_correlation_s = stretch_correlation(values, products, linked, correlation_s)});
   if (!noise) return std::nullopt;
   return std::move(*noise);
 }

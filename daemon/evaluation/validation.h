@@ -16,11 +16,11 @@ struct Validated {
 };
 
 /// Draws powers, burden and leads as analysis/efficiency composes them, and their ratio; the statistical
-/// parts are added to it. Blocks of 10^4 draws until stable to a fifth of the tolerance, at most 10^5 of
-/// them: a result that is not stable by then validates nothing, and the linear interval stays. input, linear
-/// what the step's result was made from, and that result seed            of the run; 0 for the program's own
-/// Returns: nullopt where there is no efficiency, or it is exact.
-/// Source: JCGM 101:2008 7.9, 8.1.
+/// parts are added to it. Blocks of 10^4 draws until stable to a fifth of the tolerance. Where `most_draws`
+/// do not reach that, half of the tolerance is aimed at: then the ends must agree within the other half, and
+/// up to one and a half nothing is decided and the linear interval stays. `input` is what `linear` was made
+/// from; a seed of 0 stands for the program's own. Returns: nullopt where there is no efficiency, or it is
+/// exact. Source: JCGM 101:2008 7.9, 8.1.
 [[nodiscard]] std::optional<Validated> validated_efficiency(const efficiency::StepInput& input,
                                                             const efficiency::StepResult& linear,
                                                             std::uint64_t seed, std::size_t most_draws);
