@@ -4,6 +4,7 @@
 
 #include <cstdint>
 #include <string>
+#include <vector>
 
 namespace loadstair::command {
 
@@ -61,6 +62,13 @@ struct ShowOptions {
 };
 int list_runs(const ShowOptions& options);
 int show_run(const ShowOptions& options);
+
+struct CompareOptions {
+  std::vector<std::int64_t> runs;  ///< the reference first, then those that are compared to it
+  std::string record;
+  bool json = false;  ///< one object for two runs, a list of them for more
+};
+int compare_runs(const CompareOptions& options);
 
 /// All of them behind one command line. Never throws.
 int run_program(int argc, char** argv);

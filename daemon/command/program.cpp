@@ -49,8 +49,9 @@ void declare_capture(CLI::App& command, CaptureArguments& arguments) {
   command.add_option("--voltage", arguments.voltage, "COLUMN[:SCALE], a header name or a number from 1");
   command.add_option("--current", arguments.current, "COLUMN[:SCALE]");
   command.add_option("--harmonics", arguments.harmonics, "highest order")->capture_default_str();
-  command.add_option("--crest-band", arguments.crest_band_hz,
-                     "crest factor also of the signal up to this frequency, Hz (median of the cycles' peaks)");
+  command.add_option(
+      "--crest-band", arguments.crest_band_hz,
+      "crest factor also of the signal up to this frequency, Hz (median of the cycles' peaks)");
   command.add_flag("--json", arguments.json, "results as JSON");
   command.add_option("--separator", arguments.separator, "of the fields: , ; | or tab");
   command.add_option("--decimal", arguments.decimal, "mark in numbers: . or ,");
@@ -121,6 +122,17 @@ void declare_all(CLI::App& app, int& status) {
                                         "label or number of a step: where its uncertainty comes from");
                      declare_record(command, options);
                    });
+  add<CompareOptions>(
+      app, status, "compare", "Differences between runs that are resolved, and those that are not",
+      "loadstair compare 1 4 --record bench.db", compare_runs,
+      [](CLI::App& command, CompareOptions& options) {
+        command.add_option("RUN", options.runs, "numbers of two runs or more; the first is the reference")
+            ->required()
+            ->expected(2, 100);
+        command.add_option("--record", options.record, "record file (default: the running daemon's)");
+        command.add_flag("--json", options.json,
+                         "as JSON: one object, or a list of them for more than two runs");
+      });
   add<CaptureArguments>(app, status, "capture", "Analyses a scope's CSV export on its own",
                         "loadstair capture marten_50hz.csv --voltage V_out --current I_out:10",
                         run_capture_command, declare_capture);

@@ -2,6 +2,7 @@
 
 #include <sodium.h>
 
+#include <algorithm>
 #include <boost/asio/co_spawn.hpp>
 #include <boost/asio/use_awaitable.hpp>
 #include <memory>
@@ -10,6 +11,7 @@
 #include <utility>
 
 #include "analysis/base/number.h"
+#include "daemon/service/compare_json.h"
 #include "daemon/service/result_json.h"
 #include "daemon/service/state_json.h"
 #include "daemon/setup/stair.h"
@@ -96,6 +98,15 @@ class Api {
       const auto evaluate = [this, run = *run] { return results(run); };
       co_return co_await on_pool(evaluate);
     }
+    if (path.starts_with("compare/")) {
+      const std::string runs = path.substr(8);
+      const std::size_t slash = std::min(runs.find('/'), runs.size());
+      const auto reference = base::parse_integer(runs.substr(0, slash));
+      const auto other = base::parse_integer(slash < runs.size() ? runs.substr(slash + 1) : std::string{});
+      if (!reference || !other) co_return refused(404, "two runs have a number each: /api/v1/compare/1/2");
+      const auto compare = [this, a = *reference, b = *other] { return comparison(a, b); };
+      co_return co_await on_pool(compare);
+    }
     co_return refused(404, "there is no /api/v1/" + path);
   }
 
@@ -134,6 +145,13 @@ class Api {
     if (!reader) return refused(500, reader.refusal().text());
     const auto result = results_of(*reader, run);
     return result ? good(to_json(*result)) : refused(404, result.refusal().text());
+  }
+
+  [[nodiscard]] HttpReply comparison(store::RunId reference, store::RunId other) const {
+    const auto reader = parts_.record.reader();
+    if (!reader) return refused(500, reader.refusal().text());
+    const auto found = comparison_of(*reader, reference, other);
+    return found ? good(to_json(*found)) : refused(404, found.refusal().text());
   }
 
   HttpReply change(const std::string& path, const Members& members) {
