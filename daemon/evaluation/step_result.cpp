@@ -55,6 +55,8 @@ void refuse_all(StepOutcome& out, const setup::Hookup& hookup, const std::string
   result.result_state = "not measured";
   result.input_power = result.output_power = result.loss = missing("W", why);
   result.efficiency = result.power_factor = result.thd_voltage = result.crest_factor = missing("1", why);
+  result.thd_current = missing("1", why);
+  result.dc_component = missing("V", why);
   result.frequency = missing("Hz", why);
   for (const setup::TemperaturePoint& point : hookup.temperatures) {
     TemperatureResult temperature;
@@ -148,6 +150,20 @@ void validate(StepOutcome& out, const StepPowers& powers, const store::StoredRun
   if (validated->instead) out.result.efficiency = *std::move(validated->instead);
 }
 
+/// How far up their ranges the meters of counted inputs were read.
+std::vector<efficiency::RangeUse> uses_of(const StepValues& values) {
+  std::vector<efficiency::RangeUse> out;
+  for (const setup::Port& port : values.hookup->ports) {
+    if (port.direction != setup::Direction::input || !port.counted) continue;
+    for (const std::string* name : {&port.voltage, &port.current, &port.power}) {
+      const ChannelValue* value = values.find(*name);
+      if (value == nullptr || !value->plain || value->range() == nullptr) continue;
+      out.push_back({value->channel->name, value->raw, value->range()->upto});
+    }
+  }
+  return out;
+}
+
 void fill_powers(StepOutcome& out, const StepValues& values, const store::StoredRun& run, bool validating) {
   StepResult& result = out.result;
   const std::string unknown = unknown_of(values);
@@ -170,6 +186,8 @@ void fill_powers(StepOutcome& out, const StepValues& values, const store::Stored
   result.remarks.insert(result.remarks.end(), totals.remarks.begin(), totals.remarks.end());
   remark_load(result);
   out.powers = totals;
+  out.ports = real.ports.ports;
+  out.uses = uses_of(values);
   if (validating && why_no_efficiency(out.kind).empty()) validate(out, real, run);
 }
 

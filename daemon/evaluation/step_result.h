@@ -5,6 +5,7 @@
 #include <string>
 #include <vector>
 
+#include "analysis/efficiency/idle_power.h"
 #include "analysis/efficiency/step.h"
 #include "daemon/evaluation/capture_result.h"
 #include "daemon/evaluation/channel_value.h"
@@ -22,7 +23,9 @@ struct StepOutcome {
   /// With their sources, for the curve and for figures of the run; refused quantities where the step has
   /// none. Without load and at standby there is an input power, and no efficiency.
   efficiency::StepResult powers;
-  std::vector<CaptureAnalysis> captures;  ///< of this step
+  std::vector<CaptureAnalysis> captures;     ///< of this step
+  std::vector<efficiency::PortPower> ports;  ///< in the hook-up file's order, each with its own noise
+  std::vector<efficiency::RangeUse> uses;    ///< of the meters at counted inputs
 };
 
 /// The step of the stair file that a recorded one is; nullptr when the file has no such step.
