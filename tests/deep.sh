@@ -53,7 +53,8 @@ coverage() { cmake --preset dev && cmake --build --preset dev --target coverage 
 simulation() {
   cmake --preset dev && cmake --build --preset dev --target simulation || return 1
   local part
-  for part in coverage trouble differences forecast; do build/dev/tests/simulation/simulation "$part" 2000 || return 1; done
+  for part in coverage trouble differences; do build/dev/tests/simulation/simulation "$part" 2000 || return 1; done
+  build/dev/tests/simulation/simulation forecast 200
 }
 twins() { cmake --preset dev && cmake --build --preset dev && /usr/bin/python3 tests/whole/twins.py build/dev/loadstair "$PWD" build/dev/tests/whole/twin; }
 kills() {

@@ -157,8 +157,10 @@ std::vector<double> forecast_ratios(std::uint64_t first, std::uint64_t draws) {
     const evaluation::Quantity got =
         evaluation::evaluate(run.run, hookup, run.stair, evaluation::Validate::no).steps.front().efficiency;
     const evaluation::Forecast told = evaluation::forecast(hookup, run.stair);
-    if (told.steps.empty() || !got.expanded || !told.steps.front().efficiency.expanded) continue;
-    ratios.push_back(*told.steps.front().efficiency.expanded / *got.expanded);
+    if (told.steps.empty()) continue;
+    const evaluation::Quantity& said = told.steps.front().efficiency;
+    const bool both = got.known && got.uncertainty_known && said.known && said.uncertainty_known;
+    if (both) ratios.push_back((said.high - said.low) / (got.high - got.low));
   }
   return ratios;
 }
