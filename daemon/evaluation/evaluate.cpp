@@ -12,6 +12,7 @@
 #include "daemon/evaluation/bench_checks.h"
 #include "daemon/evaluation/decisions.h"
 #include "daemon/evaluation/quantity.h"
+#include "daemon/evaluation/run_figures.h"
 #include "daemon/evaluation/step_result.h"
 
 namespace loadstair::evaluation {
@@ -178,10 +179,6 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
   result.unit = run.summary.unit;
   result.state = store::name_of(run.summary.state);
   result.method_version = kMethodVersion;
-  result.no_load = missing("W", "no step of this run was found to measure it without load");
-  result.standby = missing("W", "no step of this run was found to measure standby");
-  result.load_regulation = missing("1", "no steps of this run were found to show it over loads");
-  result.line_regulation = missing("1", "no steps of this run were found to show it over input voltages");
   std::vector<Track> tracks = tracks_of(run, hookup);
   const std::vector<std::string> names = unique_names(run.steps);
   Windows windows;
@@ -211,6 +208,7 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
   }
   add_circumstances(hookup, stair, windows, names, result);
   add_weighted(hookup, stair, result);
+  run_figures(result, outcomes, run, hookup, stair);
   decide_limits(result, outcomes, stair);
   add_remarks(run, hookup, stair, result);
   return result;
