@@ -5,6 +5,7 @@
 #include <map>
 #include <utility>
 
+#include "analysis/base/number.h"
 #include "daemon/evaluation/evaluate.h"
 #include "daemon/evaluation/ideal_run.h"
 
@@ -40,6 +41,16 @@ std::optional<BestAction> best_of(const std::vector<BudgetEntry>& budget) {
       best = BestAction{entry.source, entry.action, *entry.expanded_if_done};
   }
   return best;
+}
+
+/// An ideal bench has no zeros and equal meters: what counts is how well that would be known.
+std::string check_text(const BenchCheckResult& check) {
+  if (!check.applied) return check.text;
+  if (check.kind == "zero") return "zero of " + check.channel + ": takes the place of its specified offset";
+  return "tie " + check.name + ": the ratio of " + check.channel + " would be known to \u00b1" +
+         base::print_significant(100.0 * (check.ratio.high - check.ratio.low) / 2.0, 2) +
+         " %, its offset to \u00b1" +
+         base::print_significant((check.offset.high - check.offset.low) / 2.0, 2) + " " + check.offset.unit;
 }
 
 ForecastStep step_of(StepResult& result) {
@@ -104,7 +115,7 @@ Forecast forecast(const setup::Hookup& hookup, const setup::Stair& stair, std::i
     if (result.kind == setup::name_of(setup::StepKind::tie)) continue;
     out.steps.push_back(step_of(result));
   }
-  for (const BenchCheckResult& check : found.bench_checks) out.bench_checks.push_back(check.text);
+  for (const BenchCheckResult& check : found.bench_checks) out.bench_checks.push_back(check_text(check));
   keep_worst_leads(out);
   gather_remarks(out);
   return out;

@@ -15,12 +15,12 @@ namespace {
 
 using estimate::Estimate;
 
-constexpr std::size_t kDrawsOfRun = 6'000'000;
+constexpr std::size_t kDrawsOfRun = 4'000'000;
 constexpr std::size_t kLeastOfStep = 100'000;
-constexpr std::size_t kMostOfStep = 400'000;
-/// Numerical error of the ends over the tolerance: JCGM 101 8.2's fifth, else a half.
+constexpr std::size_t kMostOfStep = 300'000;
+/// Numerical error of the ends over the tolerance: JCGM 101 8.2's fifth, else coarser.
 constexpr double kFine = 0.2;
-constexpr double kCoarse = 0.5;
+constexpr double kCoarser[] = {0.3, 0.5};
 constexpr double kSameFormula = 1e-9;
 constexpr std::size_t kNone = static_cast<std::size_t>(-1);
 
@@ -147,12 +147,12 @@ class Formula {
 enum class Verdict { agrees, differs, open };
 
 /// How the two intervals compare, given that Monte Carlo's ends are known within a share of the tolerance.
-Verdict verdict_of(const estimate::Validation& found, const estimate::MonteCarlo& drawn, bool coarse) {
+Verdict verdict_of(const estimate::Validation& found, const estimate::MonteCarlo& drawn, double share) {
   if (!drawn.stabilised) return Verdict::open;
-  if (!coarse) return found.agrees ? Verdict::agrees : Verdict::differs;
+  if (share <= kFine) return found.agrees ? Verdict::agrees : Verdict::differs;
   const double most = std::max(found.low_difference, found.high_difference);
-  if (most <= (1.0 - kCoarse) * found.tolerance) return Verdict::agrees;
-  return most > (1.0 + kCoarse) * found.tolerance ? Verdict::differs : Verdict::open;
+  if (most <= (1.0 - share) * found.tolerance) return Verdict::agrees;
+  return most > (1.0 + share) * found.tolerance ? Verdict::differs : Verdict::open;
 }
 
 std::string text_of(const estimate::Validation& found, const estimate::MonteCarlo& drawn, Verdict verdict) {
@@ -211,15 +211,15 @@ std::optional<Validated> validated_efficiency(const efficiency::StepInput& input
                                       .tolerance_share = kFine,
                                       .most_draws = most_draws};
   auto drawn = estimate::propagate_blocks_adaptively(model, formula.inputs(), settings);
-  const bool coarse = drawn && !drawn->stabilised;
-  if (coarse) {
-    settings.tolerance_share = kCoarse;
+  for (const double share : kCoarser) {
+    if (!drawn || drawn->stabilised) break;
+    settings.tolerance_share = share;
     drawn = estimate::propagate_blocks_adaptively(model, formula.inputs(), settings);
   }
   if (!drawn) return std::nullopt;
   const estimate::Coverage coverage = estimate::coverage(*linear.efficiency);
   estimate::Validation found = estimate::validate(coverage, *drawn);
-  const Verdict verdict = verdict_of(found, *drawn, coarse);
+  const Verdict verdict = verdict_of(found, *drawn, settings.tolerance_share);
   found.agrees = verdict == Verdict::agrees;
   Validated out;
   out.validation = {found.agrees,          drawn->draws,    found.low_difference,
