@@ -87,18 +87,28 @@ std::string other_figures(const json& result) {
   return section("Other figures", lines);
 }
 
-/// Loss and efficiency where the heatsink ends, beside what was measured on the way.
+/// Loss and efficiency where the heatsink ends, beside what was measured on the way; steps where that is the
+/// same to the printed digits are named together.
 std::string projected_section(const json& result) {
   std::vector<Row> rows = {
       {"step", "loss W measured", "at end temperature", "efficiency % measured", "at end temperature"}};
+  std::string same;
   for (const auto& step : result["steps"]) {
     if (!step.contains("loss_projected")) continue;
-    rows.push_back({step["label"].get<std::string>(), estimate_text(step["loss"]),
-                    estimate_text(step["loss_projected"]), estimate_text(step["efficiency"], 100.0),
-                    step.contains("efficiency_projected") ? estimate_text(step["efficiency_projected"], 100.0)
-                                                          : std::string{"-"}});
+    const std::string label = step["label"];
+    const Row row = {
+        label, estimate_text(step["loss"]), estimate_text(step["loss_projected"]),
+        estimate_text(step["efficiency"], 100.0),
+        step.contains("efficiency_projected") ? estimate_text(step["efficiency_projected"], 100.0) : "-"};
+    if (row[1] == row[2] && row[3] == row[4]) {
+      same += (same.empty() ? "" : ", ") + label;
+    } else {
+      rows.push_back(row);
+    }
   }
-  return rows.size() == 1 ? "" : section("Projected to the end temperature", table_of(rows));
+  std::string text = rows.size() == 1 ? std::string{} : table_of(rows);
+  if (!same.empty()) text += "  as measured, to the printed digits: " + same + "\n";
+  return section("Projected to the end temperature", text);
 }
 
 std::string thermal_section(const json& result) {
@@ -140,19 +150,35 @@ std::string decisions_section(const json& result) {
   return section("Decisions" + (rule.empty() ? "" : " (" + rule + ")"), lines);
 }
 
+/// Below this share of the variance a line is only counted.
+constexpr double kShownShare = 0.0005;
+
 std::string lines_of_budget(const json& budget, double scale, const std::string& unit) {
   std::vector<Row> rows = {
       {"source", "type", "u " + unit, "share of variance", "what would shrink it", "U then " + unit}};
+  std::int64_t small = 0;
+  double small_share = 0.0;
   for (const auto& entry : budget) {
+    const double share = entry["share"].get<double>();
+    if (share < kShownShare) {
+      ++small;
+      small_share += share;
+      continue;
+    }
     rows.push_back({entry["source"].get<std::string>(), entry["type"].get<std::string>(),
                     base::print_significant(entry["standard_uncertainty"].get<double>() * scale, 2),
-                    base::print_fixed(entry["share"].get<double>() * 100.0, 1) + " %",
-                    entry["action"].get<std::string>(),
+                    base::print_fixed(share * 100.0, 1) + " %", entry["action"].get<std::string>(),
                     entry.contains("expanded_if_done")
                         ? base::print_significant(entry["expanded_if_done"].get<double>() * scale, 2)
                         : std::string{}});
   }
-  return table_of(rows);
+  std::string text = table_of(rows);
+  if (small > 0) {
+    text += "  and " + base::print_integer(small) + " more, together " +
+            base::print_significant(small_share * 100.0, 1) +
+            " % of the variance (all of them with --json)\n";
+  }
+  return text;
 }
 
 }  // namespace
