@@ -43,7 +43,6 @@ using Windows = std::vector<std::optional<WindowContext>>;
 
 /// Zeros first: they are taken off the tracks (readings on the range on which the zero was measured) before
 /// the ties are evaluated with them. What is not usable is in `results` with its reason and in nothing else.
-/// names     of the run's steps, unlike each other
 [[nodiscard]] BenchChecks bench_checks(const store::StoredRun& run, const setup::Hookup& hookup,
                                        const setup::Stair& stair, const Windows& windows,
                                        std::vector<Track>& tracks);

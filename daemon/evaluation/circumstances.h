@@ -26,7 +26,7 @@ namespace loadstair::evaluation {
 [[nodiscard]] estimate::SpecificationConditions conditions_of(const setup::Channel& channel, int range);
 
 /// What of the conditions of the channels did not hold, or is not known: one sentence each, naming the
-/// channel. ports   of the step's result: frequency and power factor are looked up there
+/// channel. Frequency and power factor are looked up in the step's result.
 [[nodiscard]] std::vector<std::string> condition_remarks(const StepValues& values, const setup::Stair& stair,
                                                          const StepResult& result);
 
