@@ -46,6 +46,8 @@ instrument::InstrumentSettings settings_of(const setup::Instrument& declared, co
   return settings;
 }
 
+}  // namespace
+
 std::string said(const std::exception_ptr& failure) {
   try {
     std::rethrow_exception(failure);
@@ -55,8 +57,6 @@ std::string said(const std::exception_ptr& failure) {
     return "an exception of an unknown kind";
   }
 }
-
-}  // namespace
 
 Bench::State::State(setup::Hookup the_hookup, link::Clock& the_clock,
                     boost::asio::any_io_executor the_executor, store::Writer& the_writer,

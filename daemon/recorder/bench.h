@@ -5,6 +5,7 @@
 #include <boost/asio/any_io_executor.hpp>
 #include <boost/asio/awaitable.hpp>
 #include <cstdint>
+#include <exception>
 #include <functional>
 #include <memory>
 #include <optional>
@@ -172,6 +173,9 @@ class Bench {
   struct State;
   std::shared_ptr<State> state_;
 };
+
+/// What an exception says of itself, for an event. Precondition: there is one.
+[[nodiscard]] std::string said(const std::exception_ptr& failure);
 
 /// The flags of a reading in words; empty: good.
 [[nodiscard]] std::vector<std::string> words_of(std::uint32_t flags);

@@ -97,8 +97,19 @@ void GuardWatch::blank(std::int64_t now_ns) {
   beyond_since_ns_.reset();
 }
 
+void GuardWatch::watch_lower_limit(bool watched) {
+  // What was seen under the other rule does not count under this one.
+  if (watched != lower_watched_ && guard_.below && last_value_ < *guard_.below) beyond_since_ns_.reset();
+  lower_watched_ = watched;
+}
+
+std::optional<double> GuardWatch::below() const {
+  return lower_watched_ ? guard_.below : std::nullopt;
+}
+
 bool GuardWatch::beyond(double value) const {
-  return (guard_.above && value > *guard_.above) || (guard_.below && value < *guard_.below);
+  const auto lower = below();
+  return (guard_.above && value > *guard_.above) || (lower && value < *lower);
 }
 
 void GuardWatch::see(const recorder::Point& point) {
@@ -173,10 +184,11 @@ std::optional<double> GuardWatch::value(std::int64_t now_ns) const {
 
 std::optional<double> GuardWatch::margin(std::int64_t now_ns) const {
   const auto present = value(now_ns);
-  if (!present || (!guard_.above && !guard_.below)) return std::nullopt;
+  const auto lower = below();
+  if (!present || (!guard_.above && !lower)) return std::nullopt;
   double nearest = INFINITY;
   if (guard_.above) nearest = std::min(nearest, *guard_.above - *present);
-  if (guard_.below) nearest = std::min(nearest, *present - *guard_.below);
+  if (lower) nearest = std::min(nearest, *present - *lower);
   return nearest;
 }
 

@@ -36,6 +36,8 @@ class GuardWatch {
   void disarm();
   /// A set point changes now: blanking begins.
   void blank(std::int64_t now_ns);
+  /// Whether `below` counts: not while the output is meant to be dead. Starts as watched.
+  void watch_lower_limit(bool watched);
   void see(const recorder::Point& point);
 
   struct Cause {
@@ -50,6 +52,8 @@ class GuardWatch {
   /// What it asks for beyond its limit.
   [[nodiscard]] GuardDemand demand() const;
   [[nodiscard]] const setup::Guard& guard() const { return guard_; }
+  /// The lower limit as it is watched now; nullopt: none.
+  [[nodiscard]] std::optional<double> below() const;
   [[nodiscard]] const std::string& unit() const { return unit_; }
   /// The last usable value; nullopt while it is missing or overloaded.
   [[nodiscard]] std::optional<double> value(std::int64_t now_ns) const;
@@ -65,6 +69,7 @@ class GuardWatch {
   std::string unit_;
   std::int64_t missing_after_ns_;
   bool armed_ = false;
+  bool lower_watched_ = true;
   bool tripped_ = false;
   bool seen_ = false;         ///< a usable reading since it was armed
   std::int64_t last_ns_ = 0;  ///< arrival of the last usable reading, or the arming

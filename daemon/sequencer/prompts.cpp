@@ -47,18 +47,7 @@ std::vector<std::string> hand_cautions(const setup::Hookup& hookup) {
 
 awaitable<Go> Sequencer::State::hand_prompt(const setup::Step& plan) {
   if (plan.prompt.empty()) co_return Go::on;
-  OpenPrompt open;
-  open.id = next_prompt++;
-  open.kind = PromptKind::hand;
-  open.text = plan.prompt;
-  open.cautions = hand_cautions(bench.hookup());
-  open.since_ns = clock.now_ns();
-  const auto id = open.id;
-  prompt = std::move(open);
-  enter(StepPhase::prompt, "waits for the person at the bench: " + plan.prompt);
-  const std::function<bool()> gone = [this, id] { return !prompt || prompt->id != id; };
-  const auto go = co_await wait_for(gone, INT64_MAX);
-  prompt.reset();
+  const auto go = co_await ask_hand(plan.prompt, hand_cautions(bench.hookup()));
   if (go == Go::on) {
     // What the hand did counts as the change of the set point.
     blank_guards();
@@ -67,30 +56,70 @@ awaitable<Go> Sequencer::State::hand_prompt(const setup::Step& plan) {
   co_return go;
 }
 
-std::vector<std::size_t> Sequencer::State::typed_channels() const {
+awaitable<Go> Sequencer::State::ask_hand(std::string text, std::vector<std::string> cautions) {
+  OpenPrompt open;
+  open.id = next_prompt++;
+  open.kind = PromptKind::hand;
+  open.text = text;
+  open.cautions = std::move(cautions);
+  open.since_ns = clock.now_ns();
+  const auto id = open.id;
+  prompt = std::move(open);
+  enter(StepPhase::prompt, "waits for the person at the bench: " + text);
+  const std::function<bool()> gone = [this, id] { return !prompt || prompt->id != id; };
+  const auto go = co_await wait_for(gone, INT64_MAX);
+  prompt.reset();
+  co_return go;
+}
+
+namespace {
+
+/// The channels of a check that is about some of them; nullptr: the step is about all.
+const std::vector<std::string>* channels_of_check(const setup::Stair& stair, const setup::Step& plan) {
+  if (plan.kind == setup::StepKind::zero) return &stair.zero_channels;
+  if (plan.kind == setup::StepKind::tie && plan.check < stair.ties.size()) {
+    return &stair.ties[plan.check].channels;
+  }
+  return nullptr;
+}
+
+/// At a zero or a tie a channel reads what the check makes it read, not what the bench gives in service.
+setup::Channel without_plausible_limits(setup::Channel channel) {
+  channel.low.reset();
+  channel.high.reset();
+  return channel;
+}
+
+}  // namespace
+
+std::vector<std::size_t> Sequencer::State::typed_channels(const setup::Step& plan) const {
   std::vector<std::size_t> found;
   const auto& channels = bench.hookup().channels;
+  const auto* wanted = channels_of_check(stair, plan);
   for (std::size_t i = 0; i < channels.size(); ++i) {
-    if (channels[i].typed) found.push_back(i);
+    if (!channels[i].typed) continue;
+    if (wanted && std::find(wanted->begin(), wanted->end(), channels[i].name) == wanted->end()) continue;
+    found.push_back(i);
   }
   return found;
 }
 
 /// Two rounds, the second in reverse order and, as far as the first one tells, so late that it ends with the
 /// window: then each channel's two instants lie around the window's middle, and a drift falls out.
-awaitable<Go> Sequencer::State::typed_rounds(std::int64_t window_begin_ns, std::int64_t window_least_ns) {
-  if (const auto go = co_await typed_round(1); go != Go::on) co_return go;
+awaitable<Go> Sequencer::State::typed_rounds(const setup::Step& plan, std::int64_t window_begin_ns,
+                                             std::int64_t window_least_ns) {
+  if (const auto go = co_await typed_round(plan, 1); go != Go::on) co_return go;
   const auto took = clock.now_ns() - window_begin_ns;
   const auto second = window_begin_ns + window_least_ns - took;
   if (second > clock.now_ns()) {
     enter(StepPhase::average, "averages; the second round of typed values comes next", second);
     if (const auto go = co_await wait_until(second); go != Go::on) co_return go;
   }
-  co_return co_await typed_round(2);
+  co_return co_await typed_round(plan, 2);
 }
 
-awaitable<Go> Sequencer::State::typed_round(std::int32_t round) {
-  auto channels = typed_channels();
+awaitable<Go> Sequencer::State::typed_round(const setup::Step& plan, std::int32_t round) {
+  auto channels = typed_channels(plan);
   if (round == 2) std::reverse(channels.begin(), channels.end());
   for (const auto channel : channels) {
     if (const auto go = co_await typed_prompt(channel, round); go != Go::on) co_return go;
@@ -108,8 +137,10 @@ awaitable<Go> Sequencer::State::typed_prompt(std::size_t channel, std::int32_t r
   open.round = round;
   open.rounds = 2;
   open.text = "Read " + declared.name + " (in " + open.unit + ") and type it, with its range and last digit.";
-  open.low = declared.low;
-  open.high = declared.high;
+  if (channels_of_check(stair, stair.steps[static_cast<std::size_t>(step_index)]) == nullptr) {
+    open.low = declared.low;
+    open.high = declared.high;
+  }
   for (const auto& range : declared.ranges) open.ranges.push_back(range.upto);
   if (const auto last = last_typed.find(channel); last != last_typed.end()) open.last_value = last->second;
   open.since_ns = clock.now_ns();
@@ -178,7 +209,10 @@ Outcome<void> Sequencer::State::enter_typed(std::int64_t id, const TypedEntry& e
   // A correction repairs what was written down, not when the meter was read.
   one.prompted_ns = open ? prompt->since_ns : earlier->prompted_ns;
   one.entered_ns = open ? clock.now_ns() : earlier->entered_ns;
-  const auto& channel = bench.hookup().channels[one.channel];
+  auto channel = bench.hookup().channels[one.channel];
+  if (channels_of_check(stair, stair.steps[static_cast<std::size_t>(step_index)])) {
+    channel = without_plausible_limits(std::move(channel));
+  }
   auto read = read_typed(channel, entry);
   if (!read) return read.refusal();
   one.value = std::move(*read);

@@ -14,25 +14,6 @@ using boost::asio::awaitable;
 
 constexpr std::int64_t kReadyLook = 50'000'000;
 
-/// The order in which a bench is switched on: what feeds first.
-int switch_on_rank(const std::string& role) {
-  if (role == "source") return 0;
-  if (role == "converter") return 1;
-  return 2;
-}
-
-/// Counts a command of the run as under way for as long as it is.
-class Commanding {
- public:
-  explicit Commanding(int& count) : count_{count} { ++count_; }
-  ~Commanding() { --count_; }
-  Commanding(const Commanding&) = delete;
-  Commanding& operator=(const Commanding&) = delete;
-
- private:
-  int& count_;
-};
-
 store::StepState state_of(Go how) {
   switch (how) {
     case Go::next:
@@ -170,45 +151,13 @@ awaitable<Go> Sequencer::State::put_on_disk() {
   co_return Go::on;
 }
 
-/// Everything that comes before the first step: instruments there, settings set and read back, then power.
+/// Everything that comes before the first step; power comes with the steps.
 awaitable<Go> Sequencer::State::prepare() {
   if (const auto go = co_await wait_for_instruments(); go != Go::on) co_return go;
-  if (const auto go = co_await put_on_disk(); go != Go::on) co_return go;
-  std::vector<setup::SetPoint> points;
-  for (const auto& control : bench.hookup().controls) {
-    for (const auto& [setting, value] : control.at_start) points.push_back({control.name, setting, value});
-  }
-  // A load that still holds the last run's set point would be switched on with it.
-  const auto& first = stair.steps.front().set;
-  points.insert(points.end(), first.begin(), first.end());
-  enter(StepPhase::start, "sets and reads back what is to hold before the power comes on");
-  if (const auto go = co_await apply_all(points); go != Go::on) co_return go;
-
-  auto controls = bench.hookup().controls;
-  std::stable_sort(controls.begin(), controls.end(), [](const auto& a, const auto& b) {
-    return switch_on_rank(a.role) < switch_on_rank(b.role);
-  });
-  for (const auto& control : controls) {
-    if (stop_demand) co_return Go::stop;
-    enter(StepPhase::start, "switches on: " + control.name);
-    energised = true;
-    base::Outcome<void> outcome;
-    {
-      const Commanding under_way{commanding};
-      outcome = co_await bench.switch_on(control.name);
-    }
-    if (stop_demand) co_return Go::stop;
-    if (!outcome) {
-      event("command_refused", control.name, outcome.refusal().text());
-      stop_now("cannot switch on " + control.name + ": " + outcome.refusal().text());
-      co_return Go::stop;
-    }
-  }
-  arm_guards();
-  co_return Go::on;
+  co_return co_await put_on_disk();
 }
 
-awaitable<Go> Sequencer::State::apply_all(const std::vector<setup::SetPoint>& points) {
+awaitable<Go> Sequencer::State::apply_all(const std::vector<setup::SetPoint>& points, std::int32_t for_step) {
   for (const auto& point : points) {
     if (const auto go = co_await wait_until(0); go != Go::on) co_return go;
     blank_guards();
@@ -220,7 +169,7 @@ awaitable<Go> Sequencer::State::apply_all(const std::vector<setup::SetPoint>& po
     blank_guards();
     store::SettingItem item;
     item.run = run;
-    item.step = step_index;
+    item.step = for_step;
     item.control = point.control;
     item.setting = point.setting;
     item.value = point.value;
@@ -249,10 +198,14 @@ awaitable<Go> Sequencer::State::run_step(std::int32_t index) {
   bench.set_step(index);
   rearm_tripped();
   post_step(store::StepState::waiting);
+  owe_rewire(plan);
   Go go = Go::again;
   while (go == Go::again) {
-    enter(StepPhase::apply, "sets and reads back the step's set points");
-    go = co_await apply_all(plan.set);
+    go = co_await bring_up(plan);
+    if (go == Go::on) {
+      enter(StepPhase::apply, "sets and reads back the step's set points");
+      go = co_await apply_all(plan.set, index);
+    }
     if (go == Go::on) {
       applied_ns = clock.now_ns();
       go = co_await hand_prompt(plan);
@@ -297,7 +250,7 @@ awaitable<Go> Sequencer::State::average(const setup::Step& plan) {
   const auto least = ticks_of(plan.average_s);
   enter(StepPhase::average, "averages", begin + least);
   auto go = Go::on;
-  if (!typed_channels().empty()) go = co_await typed_rounds(begin, least);
+  if (!typed_channels(plan).empty()) go = co_await typed_rounds(plan, begin, least);
   if (go == Go::on) {
     enter(StepPhase::average, "averages", begin + least);
     go = co_await wait_until(begin + least);

@@ -27,16 +27,20 @@ constexpr const char* kProveDead =
 
 }  // namespace
 
+std::vector<setup::Control> in_safe_order(const setup::Hookup& hookup) {
+  auto controls = hookup.controls;
+  std::stable_sort(controls.begin(), controls.end(),
+                   [](const auto& a, const auto& b) { return safe_rank(a.role) < safe_rank(b.role); });
+  return controls;
+}
+
 /// Starts it beside whatever goes on; a second call while it is being made changes nothing.
 void Sequencer::State::begin_safe_state() {
   if (making_safe) return;
   making_safe = true;
   command_since = commanding > 0;
-  auto controls = bench.hookup().controls;
-  std::stable_sort(controls.begin(), controls.end(),
-                   [](const auto& a, const auto& b) { return safe_rank(a.role) < safe_rank(b.role); });
   safe.clear();
-  for (const auto& control : controls) {
+  for (const auto& control : in_safe_order(bench.hookup())) {
     Safe one;
     one.control = control.name;
     one.instrument = control.instrument;

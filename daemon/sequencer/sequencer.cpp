@@ -60,16 +60,6 @@ store::RunStart run_start_of(const setup::Hookup& hookup, const setup::Stair& st
   return start;
 }
 
-std::string said(const std::exception_ptr& failure) {
-  try {
-    std::rethrow_exception(failure);
-  } catch (const std::exception& error) {
-    return error.what();
-  } catch (...) {
-    return "an exception of an unknown kind";
-  }
-}
-
 }  // namespace
 
 Sequencer::State::State(recorder::Bench& the_bench, SequencerOptions the_options)
@@ -78,12 +68,12 @@ Sequencer::State::State(recorder::Bench& the_bench, SequencerOptions the_options
       options{std::move(the_options)},
       tasks{the_bench.executor(),
             [this](std::exception_ptr failure) {
-              tell_broken("the program broke a promise of its own: " + said(failure));
+              tell_broken("the program broke a promise of its own: " + recorder::said(failure));
               stop_now("the program broke a promise of its own");
             }},
       safe_tasks{the_bench.executor(),
                  [this](std::exception_ptr failure) {
-                   tell_broken("while making the bench safe: " + said(failure));
+                   tell_broken("while making the bench safe: " + recorder::said(failure));
                  }},
       wake{the_bench.clock(), the_bench.executor()},
       one_safe{the_bench.clock(), the_bench.executor()},
@@ -155,6 +145,7 @@ Outcome<store::RunId> Sequencer::State::start(setup::Stair new_stair) {
   }
   if (new_stair.steps.empty()) return Refusal{new_stair.file, "the stair has no steps"};
   if (auto fits = setup::match(new_stair, bench.hookup()); !fits) return fits.refusal();
+  if (auto possible = may_switch_off(new_stair); !possible) return possible.refusal();
   if (const auto health = bench.writer().health(); health.failure) {
     return Refusal{"", "the record cannot be written: " + health.failure->text};
   }
@@ -182,7 +173,10 @@ Outcome<store::RunId> Sequencer::State::start(setup::Stair new_stair) {
   hold_demand.reset();
   resume_demand = false;
   energised = false;
+  on.clear();
+  owed_rewire.clear();
   guards.clear();
+  guards_armed = false;
   for (const auto& guard : stair.guards) {
     const auto channel = bench.find_channel(guard.channel);
     if (!channel) continue;  // match() refuses such a stair

@@ -72,7 +72,7 @@ struct TypedNow {
 struct GuardNow {
   std::string name, channel, unit;
   std::optional<double> value;         ///< the last usable one; nullopt: missing
-  std::optional<double> above, below;  ///< limits
+  std::optional<double> above, below;  ///< limits as they are watched now: a dead output has no lower one
   std::optional<double> margin;        ///< distance to the nearest limit, negative beyond it
   std::string state;                   ///< "watching", "blanked", "beyond", "missing", "tripped", "off"
   std::string action;                  ///< "stop", "hold", "next"

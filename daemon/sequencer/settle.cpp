@@ -44,6 +44,14 @@ std::string ambient_of(const setup::Hookup& hookup, const std::string& channel) 
   return {};
 }
 
+/// The last step under load goes on to the rate criterion; what comes after it may be a check of the bench.
+bool nothing_warms_after(const setup::Stair& stair, std::size_t index) {
+  return std::none_of(stair.steps.begin() + static_cast<std::ptrdiff_t>(index) + 1, stair.steps.end(),
+                      [](const setup::Step& later) {
+                        return later.kind == setup::StepKind::level || later.kind == setup::StepKind::closure;
+                      });
+}
+
 }  // namespace
 
 awaitable<evaluation::WindowState> Sequencer::State::settling_now(const setup::Step& plan) {
@@ -57,7 +65,7 @@ awaitable<evaluation::WindowState> Sequencer::State::settling_now(const setup::S
   };
   const auto work = std::make_shared<Work>();
   work->plan = plan;
-  work->last = step_index + 1 == static_cast<std::int32_t>(stair.steps.size());
+  work->last = nothing_warms_after(stair, static_cast<std::size_t>(step_index));
   if (plan.electrical) {
     const auto from = std::max(applied_ns, clock.now_ns() - ticks_of(2.0 * plan.electrical->window_s));
     work->electrical = trace_of(bench, plan.electrical->channel, from, applied_ns);

@@ -92,7 +92,7 @@ Snapshot Sequencer::State::snapshot() const {
     guard.unit = watch.unit();
     guard.value = watch.value(now);
     guard.above = watch.guard().above;
-    guard.below = watch.guard().below;
+    guard.below = watch.below();
     guard.margin = watch.margin(now);
     guard.state = name_of(watch.standing(now));
     guard.action = name_of(watch.demand());

@@ -1,8 +1,8 @@
 // The sequencer's inside: one object on one executor, its work split over several files.
 //   sequencer.cpp   what the public functions do    run.cpp       the stair, phase by phase
-//   settle.cpp      is a step settled yet?          prompts.cpp   hand prompts and typed rounds
-//   watch.cpp       guards, the record's health     snapshot.cpp  what is shown
-//   safe_state.cpp  safe state, cool down, after a crash
+//   power.cpp       what is on during a step        settle.cpp    is a step settled yet?
+//   prompts.cpp     hand prompts and typed rounds   watch.cpp     guards, the record's health
+//   snapshot.cpp    what is shown                   safe_state.cpp  safe state, cool down, after a crash
 //
 // How a run is interrupted: stop(), skip(), hold come as demands. The run's coroutine looks at them whenever
 // it waits (wait_until) and after every command; the safe state does not wait for it but starts at once
@@ -32,6 +32,21 @@ enum class Go {
   stop,   ///< the run is over
 };
 
+/// Counts a command of the run as under way for as long as it is.
+class Commanding {
+ public:
+  explicit Commanding(int& count) : count_{count} { ++count_; }
+  ~Commanding() { --count_; }
+  Commanding(const Commanding&) = delete;
+  Commanding& operator=(const Commanding&) = delete;
+
+ private:
+  int& count_;
+};
+
+/// The hook-up's controls in the order in which they are made safe: converter, load, others, source.
+[[nodiscard]] std::vector<setup::Control> in_safe_order(const setup::Hookup& hookup);
+
 struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   State(recorder::Bench& the_bench, SequencerOptions the_options);
 
@@ -54,7 +69,7 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   boost::asio::awaitable<Go> put_on_disk();
   boost::asio::awaitable<Go> run_step(std::int32_t index);
   boost::asio::awaitable<Go> measure(const setup::Step& plan);
-  boost::asio::awaitable<Go> apply_all(const std::vector<setup::SetPoint>& points);
+  boost::asio::awaitable<Go> apply_all(const std::vector<setup::SetPoint>& points, std::int32_t for_step);
   boost::asio::awaitable<Go> soak(const setup::Step& plan);
   boost::asio::awaitable<Go> settle(const setup::Step& plan);
   boost::asio::awaitable<evaluation::WindowState> settling_now(const setup::Step& plan);
@@ -67,15 +82,27 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   void post_step(store::StepState state);
   void end_step(Go how);
 
+  // --- power.cpp
+  [[nodiscard]] base::Outcome<void> may_switch_off(const setup::Stair& wanted) const;
+  boost::asio::awaitable<Go> bring_up(const setup::Step& plan);
+  boost::asio::awaitable<Go> switch_on_all(const std::vector<std::string>& wanted, const setup::Step& plan);
+  boost::asio::awaitable<Go> switch_off_all_but(const std::vector<std::string>& wanted);
+  boost::asio::awaitable<Go> switch_off(const std::vector<std::string>& controls);
+  boost::asio::awaitable<Go> rewire();
+  void owe_rewire(const setup::Step& plan);
+
   // --- prompts.cpp
   boost::asio::awaitable<Go> hand_prompt(const setup::Step& plan);
-  boost::asio::awaitable<Go> typed_rounds(std::int64_t window_begin_ns, std::int64_t window_least_ns);
-  boost::asio::awaitable<Go> typed_round(std::int32_t round);
+  boost::asio::awaitable<Go> ask_hand(std::string text, std::vector<std::string> cautions);
+  boost::asio::awaitable<Go> typed_rounds(const setup::Step& plan, std::int64_t window_begin_ns,
+                                          std::int64_t window_least_ns);
+  boost::asio::awaitable<Go> typed_round(const setup::Step& plan, std::int32_t round);
   boost::asio::awaitable<Go> typed_prompt(std::size_t channel, std::int32_t round);
   base::Outcome<void> answer(std::int64_t id, std::string by);
   base::Outcome<void> refuse(std::int64_t id, std::string why);
   base::Outcome<void> enter_typed(std::int64_t id, const TypedEntry& entry, const std::string& by);
-  [[nodiscard]] std::vector<std::size_t> typed_channels() const;
+  /// Those that take part in a step: all, but at a zero or a tie the channels of that check.
+  [[nodiscard]] std::vector<std::size_t> typed_channels(const setup::Step& plan) const;
 
   // --- watch.cpp
   struct Guarded {
@@ -87,6 +114,7 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   void rearm_tripped();
   void disarm_guards();
   void blank_guards();
+  void watch_lower_limits(bool watched);
   void check_guard(Guarded& guarded);
   void trip(const GuardWatch& guard, const GuardWatch::Cause& cause);
 
@@ -130,7 +158,9 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   bool run_task = false;    ///< the run's coroutine lives
   bool crash_task = false;  ///< make_safe_after_crash is at work
   bool closing = false;
-  bool energised = false;  ///< something was switched on in this run, or nobody knows
+  bool energised = false;       ///< something was switched on in this run, or nobody knows
+  std::vector<std::string> on;  ///< controls that were told to switch on, and not read back as off since
+  std::string owed_rewire;      ///< asked before the next power; empty: the wiring is as it should be
 
   // demands
   std::optional<std::string> stop_demand, skip_demand, hold_demand;
@@ -138,6 +168,7 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
 
   // guards
   std::vector<Guarded> guards;
+  bool guards_armed = false;
   std::vector<Trip> trips;
 
   // prompts

@@ -34,6 +34,7 @@ boost::asio::awaitable<void> Sequencer::State::watch() {
 }
 
 void Sequencer::State::arm_guards() {
+  guards_armed = true;
   const auto now = clock.now_ns();
   for (auto& guarded : guards) {
     guarded.watch.arm(now);
@@ -49,12 +50,17 @@ void Sequencer::State::rearm_tripped() {
 }
 
 void Sequencer::State::disarm_guards() {
+  guards_armed = false;
   for (auto& guarded : guards) guarded.watch.disarm();
 }
 
 void Sequencer::State::blank_guards() {
   const auto now = clock.now_ns();
   for (auto& guarded : guards) guarded.watch.blank(now);
+}
+
+void Sequencer::State::watch_lower_limits(bool watched) {
+  for (auto& guarded : guards) guarded.watch.watch_lower_limit(watched);
 }
 
 void Sequencer::State::check_guard(Guarded& guarded) {
