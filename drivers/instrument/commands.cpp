@@ -114,7 +114,10 @@ void Instrument::Impl::finish(const JobPointer& job, CommandState state, std::st
   if (state == CommandState::refused || state == CommandState::unreachable) {
     tell(EventKind::command_refused, job->outcome->text);
   }
-  if (job == safe_) safe_.reset();
+  if (job == safe_) {
+    safe_.reset();
+    safe_owed_ = state != CommandState::confirmed && state != CommandState::sent;
+  }
   for (const auto& waiter : job->waiters) waiter->notify();
 }
 
@@ -261,6 +264,7 @@ net::awaitable<CommandOutcome> Instrument::Impl::make_safe() {
   }
   if (!safe_) {
     safe_ = std::make_shared<Job>();
+    safe_owed_ = true;
     safe_->deadline_ns = clock_.now_ns() + ns_of(settings_.safe_limit_s);
     // A set point that waits must not go out after the safe state.
     finish_waiting(CommandState::refused, "not sent or not confirmed, since it is being made safe");

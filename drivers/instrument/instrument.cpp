@@ -25,6 +25,7 @@ constexpr std::int64_t kPresenceNs = kSecondNs;
 constexpr std::int64_t kSilentPeriods = 5;
 constexpr int kSilencesToLoss = 5;
 constexpr std::int64_t kSilenceLeastNs = 2 * kSecondNs;
+constexpr double kOwedRetryMostS = 1.0;
 constexpr std::int64_t kSilenceUnknownNs = 10 * kSecondNs;
 
 std::int64_t ns_of(double seconds) {
@@ -147,7 +148,9 @@ net::awaitable<void> Instrument::Impl::run() {
     }
     if (stopping_) break;
     if (state_ != State::wrong_identity) state_ = State::connecting;
-    const double wait_s = safe_ ? settings_.retry_s : retry_s;
+    // Nobody knows whether it is on: looked for often until its safe state is read back, however long it
+    // takes.
+    const double wait_s = safe_owed_ ? std::min(settings_.retry_s, kOwedRetryMostS) : retry_s;
     co_await pause(ns_of(wait_s));
     retry_s = std::min(2 * retry_s, settings_.retry_most_s);
   }

@@ -24,7 +24,8 @@ struct InstrumentSettings {
   double update_s = 0.0;  ///< between two conversions of a free-running meter; of lines: between two lines
   double integration_s = 0.0;  ///< length of one conversion
   double delay_s = 0.0;        ///< from the end of a conversion to when it can be asked for
-  double retry_s = 0.25;       ///< first wait before a lost link is opened again; doubles up to retry_most_s
+  double retry_s = 0.25;  ///< first wait before a lost link is opened again; doubles up to retry_most_s, but
+                          ///< not beyond 1 s while its safe state is not confirmed
   double retry_most_s = 5.0;
   double command_limit_s = 5.0;  ///< for `apply` and `switch_on`, waiting for a lost link included
   double safe_limit_s = 10.0;    ///< for `make_safe`

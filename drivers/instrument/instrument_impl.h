@@ -109,6 +109,7 @@ class Instrument::Impl {
   std::deque<JobPointer> waiting_;
   JobPointer at_work_;
   JobPointer safe_;
+  bool safe_owed_ = false;  ///< asked to be made safe, and not known to be
 };
 
 }  // namespace loadstair::instrument
