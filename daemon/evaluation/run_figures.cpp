@@ -217,7 +217,7 @@ void add_expected(FoldBackResult& out, const setup::Overload& overload, const ef
   if (!found.knee_current) {
     out.text += "; expected trip " + base::print_significant(expected->value(), 4) + " A";
   } else if (const auto agreement = efficiency::trip_agreement(*found.knee_current, *expected)) {
-    out.text += "; " + agreement->text;
+    out.text = agreement->text;
   }
   if (overload.sense != "rms") out.text += " (" + overload.sense + " sensing; " + shape.text + ")";
   if (!overload.threshold_tolerance_percent || !overload.sense_tolerance_percent) {
