@@ -250,8 +250,11 @@ std::optional<WindowContext> window_of(const store::StoredRun& run, const setup:
   const bool measured =
       step.average_begin_ns && step.average_end_ns && *step.average_end_ns > *step.average_begin_ns;
   if (!measured) return std::nullopt;
-  WindowContext window{base::print_integer(run.summary.started_ns), name, step.index,
-                       since_start(run, *step.average_begin_ns), since_start(run, *step.average_end_ns)};
+  // Start and number: what two runs do not share must not meet in one key.
+  const std::string run_name =
+      base::print_integer(run.summary.started_ns) + "." + base::print_integer(run.summary.run);
+  WindowContext window{run_name, name, step.index, since_start(run, *step.average_begin_ns),
+                       since_start(run, *step.average_end_ns)};
   window.ambient_c = ambient_of(hookup, stair, tracks, window.from_s, window.to_s);
   window.at_ns = *step.average_begin_ns;
   if (step.settled_ns) window.steady_from_s = since_start(run, *step.settled_ns);
