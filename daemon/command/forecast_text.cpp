@@ -20,6 +20,10 @@ std::string figure_text(const json& figure, double scale) {
   return estimate_text(figure, scale);
 }
 
+bool idle(const json& step) {
+  return step["kind"] == "no load" || step["kind"] == "standby";
+}
+
 Row row_of(const json& step) {
   const auto& budget = step["budget"].empty() ? step["loss_budget"] : step["budget"];
   std::string largest = "-";
@@ -27,6 +31,9 @@ Row row_of(const json& step) {
     largest = budget.front()["source"].get<std::string>() + " (" +
               base::print_fixed(budget.front()["share"].get<double>() * 100.0, 0) + " % of the variance)";
   }
+  // Without a load all that goes in is lost.
+  if (idle(step))
+    return {step["label"].get<std::string>(), "-", "-", figure_text(step["input_power"], 1.0), largest};
   return {step["label"].get<std::string>(), figure_text(step["output_power"], 1.0),
           figure_text(step["efficiency"], 100.0), figure_text(step["loss"], 1.0), largest};
 }
@@ -74,8 +81,7 @@ std::string why_text(const json& steps) {
 std::string forecast_text(const json& forecast) {
   const auto& steps = forecast["steps"];
   if (steps.empty()) return "";
-  std::vector<Row> rows = {
-      {"step", "output W", "efficiency %", "loss W", "largest contributor to the efficiency"}};
+  std::vector<Row> rows = {{"step", "output W", "efficiency %", "loss W", "largest contributor"}};
   for (const auto& step : steps) rows.push_back(row_of(step));
   std::string text =
       "\nForecast, 95 % (efficiency as expected in the stair file; noise and drift of the bench come on "
