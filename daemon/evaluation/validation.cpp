@@ -167,10 +167,11 @@ std::string text_of(const estimate::Validation& found, const estimate::MonteCarl
          "; the interval is Monte Carlo's, without k";
 }
 
-Quantity quantity_of(const estimate::Coverage& coverage) {
+/// Monte Carlo's interval; the value stays the ratio of the powers, which a reader may compute again.
+Quantity quantity_of(const estimate::Coverage& coverage, double value) {
   Quantity quantity;
   quantity.known = true;
-  quantity.value = coverage.value;
+  quantity.value = value;
   quantity.unit = "1";
   quantity.low = coverage.low;
   quantity.high = coverage.high;
@@ -224,7 +225,8 @@ std::optional<Validated> validated_efficiency(const efficiency::StepInput& input
   Validated out;
   out.validation = {found.agrees,          drawn->draws,    found.low_difference,
                     found.high_difference, found.tolerance, text_of(found, *drawn, verdict)};
-  if (verdict == Verdict::differs) out.instead = quantity_of(estimate::reported(coverage, *drawn, found));
+  if (verdict == Verdict::differs)
+    out.instead = quantity_of(estimate::reported(coverage, *drawn, found), value);
   return out;
 }
 

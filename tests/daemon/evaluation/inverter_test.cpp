@@ -332,6 +332,8 @@ TEST_CASE("the noise of a polled power factor is the power's, as a wattmeter's w
   REQUIRE(read.efficiency.known);
   CHECK(read.ports.at(1).method == "V x I x PF");
   CHECK(read.efficiency.value == Approx(same.efficiency.value).epsilon(1e-12));
+  REQUIRE(same.efficiency.expanded);
   REQUIRE(*same.efficiency.expanded > 1e-4);
+  REQUIRE(read.efficiency.expanded);
   CHECK(*read.efficiency.expanded == Approx(*same.efficiency.expanded).epsilon(1e-9));
 }

@@ -52,6 +52,7 @@ TEST_CASE("a run of typed channels alone has an efficiency") {
     const double resolution = 0.01 / std::sqrt(12.0) / value;
     variance += gain * gain + resolution * resolution;
   }
+  REQUIRE(step.efficiency.expanded);
   CHECK(*step.efficiency.expanded ==
         Approx(kNormal95 * std::sqrt(variance) * step.efficiency.value).epsilon(1e-9));
 }
