@@ -104,12 +104,20 @@ struct TypedChannel {
   double type_s = 1.4;      ///< from there until the answer is given
 };
 
+/// The name by which a person calls a circuit.
+struct NamedCircuit {
+  std::string channel;
+  std::string instrument;
+  std::string function;
+};
+
 /// Everything the rehearsal needs; plain data.
 struct BenchDescription {
   PlantParameters plant;
   PlantSettings at_start;
   std::vector<InstrumentDescription> instruments;
   std::vector<TypedChannel> typed;
+  std::vector<NamedCircuit> circuits;  ///< for changes of the wiring
   std::vector<Fault> faults;
   std::uint64_t seed = 1;       ///< which bench: the fixed share of every error, true shunts, burdens, leads
   std::uint64_t run = 1;        ///< which visit: the run share
@@ -152,7 +160,7 @@ class BenchCore;
 /// Control socket (FOLDER/control, a unix stream socket), one line each way; an answer is `error WHY`
 /// otherwise:
 ///   typed CHANNEL             -> VALUE UNIT RANGE DIGIT
-///   hand KNOB VALUE           -> done            (hand lamps 3)
+///   hand ACTION               -> done            (see perform)
 ///   capture INSTRUMENT        -> PATH            (when the file is there)
 ///   window FROM_NS TO_NS LABEL -> done           (UTC; kept for truth)
 ///   truth PATH                -> done            (writes the windows given so far)
@@ -183,7 +191,14 @@ class RehearsedBench {
 
   /// A person reads a display: waits the reaction time, answers. Refusal: no such channel.
   [[nodiscard]] boost::asio::awaitable<base::Outcome<TypedAnswer>> typed_answer(std::string channel);
-  /// A person turns a knob: "lamps 3". Refusal: no such knob, or not possible.
+  /// A person's hands, one action or several with "; " between them:
+  ///   KNOB VALUE            turns a knob: "lamps 3", "converter 0"
+  ///   short CHANNEL, ...    shorts the inputs of these circuits; "short inputs": of every voltage, current
+  ///   and
+  ///                         power circuit
+  ///   tie CHANNEL, ...      moves the others to where the first one measures
+  ///   restore               every circuit as described
+  /// Refusal: no such knob, channel or action, or not possible; the actions before it are done.
   [[nodiscard]] base::Outcome<void> perform(const std::string& action);
   /// Triggers the scope; the file's path when it is there.
   [[nodiscard]] boost::asio::awaitable<base::Outcome<std::string>> capture(std::string instrument);

@@ -110,18 +110,6 @@ base::Outcome<void> BenchCore::check() const {
   return {};
 }
 
-base::Outcome<void> BenchCore::perform(const std::string& action) {
-  const std::size_t blank = action.rfind(' ');
-  const auto knob = blank == std::string::npos ? std::nullopt : knob_named(action.substr(0, blank));
-  const auto value = blank == std::string::npos ? std::nullopt : base::parse_number(action.substr(blank + 1));
-  if (!knob || !value)
-    return base::Refusal{"\"" + action + "\"", "a knob and a number are wanted, such as \"lamps 3\""};
-  if (auto turned = simulator.turn(*knob, *value, now_s()); !turned) return turned.refusal();
-  const std::int64_t now = clock.now_ns();
-  log.add({now, now + clock.utc_offset_ns(), "", "hand", 0, "", action, ""});
-  return {};
-}
-
 void BenchCore::inject(Fault fault) {
   Station* station = find(fault.instrument);
   if (station == nullptr) return;

@@ -72,7 +72,7 @@ class BenchCore : public std::enable_shared_from_this<BenchCore> {
             std::string query, std::string reply);
 
   [[nodiscard]] base::Outcome<void> check() const;
-  [[nodiscard]] base::Outcome<void> perform(const std::string& action);
+  [[nodiscard]] base::Outcome<void> perform(const std::string& actions);
   void inject(Fault fault);
   [[nodiscard]] base::Outcome<Truth> truth_over(std::int64_t from_ns, std::int64_t to_ns);
   [[nodiscard]] base::Outcome<void> write_truth(const std::string& path,

@@ -50,6 +50,26 @@ double responding(Response response, const SignalMeans& signal) {
   return 0.0;
 }
 
+// IEC 60751:2008, 5.2.
+constexpr double kPlatinumA = 3.9083e-3;
+constexpr double kPlatinumB = -5.775e-7;
+constexpr double kPlatinumC = -4.183e-12;
+constexpr double kZeroCelsius_k = 273.15;
+
+double platinum_ohm(double r0_ohm, double t) {
+  const double below = t < 0.0 ? kPlatinumC * (t - 100.0) * t * t * t : 0.0;
+  return r0_ohm * (1.0 + kPlatinumA * t + kPlatinumB * t * t + below);
+}
+
+// The real root of c x^3 + b x + a = 1/T, x = ln R (Cardano; b and c are positive).
+double steinhart_hart_ohm(const ResistanceSensor& sensor, double kelvin) {
+  if (sensor.c == 0.0) return std::exp((1.0 / kelvin - sensor.a) / sensor.b);
+  const double half = 0.5 * (sensor.a - 1.0 / kelvin) / sensor.c;
+  const double third = sensor.b / (3.0 * sensor.c);
+  const double root = std::sqrt(third * third * third + half * half);
+  return std::exp(std::cbrt(root - half) - std::cbrt(root + half));
+}
+
 double rounded(double value, double digit) {
   return digit > 0.0 ? std::round(value / digit) * digit : value;
 }
@@ -66,10 +86,27 @@ double warming(const Shunt& shunt, double cold_ohm, double mean_square_a2) {
   return 1.0 / (1.0 - std::min(share, 0.9));
 }
 
+double resistance_at(const ResistanceSensor& sensor, double celsius) {
+  if (sensor.r0_ohm > 0.0) return sensor.lead_ohm + platinum_ohm(sensor.r0_ohm, celsius);
+  const double kelvin = celsius + kZeroCelsius_k;
+  if (sensor.r25_ohm > 0.0) {
+    return sensor.lead_ohm +
+           sensor.r25_ohm * std::exp(sensor.beta_k * (1.0 / kelvin - 1.0 / (25.0 + kZeroCelsius_k)));
+  }
+  return sensor.lead_ohm + steinhart_hart_ohm(sensor, kelvin);
+}
+
 Meter::Meter(MeterDescription description, std::uint64_t seed, std::uint64_t run)
     : description_{std::move(description)}, seed_{seed}, run_{run} {
   const double place = symmetric_draw(key_of(seed_, description_.name + " phase", {run_}));
   phase_s_ = 0.5 * (1.0 + place) * description_.update_period_s;
+  restore_wiring();
+}
+
+void Meter::restore_wiring() {
+  wiring_.clear();
+  for (const MeterFunction& f : description_.functions)
+    wiring_.push_back({f.quantity, f.port, f.node, false});
 }
 
 std::optional<std::size_t> Meter::find(const std::string& function) const {
@@ -142,13 +179,14 @@ double Meter::volts_per_ampere(std::size_t function, const SignalMeans& current)
 
 double Meter::true_value(std::size_t function, const StepMeans& means) const {
   const MeterFunction& f = description_.functions[function];
-  const PortStep& port = f.port == Port::input ? means.input : means.output;
-  const auto node = static_cast<std::size_t>(f.node);
-  switch (f.quantity) {
+  const Wiring& w = wiring_[function];
+  const PortStep& port = w.port == Port::input ? means.input : means.output;
+  const auto node = static_cast<std::size_t>(w.node);
+  switch (w.quantity) {
     case Quantity::voltage:
       return responding(f.response, port.voltage[node]);
     case Quantity::current:
-      return responding(f.response, port.meter_current) * volts_per_ampere(function, port.meter_current);
+      return responding(f.response, port.meter_current);
     case Quantity::power:
       return port.meter_power_w[node];
     case Quantity::power_factor: {
@@ -157,7 +195,7 @@ double Meter::true_value(std::size_t function, const StepMeans& means) const {
       return apparent > 0.0 ? port.meter_power_w[node] / apparent : 0.0;
     }
     case Quantity::frequency:
-      return f.port == Port::output ? means.frequency_hz : 0.0;
+      return w.port == Port::output ? means.frequency_hz : 0.0;
     case Quantity::case_temperature:
       return means.case_c;
     case Quantity::junction_temperature:
@@ -168,7 +206,58 @@ double Meter::true_value(std::size_t function, const StepMeans& means) const {
   return 0.0;
 }
 
-Shown Meter::show(std::size_t function, double value, std::int64_t conversion) const {
+double Meter::sensor_ohm(std::size_t function, double celsius) const {
+  const MeterFunction& f = description_.functions[function];
+  const double most_k = f.sensor->tolerance_k + f.sensor->tolerance_per_k * std::abs(celsius);
+  const double error_k = most_k * symmetric_draw(key_of(seed_, description_.name + "/" + f.name + " sensor"));
+  return resistance_at(*f.sensor, celsius + error_k);
+}
+
+double Meter::seen_value(std::size_t function, const StepMeans& means) const {
+  const MeterFunction& f = description_.functions[function];
+  const Wiring& w = wiring_[function];
+  if (w.shorted) return 0.0;
+  double value = true_value(function, means);
+  if (f.sensor) value = sensor_ohm(function, value);
+  if (w.quantity == Quantity::current && f.shunt) {
+    value *= volts_per_ampere(function, (w.port == Port::input ? means.input : means.output).meter_current);
+  }
+  if (f.scale == 1.0 && f.scale_tolerance_percent == 0.0) return value;
+  const double error = 0.01 * f.scale_tolerance_percent *
+                       symmetric_draw(key_of(seed_, description_.name + "/" + f.name + " scale"));
+  return value / (f.scale * (1.0 + error));
+}
+
+std::optional<double> Meter::circuits_gain(std::size_t power, const StepMeans& means) const {
+  const MeterFunction& f = description_.functions[power];
+  if (!description_.power_from_circuits || f.quantity != Quantity::power) return std::nullopt;
+  double sum = 0.0;
+  double bound = 0.0;
+  for (const Quantity wanted : {Quantity::voltage, Quantity::current}) {
+    const auto& all = description_.functions;
+    const auto found = std::find_if(all.begin(), all.end(), [&](const MeterFunction& other) {
+      return other.quantity == wanted && other.port == f.port && !other.ranges.empty();
+    });
+    if (found == all.end()) return std::nullopt;
+    const auto circuit = static_cast<std::size_t>(found - all.begin());
+    const double value = seen_value(circuit, means);
+    const auto range = range_for(circuit, std::abs(value));
+    if (!range) return std::nullopt;
+    sum += error(circuit, *range, value).gain;
+    bound += 0.01 * found->ranges[*range].reading_percent;
+  }
+  const double value = seen_value(power, means);
+  const auto range = range_for(power, std::abs(value));
+  if (!range) return std::nullopt;
+  const double promised = 0.01 * f.ranges[*range].reading_percent;
+  if (bound >= promised) return bound > 0.0 ? sum * promised / bound : 0.0;
+  const double place = value / f.ranges[*range].full_scale;
+  const std::string name = description_.name + "/" + f.name + " own gain";
+  return sum + (promised - bound) * shared_draw(seed_, run_, name, *range, place);
+}
+
+Shown Meter::show(std::size_t function, double value, std::int64_t conversion,
+                  std::optional<double> gain) const {
   const MeterFunction& f = description_.functions[function];
   if (f.ranges.empty()) return {value, 0.0, 0.0, false};
   const auto range = range_for(function, std::abs(value));
@@ -180,7 +269,7 @@ Shown Meter::show(std::size_t function, double value, std::int64_t conversion) c
   }
   const MeterRange& r = f.ranges[*range];
   const DrawnError drawn = error(function, *range, value);
-  double shown = value * (1.0 + drawn.gain) + drawn.offset;
+  double shown = value * (1.0 + gain.value_or(drawn.gain)) + drawn.offset;
   if (f.nonlinearity_percent != 0.0)
     shown += 0.01 * f.nonlinearity_percent * r.full_scale *
              std::sin(2.0 * std::numbers::pi * value / r.full_scale);
@@ -198,7 +287,7 @@ std::vector<Shown> Meter::shown(const History& history, double time_s) const {
   std::vector<Shown> all;
   all.reserve(description_.functions.size());
   for (std::size_t i = 0; i < description_.functions.size(); ++i)
-    all.push_back(show(i, true_value(i, means), conversion));
+    all.push_back(show(i, seen_value(i, means), conversion, circuits_gain(i, means)));
   return all;
 }
 

@@ -57,6 +57,19 @@ struct Shunt {
 /// have burnt.
 [[nodiscard]] double warming(const Shunt& shunt, double cold_ohm, double mean_square_a2);
 
+/// A temperature sensor that is read as resistance; its own error is drawn once, within
+/// +-(tolerance_k + tolerance_per_k * |t|), t in degC.
+struct ResistanceSensor {
+  /// Platinum: r0 (1 + A t + B t^2 + C (t - 100) t^3, the last below 0), IEC 60751. 0: a thermistor
+  double r0_ohm = 0.0;
+  double r25_ohm = 0.0, beta_k = 0.0;  ///< thermistor: r25 exp(beta (1/T - 1/298.15)), T in K
+  double a = 0.0, b = 0.0, c = 0.0;    ///< where r25_ohm is 0: 1/T = a + b ln R + c (ln R)^3
+  double lead_ohm = 0.0;               ///< in series with it
+  double tolerance_k = 0.0, tolerance_per_k = 0.0;
+};
+/// What a sensor without error has at a temperature in degC, leads included.
+[[nodiscard]] double resistance_at(const ResistanceSensor& sensor, double celsius);
+
 /// One thing a meter can show.
 struct MeterFunction {
   std::string name;  ///< "voltage", "reading", "heatsink": queries, lines and typed questions use it
@@ -70,6 +83,9 @@ struct MeterFunction {
   double impedance_ohm = 0.0;             ///< of a voltage circuit; 0: infinite
   double burden_tolerance_percent = 0.0;  ///< of burden_ohm and impedance_ohm, the true ones are drawn inside
   std::optional<Shunt> shunt;             ///< for a current: the meter reads the voltage across it
+  std::optional<ResistanceSensor> sensor;  ///< for a temperature: the meter reads ohms
+  double scale = 1.0;                      ///< what is measured over what the meter sees (a divider, a clamp)
+  double scale_tolerance_percent = 0.0;    ///< the true one is drawn inside
   double nonlinearity_percent = 0.0;  ///< beyond the specification: a sine over the range, % of full scale
 };
 
@@ -79,6 +95,18 @@ struct MeterDescription {
   double update_period_s = 0.0;  ///< free-running conversions; 0: a conversion for each query
   double integration_s = 0.1;
   double delay_s = 0.0;  ///< from the end of integration until the value can be read
+  /// A wattmeter's power is made by its voltage and its current circuit: the gain error of the power is the
+  /// sum of theirs and, where its specification leaves room, a part of its own; scaled down where theirs
+  /// together would be more than the power's specification promises. False: drawn by itself.
+  bool power_from_circuits = false;
+};
+
+/// Where a function's circuit is connected; at first as described.
+struct Wiring {
+  Quantity quantity = Quantity::voltage;
+  Port port = Port::input;
+  Node node = Node::inner;
+  bool shorted = false;  ///< its input terminals: it sees nothing and shows its own zero
 };
 
 /// What the display shows.
@@ -107,6 +135,9 @@ class Meter {
   Meter(MeterDescription description, std::uint64_t seed, std::uint64_t run);
 
   [[nodiscard]] const MeterDescription& description() const { return description_; }
+  [[nodiscard]] const Wiring& wiring(std::size_t function) const { return wiring_[function]; }
+  void wire(std::size_t function, const Wiring& wiring) { wiring_[function] = wiring; }
+  void restore_wiring();
   /// Index of a function by name; nullopt when there is none.
   [[nodiscard]] std::optional<std::size_t> find(const std::string& function) const;
 
@@ -127,11 +158,19 @@ class Meter {
 
  private:
   [[nodiscard]] double true_value(std::size_t function, const StepMeans& means) const;
+  /// As it arrives at the meter's terminals: through the shunt or the sensor, over the scale.
+  [[nodiscard]] double seen_value(std::size_t function, const StepMeans& means) const;
+  [[nodiscard]] double sensor_ohm(std::size_t function, double celsius) const;
+  /// Of a power that its circuits make; nullopt: drawn by itself.
+  [[nodiscard]] std::optional<double> circuits_gain(std::size_t power, const StepMeans& means) const;
   /// Of a shunt as warm as the current makes it; 1 where the meter reads amperes.
   [[nodiscard]] double volts_per_ampere(std::size_t function, const SignalMeans& current) const;
-  [[nodiscard]] Shown show(std::size_t function, double value, std::int64_t conversion) const;
+  /// gain  nullopt: as drawn for the function by itself
+  [[nodiscard]] Shown show(std::size_t function, double value, std::int64_t conversion,
+                           std::optional<double> gain) const;
 
   MeterDescription description_;
+  std::vector<Wiring> wiring_;  ///< by function
   std::uint64_t seed_;
   std::uint64_t run_;
   double phase_s_ = 0.0;  ///< of the free-running conversions

@@ -97,12 +97,14 @@ Simulator::Simulator(const BenchDescription& description)
 }
 
 void Simulator::gather_burdens() {
+  series_.clear();
   for (std::size_t m = 0; m < meters_.size(); ++m) {
     const auto& functions = meters_[m].description().functions;
     for (const Port port : {Port::input, Port::output}) {
       // One current circuit in a port, however many functions look at it.
       for (std::size_t f = 0; f < functions.size(); ++f) {
-        if (functions[f].port != port || !has_current_circuit(functions[f])) continue;
+        const Wiring& wiring = meters_[m].wiring(f);
+        if (wiring.port != port || wiring.shorted || !has_current_circuit(functions[f])) continue;
         const int fixed = functions[f].fixed_range;
         series_.push_back({m, f, fixed > 0 ? static_cast<std::size_t>(fixed) : 0});
         break;
@@ -116,14 +118,16 @@ void Simulator::apply_burdens() {
   for (const Port port : {Port::input, Port::output}) {
     PortBurden burden;
     for (const Series& s : series_)
-      if (meters_[s.instrument].description().functions[s.function].port == port)
+      if (meters_[s.instrument].wiring(s.function).port == port)
         burden.ammeter_ohm += meters_[s.instrument].series_ohm(s.function, s.range);
     for (const Meter& meter : meters_) {
       std::array<bool, 3> counted{};
       for (std::size_t f = 0; f < meter.description().functions.size(); ++f) {
         const MeterFunction& function = meter.description().functions[f];
-        const auto node = static_cast<std::size_t>(function.node);
-        if (function.port != port || !has_voltage_circuit(function) || counted[node]) continue;
+        const Wiring& wiring = meter.wiring(f);
+        const auto node = static_cast<std::size_t>(wiring.node);
+        if (wiring.port != port || wiring.shorted || !has_voltage_circuit(function) || counted[node])
+          continue;
         counted[node] = true;
         (node == 0   ? burden.terminals_siemens
          : node == 1 ? burden.inner_siemens
@@ -139,8 +143,8 @@ bool Simulator::range_ammeters() {
   for (Series& s : series_) {
     const MeterFunction& f = meters_[s.instrument].description().functions[s.function];
     if (f.fixed_range >= 0 || f.shunt || f.ranges.size() < 2) continue;
-    const double magnitude =
-        magnitude_of(f, f.port == Port::input ? plant_.last().input : plant_.last().output);
+    const bool at_input = meters_[s.instrument].wiring(s.function).port == Port::input;
+    const double magnitude = magnitude_of(f, at_input ? plant_.last().input : plant_.last().output) / f.scale;
     std::size_t range = s.range;
     while (range + 1 < f.ranges.size() && magnitude > f.ranges[range].full_scale) ++range;
     // Down again only well inside the lower range: its own burden moves the current.
@@ -214,6 +218,34 @@ base::Outcome<void> Simulator::turn(Knob knob, double value, double time_s) {
       break;
   }
   return {};
+}
+
+void Simulator::short_circuit(const Circuit& circuit, double time_s) {
+  advance(time_s);
+  Wiring wiring = meters_[circuit.instrument].wiring(circuit.function);
+  wiring.shorted = true;
+  meters_[circuit.instrument].wire(circuit.function, wiring);
+  gather_burdens();
+}
+
+base::Outcome<void> Simulator::tie(const Circuit& first, const Circuit& other, double time_s) {
+  const auto quantity_of = [this](const Circuit& circuit) {
+    return meters_[circuit.instrument].description().functions[circuit.function].quantity;
+  };
+  const Quantity a = quantity_of(first);
+  const Quantity b = quantity_of(other);
+  const bool both_thermometers = a >= Quantity::case_temperature && b >= Quantity::case_temperature;
+  if (a != b && !both_thermometers) return base::Refusal{"tie", "the two do not measure the same quantity"};
+  advance(time_s);
+  meters_[other.instrument].wire(other.function, meters_[first.instrument].wiring(first.function));
+  gather_burdens();
+  return {};
+}
+
+void Simulator::restore_wiring(double time_s) {
+  advance(time_s);
+  for (Meter& meter : meters_) meter.restore_wiring();
+  gather_burdens();
 }
 
 double Simulator::position(Knob knob) const {

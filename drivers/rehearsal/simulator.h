@@ -27,6 +27,19 @@ class Simulator {
   [[nodiscard]] base::Outcome<void> turn(Knob knob, double value, double time_s);
   [[nodiscard]] double position(Knob knob) const;
 
+  /// A circuit: function `function` of instrument `instrument`.
+  struct Circuit {
+    std::size_t instrument = 0;
+    std::size_t function = 0;
+  };
+  /// Its terminals are taken off the bench and shorted: it shows its own zero.
+  void short_circuit(const Circuit& circuit, double time_s);
+  /// `other` is moved to where `first` is: voltage circuits in parallel, current circuits in series (its own
+  /// place is bridged). Refusal: they measure different quantities.
+  [[nodiscard]] base::Outcome<void> tie(const Circuit& first, const Circuit& other, double time_s);
+  /// Every circuit is where the description has it.
+  void restore_wiring(double time_s);
+
   [[nodiscard]] const Meter& meter(std::size_t instrument) const { return meters_[instrument]; }
   [[nodiscard]] const History& history() const { return history_; }
   [[nodiscard]] const Plant& plant() const { return plant_; }
