@@ -42,7 +42,7 @@ class RehearsedPerson : public Person {
   void attend(const DaemonClient& daemon, const json& run) override {
     const json& prompt = run["prompt"];
     const auto id = prompt["id"].get<std::int64_t>();
-    if (prompt["kind"] == "hand") return follow_hand_prompt(daemon, prompt, id);
+    if (prompt["kind"] == "hand") return follow_hand_prompt(daemon, run, id);
     const auto answer = ask_rehearsal(control_, "typed " + prompt["channel"].get<std::string>());
     if (!answer) throw std::runtime_error{answer.refusal().text()};
     std::istringstream words{*answer};
@@ -74,14 +74,13 @@ class RehearsedPerson : public Person {
   }
 
  private:
-  void follow_hand_prompt(const DaemonClient& daemon, const json& prompt, std::int64_t id) {
+  void follow_hand_prompt(const DaemonClient& daemon, const json& run, std::int64_t id) {
+    const json& prompt = run["prompt"];
     const std::string text = prompt["text"];
     std::cout << bold(text) << "\n";
     for (const auto& caution : prompt["cautions"]) std::cout << "  ! " << caution.get<std::string>() << "\n";
-    std::string action;
-    for (const auto& step : stair_.steps) {
-      if (step.prompt == text) action = step.hand_action;
-    }
+    const auto step = static_cast<std::size_t>(run["step"].get<int>());
+    const std::string action = rehearsed_action(stair_.steps.at(step), text);
     if (!action.empty()) {
       const auto done = ask_rehearsal(control_, "hand " + action);
       if (!done) throw std::runtime_error{done.refusal().text()};

@@ -1,9 +1,11 @@
 #include "daemon/command/rehearsed_bench.h"
 
 #include <algorithm>
+#include <array>
 #include <filesystem>
 
 #include "analysis/base/unit.h"
+#include "daemon/sequencer/typed_value.h"
 
 namespace loadstair::command {
 namespace {
@@ -137,6 +139,38 @@ base::Outcome<Place> place_of(const Hookup& hookup, const setup::Channel& channe
   return place;
 }
 
+/// IEC 60751:2008, table 3: half-width at 0 degC in K, and its growth per degC.
+struct PlatinumClass {
+  const char* name;
+  double tolerance_k, per_k;
+};
+constexpr std::array<PlatinumClass, 4> kPlatinumClasses = {
+    {{"AA", 0.1, 0.0017}, {"A", 0.15, 0.002}, {"B", 0.3, 0.005}, {"C", 0.6, 0.01}}};
+
+std::optional<rehearsal::ResistanceSensor> sensor_of(const setup::Conversion& conversion) {
+  rehearsal::ResistanceSensor sensor;
+  if (const auto& platinum = conversion.platinum) {
+    sensor.r0_ohm = platinum->r0_ohm;
+    sensor.lead_ohm = platinum->lead_ohm;
+    for (const auto& one : kPlatinumClasses) {
+      if (platinum->tolerance_class != one.name) continue;
+      sensor.tolerance_k = one.tolerance_k;
+      sensor.tolerance_per_k = one.per_k;
+    }
+    return sensor;
+  }
+  if (const auto& thermistor = conversion.thermistor) {
+    sensor.r25_ohm = thermistor->r25_ohm;
+    sensor.beta_k = thermistor->beta_k;
+    sensor.a = thermistor->a;
+    sensor.b = thermistor->b;
+    sensor.c = thermistor->c;
+    sensor.tolerance_k = thermistor->tolerance_k.value_or(0.0);
+    return sensor;
+  }
+  return std::nullopt;
+}
+
 rehearsal::MeterFunction function_of(const setup::Channel& channel, const Place& place,
                                      const setup::RehearsalSection& section) {
   rehearsal::MeterFunction function;
@@ -167,6 +201,9 @@ rehearsal::MeterFunction function_of(const setup::Channel& channel, const Place&
     function.shunt = rehearsal::Shunt{shunt.resistance_ohm, shunt.tolerance_percent, shunt.tempco_ppm_per_k,
                                       shunt.rise_k_per_w};
   }
+  function.sensor = sensor_of(channel.conversion);
+  function.scale = channel.conversion.scale;
+  function.scale_tolerance_percent = channel.conversion.scale_tolerance_percent;
   return function;
 }
 
@@ -323,6 +360,10 @@ void add_queries(const setup::Instrument& instrument, const Hookup& hookup,
 
 }  // namespace
 
+std::string rehearsed_action(const setup::Step& step, const std::string& text) {
+  return text == step.prompt ? step.hand_action : text == step.rewire ? step.rewire_action : std::string{};
+}
+
 base::Outcome<rehearsal::BenchDescription> describe_rehearsal(const Hookup& hookup,
                                                               const RehearsalChoice& choice) {
   if (!hookup.rehearsal) {
@@ -350,6 +391,8 @@ base::Outcome<rehearsal::BenchDescription> describe_rehearsal(const Hookup& hook
       const auto place = place_of(hookup, channel);
       if (!place) return place.refusal();
       description.meter.functions.push_back(function_of(channel, *place, section));
+      description.meter.power_from_circuits |= channel.response == setup::Response::wattmeter;
+      bench.circuits.push_back({channel.name, instrument.name, channel.value});
       for (const auto& value : instrument.profile.values) {
         if (value.name == channel.value && description.service == rehearsal::Service::text_lines) {
           description.lines.push_back({line_of(value, channel)});
@@ -377,7 +420,8 @@ base::Outcome<rehearsal::BenchDescription> describe_rehearsal(const Hookup& hook
     meter.meter.integration_s = 0.1;
     meter.meter.functions.push_back(function_of(channel, *place, section));
     bench.instruments.push_back(meter);
-    bench.typed.push_back({channel.name, meter.name, "reading", channel.unit, 1.0, look_s, type_s});
+    bench.typed.push_back(
+        {channel.name, meter.name, "reading", sequencer::meter_unit(channel), 1.0, look_s, type_s});
   }
   return bench;
 }

@@ -7,6 +7,7 @@
 
 #include "analysis/base/outcome.h"
 #include "daemon/setup/hookup.h"
+#include "daemon/setup/stair.h"
 #include "drivers/rehearsal/bench.h"
 
 namespace loadstair::command {
@@ -23,5 +24,9 @@ struct RehearsalChoice {
 /// Refusal: the hook-up has no "rehearsal" section, or something in it that cannot be simulated (by name).
 [[nodiscard]] base::Outcome<rehearsal::BenchDescription> describe_rehearsal(const setup::Hookup& hookup,
                                                                             const RehearsalChoice& choice);
+
+/// What the rehearsed person does when a step asks for something by hand: `text` is the prompt's, either the
+/// step's own or that of its change of the wiring. Empty: nothing.
+[[nodiscard]] std::string rehearsed_action(const setup::Step& step, const std::string& text);
 
 }  // namespace loadstair::command

@@ -59,10 +59,9 @@ struct Person {
 
   asio::awaitable<void> answer(sequencer::OpenPrompt prompt) {
     if (prompt.kind == sequencer::PromptKind::hand) {
-      for (const auto& step : stair.steps) {
-        if (step.prompt == prompt.text && !step.hand_action.empty())
-          must(rehearsed.perform(step.hand_action));
-      }
+      const auto step = static_cast<std::size_t>(sequencer.snapshot().step);
+      const auto action = command::rehearsed_action(stair.steps.at(step), prompt.text);
+      if (!action.empty()) must(rehearsed.perform(action));
       if (!sequencer.answer(prompt.id, "rehearsal")) co_return;
       co_return;
     }
