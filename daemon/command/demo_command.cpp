@@ -11,6 +11,7 @@
 #include "daemon/command/commands.h"
 #include "daemon/command/daemon_client.h"
 #include "daemon/command/rehearsal_client.h"
+#include "daemon/command/rehearsed_bench.h"
 #include "daemon/command/result_text.h"
 #include "daemon/command/run_loop.h"
 #include "daemon/command/terminal.h"
