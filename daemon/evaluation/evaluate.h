@@ -14,7 +14,7 @@
 namespace loadstair::evaluation {
 
 /// Changes whenever the same record may give other figures.
-inline constexpr std::string_view kMethodVersion = "1";
+inline constexpr std::string_view kMethodVersion = "2";
 
 /// Whether each efficiency's interval is held against Monte Carlo: most of the cost of a short run. Where it
 /// is left out (a forecast's, or thousands of simulated runs), the linear interval stands.
