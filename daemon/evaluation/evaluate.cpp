@@ -8,21 +8,19 @@
 
 #include "analysis/base/number.h"
 #include "analysis/efficiency/loss_model.h"
-#include "analysis/efficiency/weighted.h"
 #include "daemon/evaluation/bench_checks.h"
 #include "daemon/evaluation/decisions.h"
+#include "daemon/evaluation/model_result.h"
 #include "daemon/evaluation/quantity.h"
 #include "daemon/evaluation/run_figures.h"
 #include "daemon/evaluation/step_result.h"
+#include "daemon/evaluation/weighted_result.h"
 
 namespace loadstair::evaluation {
 namespace {
 
 /// A step at another input voltage than the rated one belongs to another curve.
 constexpr double kSameVoltage = 0.01;
-/// Where no resolution is known, no level is weighted as if its loss were known better than this share of its
-/// power.
-constexpr double kLeastShare = 1e-6;
 
 /// Labels, with their number where one stands twice: sources of two steps must not share a key.
 std::vector<std::string> unique_names(const std::vector<store::StoredStep>& steps) {
@@ -47,80 +45,6 @@ bool on_curve(const StepOutcome& outcome, const setup::Stair& stair) {
   const Quantity& efficiency = outcome.result.efficiency;
   return outcome.kind == setup::StepKind::level && efficiency.known && efficiency.uncertainty_known &&
          at_rated_voltage(outcome.plan, stair);
-}
-
-/// q / sqrt 12 of the power's resolution, as far as the sources tell.
-double floor_of(const std::vector<efficiency::CurvePoint>& points) {
-  double floor_w = 0.0;
-  double largest_w = 0.0;
-  for (const efficiency::CurvePoint& point : points) {
-    double variance = 0.0;
-    for (const estimate::Term& term : point.loss.terms()) {
-      if (term.source->resolution) variance += term.contribution * term.contribution;
-    }
-    floor_w = std::max(floor_w, std::sqrt(variance));
-    largest_w = std::max(largest_w, std::abs(point.input_power.value()));
-  }
-  return std::max(floor_w, kLeastShare * largest_w);
-}
-
-/// Rated DC power: rated output plus the loss there (EN 50530 takes the rated AC power over the conversion
-/// efficiency where no rated DC power is given; from memory). Nullopt: no level near and no model.
-std::optional<double> rated_input(double rated_w, const std::vector<efficiency::CurvePoint>& points,
-                                  const efficiency::LossModel* model) {
-  for (const efficiency::CurvePoint& point : points) {
-    if (std::abs(point.output_power.value() - rated_w) <= efficiency::kNominalWithin * rated_w) {
-      return rated_w / point.efficiency.value();
-    }
-  }
-  if (model == nullptr || model->lack_of_fit || rated_w < model->least_w || rated_w > model->greatest_w) {
-    return std::nullopt;
-  }
-  return rated_w / model->efficiency_at(rated_w).value();
-}
-
-WeightedResult to_result(const efficiency::Weighted& weighted) {
-  WeightedResult out;
-  out.title = weighted.title;
-  out.efficiency = to_quantity(weighted.efficiency, "1");
-  for (const efficiency::WeightedUse& use : weighted.uses) {
-    out.uses.push_back({use.level.fraction, use.level.weight, use.from, to_quantity(use.efficiency, "1")});
-  }
-  return out;
-}
-
-/// European and CEC, with their sources where they can be had.
-void add_weighted(const setup::Hookup& hookup, const setup::Stair& stair, RunResult& result) {
-  const std::vector<std::string> titles = {"European efficiency", "CEC-weighted efficiency"};
-  const auto& points = result.points;
-  const auto refuse = [&](const std::string& why) {
-    for (const std::string& title : titles) result.weighted.push_back({title, missing("1", why), {}});
-  };
-  const bool inverter = std::any_of(hookup.ports.begin(), hookup.ports.end(), [](const setup::Port& port) {
-    return port.direction == setup::Direction::output && port.kind == setup::PortKind::ac;
-  });
-  if (!inverter)
-    return refuse("weighted efficiencies are defined for inverters: this bench has no AC output");
-  const double rated_w = stair.ratings.output_power_w;
-  if (!(rated_w > 0.0)) return refuse("the stair file gives no rated output power");
-  if (points.empty()) return refuse("no step has an efficiency");
-  const efficiency::LossModel* fitted = result.model_source ? &*result.model_source : nullptr;
-  const auto add = [&](efficiency::Weighted weighted) {
-    result.weighted.push_back(to_result(weighted));
-    result.weighted_sources.push_back(std::move(weighted));
-  };
-  if (const auto rated_dc_w = rated_input(rated_w, points, fitted)) {
-    add(efficiency::weighted_efficiency(efficiency::Scheme::european, *rated_dc_w, points, fitted));
-  } else {
-    result.weighted.push_back(
-        {titles[0],
-         missing("1", "the rated power was not measured, so the rated DC power is not known"),
-         {}});
-  }
-  const std::string voltage = stair.ratings.input_voltage_v > 0.0
-                                  ? base::print_number(stair.ratings.input_voltage_v) + " V"
-                                  : std::string{};
-  add(efficiency::weighted_efficiency(efficiency::Scheme::cec, rated_w, points, fitted, voltage));
 }
 
 /// For comparisons: the curve's model, what was around its points, and which meters these were.
