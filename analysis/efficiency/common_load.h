@@ -15,7 +15,8 @@ struct AtLoad {
 /// slope. load_w   above zero
 [[nodiscard]] AtLoad at_load(const ComparedRun& run, std::size_t at, double load_w);
 
-/// What other surroundings than the reference's may do to a level's loss, as a source of the other run.
+/// The other run's level in the reference's surroundings: along the slopes of the loss that are known, else
+/// with what other surroundings may do as a source of the other run.
 /// label    of the level
 [[nodiscard]] AtLoad with_surroundings(const AtLoad& other, double load_w, const Around& reference,
                                        const Around& around, const std::string& run,

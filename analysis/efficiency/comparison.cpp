@@ -18,6 +18,10 @@ namespace {
 constexpr double kRisk = 1 - estimate::kLevel;
 constexpr std::size_t kNone = static_cast<std::size_t>(-1);
 
+bool finite(const Estimate& of) {
+  return std::isfinite(of.value()) && std::isfinite(of.variance());
+}
+
 std::string watts(double value) {
   return base::print_significant(value, 4) + " W";
 }
@@ -221,6 +225,11 @@ class Comparing {
     const double ours_w = input_.reference.points[i].output_power.value();
     const double theirs_w = input_.other.points[j].output_power.value();
     if (!(ours_w > 0) || !(theirs_w > 0)) return "a level without output power has no efficiency";
+    for (const CurvePoint* point : {&input_.reference.points[i], &input_.other.points[j]}) {
+      for (const Estimate* of : {&point->output_power, &point->loss, &point->efficiency}) {
+        if (!finite(*of)) return "a figure is not finite";
+      }
+    }
     const double apart = apart_w(i, j) / input_.rated_w;
     if (!(apart <= kCommonLoadWithin)) {
       return "the loads lie " + percent(apart) + " of rated power apart (" + watts(theirs_w) + " against " +
@@ -284,6 +293,7 @@ class Comparing {
     for (const ComparedFigure& a : input_.reference.weighted) {
       for (const ComparedFigure& b : input_.other.weighted) {
         if (a.title != b.title || !a.efficiency || !b.efficiency) continue;
+        if (!finite(*a.efficiency) || !finite(*b.efficiency)) continue;
         Difference one;
         one.label = a.title;
         one.efficiency = set_apart(*b.efficiency, input_.not_common, input_.other.run) - *a.efficiency;

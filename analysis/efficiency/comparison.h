@@ -7,7 +7,7 @@
 #include <vector>
 
 #include "analysis/efficiency/between_runs.h"
-#include "analysis/efficiency/loss_model.h"
+#include "analysis/efficiency/loss_pieces.h"
 
 namespace loadstair::efficiency {
 
@@ -15,6 +15,10 @@ namespace loadstair::efficiency {
 struct Around {
   std::optional<double> input_voltage_v;  ///< magnitude; RMS on AC
   std::optional<double> ambient_c;
+  /// How the level's loss goes with them, W/V and W/K, where that was measured: then the difference is moved
+  /// along it instead of being allowed for.
+  std::optional<Estimate> loss_per_volt{};
+  std::optional<Estimate> loss_per_kelvin{};
 };
 
 /// A weighted figure of one run.
@@ -27,9 +31,9 @@ struct ComparedFigure {
 struct ComparedRun {
   std::string run;
   std::string unit;
-  std::vector<CurvePoint> points;    ///< by rising output power
-  std::vector<Around> around;        ///< one per point, or empty
-  const LossModel* model = nullptr;  ///< one with significant lack of fit is not used
+  std::vector<CurvePoint> points;  ///< by rising output power
+  std::vector<Around> around;      ///< one per point, or empty
+  std::vector<LossPiece> pieces;   ///< of fit_loss_models(); may be empty
   std::vector<ComparedFigure> weighted;
 };
 
@@ -76,11 +80,12 @@ struct Comparison {
 };
 
 /// Both runs at common loads - the mean of the two measured powers - moved there by the slope of the loss:
-/// of the model, else between neighbours, else (one level) anywhere from none to twice the loss over the
-/// power, which holds for every p0 + p1 P + p2 P^2 without negative terms. Efficiencies differ at a load that
-/// is known exactly, so that what is not known of each power moves along the slope too. A level is refused,
-/// with the reason, when the runs lie apart by more than 2 % of rated power or 2 % of the input voltage; what
-/// is left of the difference in voltage, and of ambient, enters as an uncertainty of the loss.
+/// (slope_near(): of the model of the level's piece, else between neighbours). Efficiencies differ at a load
+/// that is known exactly, so that what is not known of each power moves along the slope too. A level is
+/// refused, with the reason, when the runs lie apart by more than 2 % of rated power or 2 % of the input
+/// voltage, or a figure is not finite. The other run's loss is moved to the reference's input voltage and
+/// ambient along the slopes that either run gives (the other's own first); where none is known, the
+/// difference enters as an uncertainty of the loss.
 ///
 /// Sources of one key cancel as far as both figures follow them alike. A level is better or worse where its
 /// two-sided p by Student's t falls to 5 % by Holm's method over the levels that were compared; weighted

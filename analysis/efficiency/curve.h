@@ -16,6 +16,9 @@ struct CurvePoint {
   Estimate output_power;  ///< W
   Estimate loss;          ///< W
   Estimate efficiency;    ///< ratio
+  /// Which piece of the curve it lies on: what a fan, a burst mode or a meter's range makes a curve of its
+  /// own. Levels of one name are one piece; all empty: one curve.
+  std::string segment{};
 };
 
 /// The steps that have an efficiency, by rising output power. Steps without one are left out.

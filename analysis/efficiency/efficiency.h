@@ -4,10 +4,12 @@
 // (limits).
 #pragma once
 
-#include "analysis/efficiency/comparison.h"  // IWYU pragma: export
-#include "analysis/efficiency/curve.h"       // IWYU pragma: export
-#include "analysis/efficiency/loss_model.h"  // IWYU pragma: export
-#include "analysis/efficiency/port.h"        // IWYU pragma: export
-#include "analysis/efficiency/step.h"        // IWYU pragma: export
-#include "analysis/efficiency/trade.h"       // IWYU pragma: export
-#include "analysis/efficiency/weighted.h"    // IWYU pragma: export
+#include "analysis/efficiency/comparison.h"   // IWYU pragma: export
+#include "analysis/efficiency/curve.h"        // IWYU pragma: export
+#include "analysis/efficiency/loss_model.h"   // IWYU pragma: export
+#include "analysis/efficiency/loss_pieces.h"  // IWYU pragma: export
+#include "analysis/efficiency/peak.h"         // IWYU pragma: export
+#include "analysis/efficiency/port.h"         // IWYU pragma: export
+#include "analysis/efficiency/step.h"         // IWYU pragma: export
+#include "analysis/efficiency/trade.h"        // IWYU pragma: export
+#include "analysis/efficiency/weighted.h"     // IWYU pragma: export

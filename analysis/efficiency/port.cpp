@@ -142,14 +142,23 @@ void cross_check(const std::vector<Way>& ways, const PortReading& reading, PortP
   for (std::size_t i = 1; i < ways.size(); ++i) {
     const bool unshared =
         reading.product_less_power && ways[0].method == "wattmeter" && ways[i].method != "capture";
-    const estimate::Coverage difference =
-        estimate::coverage(unshared ? *reading.product_less_power : ways[i].power - ways[0].power);
-    if (!(std::abs(difference.value) > difference.expanded)) continue;
-    out.remarks.push_back(ways[0].method + " gives " + base::print_significant(ways[0].power.value(), 5) +
-                          " W, " + ways[i].method + " " + base::print_significant(ways[i].power.value(), 5) +
-                          " W: they differ by more than the " +
-                          base::print_significant(difference.expanded, 2) +
-                          " W that their uncertainties allow; check wiring, ranges and declarations");
+    CrossCheck check;
+    check.used = ways[0].method;
+    check.other = ways[i].method;
+    check.difference = unshared ? *reading.product_less_power : ways[i].power - ways[0].power;
+    check.allowed = estimate::coverage(check.difference).expanded;
+    check.agrees = std::abs(check.difference.value()) <= check.allowed;
+    check.text = check.used + " gives " + base::print_significant(ways[0].power.value(), 5) + " W, " +
+                 check.other + " " + base::print_significant(ways[i].power.value(), 5) + " W: ";
+    const std::string allowed = base::print_significant(check.allowed, 2) + " W";
+    if (check.agrees) {
+      check.text += "they agree within the " + allowed + " that their uncertainties allow";
+    } else {
+      check.text += "they differ by more than the " + allowed +
+                    " that their uncertainties allow; check wiring, ranges and declarations";
+      out.remarks.push_back(check.text);
+    }
+    out.cross_checks.push_back(std::move(check));
   }
 }
 

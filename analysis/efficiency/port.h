@@ -76,6 +76,15 @@ struct PortReading {
 /// From good to worse.
 enum class PowerState { measured, apparent_only, missing };
 
+/// One port's power had in two ways, before corrections.
+struct CrossCheck {
+  std::string used, other;  ///< "wattmeter", "V x I x PF"
+  Estimate difference;      ///< other less used, W
+  double allowed = 0;       ///< half-width of the difference's 95 % interval, W
+  bool agrees = true;       ///< |difference| <= allowed
+  std::string text;         ///< for a person
+};
+
 /// One port's power at the reference plane.
 struct PortPower {
   std::string port;
@@ -91,8 +100,9 @@ struct PortPower {
   std::optional<Estimate>
       correction;  ///< corrected minus uncorrected power, W; nullopt where nothing applies
   std::vector<std::string>
-      correction_texts;              ///< "voltmeter burden -0.016 W", "ammeter drop ...", "leads ..."
-  std::vector<std::string> remarks;  ///< disagreement of two ways, undeclared sensing that matters, ...
+      correction_texts;                  ///< "voltmeter burden -0.016 W", "ammeter drop ...", "leads ..."
+  std::vector<CrossCheck> cross_checks;  ///< the way that was used against each other one
+  std::vector<std::string> remarks;      ///< disagreement of two ways, undeclared sensing that matters, ...
 };
 
 /// Power at the reference plane, corrected for burden and leads.

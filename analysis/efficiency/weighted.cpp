@@ -1,8 +1,8 @@
 #include "analysis/efficiency/weighted.h"
 
+#include <algorithm>
 #include <array>
 #include <cmath>
-#include <optional>
 #include <utility>
 
 #include "analysis/base/number.h"
@@ -16,33 +16,8 @@ constexpr std::array<WeightedLevel, 6> kEuropean{
 constexpr std::array<WeightedLevel, 6> kCec{
     {{0.10, 0.04}, {0.20, 0.05}, {0.30, 0.12}, {0.50, 0.21}, {0.75, 0.53}, {1.00, 0.05}}};
 
-/// Output power at which the model's input power is that; Newton on P + loss(P), which rises smoothly.
-std::optional<double> output_for_input(const LossModel& model, double input_w) {
-  double p = input_w;
-  for (int i = 0; i < 50; ++i) {
-    const double slope = 1 + model.slope_at(p).value();
-    if (!(slope > 0)) return std::nullopt;
-    const double step = (p + model.loss_at(p).value() - input_w) / slope;
-    p -= step;
-    if (std::abs(step) <= 1e-12 * input_w) return p;
-  }
-  return std::nullopt;
-}
-
 double basis_w(Scheme scheme, const CurvePoint& point) {
   return scheme == Scheme::european ? point.input_power.value() : point.output_power.value();
-}
-
-/// d loss / d P_out near a level: from the model, else between its neighbours (no model, or one that does not
-/// fit).
-std::optional<Estimate> loss_slope(std::span<const CurvePoint> points, std::size_t at,
-                                   const LossModel* model) {
-  if (model != nullptr) return model->slope_at(points[at].output_power.value());
-  const std::size_t low = at == 0 ? 0 : at - 1;
-  const std::size_t high = at + 1 < points.size() ? at + 1 : at;
-  const Estimate run = points[high].output_power - points[low].output_power;
-  if (!(run.value() > 0)) return std::nullopt;
-  return (points[high].loss - points[low].loss) / run;
 }
 
 /// Nominal minus measured efficiency of a level moved along its loss slope, sources kept.
@@ -69,46 +44,44 @@ std::size_t nearest(Scheme scheme, std::span<const CurvePoint> points, double no
   return out;
 }
 
-base::Outcome<WeightedUse> from_model(Scheme scheme, const WeightedLevel& level, double nominal_w,
-                                      const LossModel* model, const std::string& place) {
-  if (model == nullptr)
-    return base::Refusal{place, "no measured level within 2 % of rated, and no loss model"};
-  const auto output_w =
-      scheme == Scheme::european ? output_for_input(*model, nominal_w) : std::optional<double>{nominal_w};
-  if (!output_w || *output_w < model->least_w || *output_w > model->greatest_w) {
-    return base::Refusal{place,
-                         "no measured level within 2 % of rated, and it lies outside the measured span"};
+/// A level that was not measured, from the curve.
+base::Outcome<WeightedUse> from_curve(Scheme scheme, const WeightedLevel& level, double nominal_w,
+                                      const LossCurve& curve, const std::string& place, double within) {
+  const bool european = scheme == Scheme::european;
+  const auto there = loss_there(curve, nominal_w, european ? Basis::input_power : Basis::output_power);
+  if (!there) {
+    return base::Refusal{
+        place, "no measured level within " + percent(within) + " of rated, and " + there.refusal().reason};
   }
-  WeightedUse use{level, "loss model", {}, {}, false};
-  if (scheme == Scheme::cec) {
-    use.efficiency = model->efficiency_at(*output_w);
+  WeightedUse use{level, there->by_model ? "loss model" : "between its neighbours", {}, {}, false};
+  const double output_w = there->output_power_w;
+  if (!european) {
+    use.efficiency = output_w / (output_w + there->loss);
     return use;
   }
   // At fixed input N: d P_out = -d loss / (1 + loss'), eta = P_out / N.
-  const double slope = model->slope_at(*output_w).value();
-  const Estimate loss = model->loss_at(*output_w);
-  use.efficiency = estimate::combine(*output_w / nominal_w, {{loss, -1 / ((1 + slope) * nominal_w)}});
+  use.efficiency =
+      estimate::combine(output_w / nominal_w, {{there->loss, -1 / ((1 + there->slope) * nominal_w)}});
   return use;
 }
 
 base::Outcome<WeightedUse> use_of(Scheme scheme, const WeightedLevel& level, double rated_w,
-                                  std::span<const CurvePoint> points, const LossModel* model) {
+                                  const LossCurve& curve, double within) {
   const std::string place = "level " + percent(level.fraction);
   const double nominal_w = level.fraction * rated_w;
-  if (points.empty()) return base::Refusal{place, "no level was measured"};
-  const std::size_t at = nearest(scheme, points, nominal_w);
-  const CurvePoint& point = points[at];
+  if (curve.points.empty()) return base::Refusal{place, "no level was measured"};
+  const std::size_t at = nearest(scheme, curve.points, nominal_w);
+  const CurvePoint& point = curve.points[at];
   const double off = std::abs(basis_w(scheme, point) - nominal_w) / rated_w;
-  if (off > kNominalWithin) return from_model(scheme, level, nominal_w, model, place);
+  if (!(off <= std::max(within, kNominalEqual)))
+    return from_curve(scheme, level, nominal_w, curve, place, within);
   WeightedUse use{level, point.label, point.efficiency, Estimate{}, false};
   if (off <= kNominalEqual) return use;
-  const auto slope = loss_slope(points, at, model);
-  if (!slope) {
-    return base::Refusal{place, "measured at " + percent(basis_w(scheme, point) / rated_w) +
-                                    " of rated, and a single level has no slope to move it by"};
+  if (!(point.output_power.value() > 0)) {
+    return base::Refusal{place, "the level measured there has no output power"};
   }
   use.moved = true;
-  use.shift = shift_of(scheme, nominal_w, point, *slope);
+  use.shift = shift_of(scheme, nominal_w, point, slope_near(curve, at));
   use.efficiency = point.efficiency + use.shift;
   return use;
 }
@@ -120,8 +93,8 @@ std::span<const WeightedLevel> levels(Scheme scheme) {
                                     : std::span<const WeightedLevel>{kCec};
 }
 
-Weighted weighted_efficiency(Scheme scheme, double rated_w, std::span<const CurvePoint> points,
-                             const LossModel* model, std::string_view voltage) {
+Weighted weighted_efficiency(Scheme scheme, double rated_w, const LossCurve& curve, std::string_view voltage,
+                             double within) {
   Weighted out;
   out.title = scheme == Scheme::european ? "European efficiency" : "CEC-weighted";
   if (!voltage.empty()) out.title += " at " + std::string{voltage};
@@ -129,11 +102,10 @@ Weighted weighted_efficiency(Scheme scheme, double rated_w, std::span<const Curv
     out.efficiency = base::Refusal{out.title, "the rated power is not declared or not above zero"};
     return out;
   }
-  const LossModel* usable = model != nullptr && !model->lack_of_fit ? model : nullptr;
   std::vector<std::string> refused;
   Estimate sum;
   for (const WeightedLevel& level : levels(scheme)) {
-    auto use = use_of(scheme, level, rated_w, points, usable);
+    auto use = use_of(scheme, level, rated_w, curve, within);
     if (!use) {
       refused.push_back(use.refusal().text());
       continue;
@@ -149,6 +121,15 @@ Weighted weighted_efficiency(Scheme scheme, double rated_w, std::span<const Curv
   for (const std::string& one : refused) reason += (reason.empty() ? "" : "; ") + one;
   out.efficiency = base::Refusal{out.title, reason};
   return out;
+}
+
+Weighted weighted_efficiency(Scheme scheme, double rated_w, std::span<const CurvePoint> points,
+                             const LossModel* model, std::string_view voltage) {
+  std::vector<CurvePoint> whole{points.begin(), points.end()};
+  for (CurvePoint& point : whole) point.segment.clear();
+  std::vector<LossPiece> pieces;
+  if (model != nullptr) pieces.push_back({"", points.size(), *model, ""});
+  return weighted_efficiency(scheme, rated_w, LossCurve{"", whole, pieces}, voltage);
 }
 
 Weighted cec_over_voltages(std::span<const Weighted> by_voltage) {

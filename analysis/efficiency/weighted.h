@@ -5,7 +5,7 @@
 #include <string>
 #include <vector>
 
-#include "analysis/efficiency/loss_model.h"
+#include "analysis/efficiency/loss_pieces.h"
 
 namespace loadstair::efficiency {
 
@@ -28,7 +28,7 @@ struct WeightedLevel {
 /// How one nominal level was had.
 struct WeightedUse {
   WeightedLevel level;
-  std::string from;     ///< label of the step, or "loss model"
+  std::string from;     ///< label of the step, "loss model", or "between A and B" where no model may speak
   Estimate efficiency;  ///< at the nominal level, ratio
   Estimate shift;       ///< nominal minus measured efficiency, ratio; zero where nothing was moved
   bool moved = false;
@@ -44,11 +44,16 @@ inline constexpr double kNominalWithin = 0.02;  ///< of rated: moved by the loss
 inline constexpr double kNominalEqual = 1e-6;   ///< of rated: taken as it is
 
 /// The weighted conversion efficiency of one run at one input voltage. A level within 2 % of rated of a
-/// measured one is moved there by the loss model's slope; farther ones come from the model inside its span;
-/// the rest refuses the whole, with the level and the reason. Tracking is not included. rated_w  rated DC
-/// power (European) or rated AC output power (CEC), W, above 0 points   by rising output power model nullptr
-/// where no model was fitted; one with significant lack of fit is not used voltage  printed in the title of a
-/// CEC figure at a single voltage ("385 V"); may be empty
+/// measured one is moved there by the loss's slope (slope_near()); farther ones come from the curve inside
+/// its measured span (loss_there(): the model of the piece they lie on, else its neighbours); the rest
+/// refuses the whole, with the level and the reason. Tracking is not included. rated_w  rated DC power
+/// (European) or rated AC output power (CEC), W, above 0 voltage  printed in the title of a CEC figure at a
+/// single voltage ("385 V"); may be empty
+/// within  in place of the 2 %, share of rated; at least kNominalEqual
+[[nodiscard]] Weighted weighted_efficiency(Scheme scheme, double rated_w, const LossCurve& curve,
+                                           std::string_view voltage = {}, double within = kNominalWithin);
+
+/// The same of a curve in one piece. model  nullptr where none was fitted: then nothing comes from the curve
 [[nodiscard]] Weighted weighted_efficiency(Scheme scheme, double rated_w, std::span<const CurvePoint> points,
                                            const LossModel* model, std::string_view voltage = {});
 

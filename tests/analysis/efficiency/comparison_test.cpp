@@ -210,12 +210,10 @@ TEST_CASE("levels are moved to a common load along the loss") {
     theirs.push_back(bench.level("2", load_w - 2.4, loss(load_w - 2.4)));
     theirs.back().label = ours.back().label;
   }
-  const auto model_a = efficiency::fit_loss_model(ours, 0.001);
-  const auto model_b = efficiency::fit_loss_model(theirs, 0.001);
-  REQUIRE((model_a && model_b));
   ComparisonInput input{run_of("1", "", ours), run_of("2", "", theirs), kRated, {}, false};
-  input.reference.model = &*model_a;
-  input.other.model = &*model_b;
+  input.reference.pieces = efficiency::fit_loss_models(ours, 0.001);
+  input.other.pieces = efficiency::fit_loss_models(theirs, 0.001);
+  REQUIRE((input.reference.pieces.front().usable() && input.other.pieces.front().usable()));
   const auto moved = efficiency::compare(input);
   REQUIRE(moved);
   for (const auto& level : moved->levels) {
@@ -228,8 +226,8 @@ TEST_CASE("levels are moved to a common load along the loss") {
     CHECK(says(level.text, "run 2 against run 1 at "));
   }
   // Without a model the neighbours' slope is coarser, and says so by its interval.
-  input.reference.model = nullptr;
-  input.other.model = nullptr;
+  input.reference.pieces.clear();
+  input.other.pieces.clear();
   const auto coarse = efficiency::compare(input);
   REQUIRE(coarse);
   for (std::size_t i = 0; i < coarse->levels.size(); ++i) {

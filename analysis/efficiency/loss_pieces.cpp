@@ -1,0 +1,243 @@
+#include "analysis/efficiency/loss_pieces.h"
+
+#include <algorithm>
+#include <cmath>
+#include <set>
+#include <utility>
+
+#include "analysis/base/number.h"
+#include "analysis/estimate/sharing.h"
+
+namespace loadstair::efficiency {
+
+namespace {
+
+double basis_w(const CurvePoint& point, Basis basis) {
+  return basis == Basis::output_power ? point.output_power.value() : point.input_power.value();
+}
+
+std::string watts(double value) {
+  return base::print_significant(value, 4) + " W";
+}
+
+/// Index of the first of the two neighbouring levels that enclose a power; a level's own power belongs to a
+/// neighbour of its own piece, if there is one.
+base::Outcome<std::size_t> enclosing(const LossCurve& curve, double power_w, Basis basis) {
+  const std::string place = watts(power_w);
+  std::optional<std::size_t> between_pieces;
+  for (std::size_t i = 0; i + 1 < curve.points.size(); ++i) {
+    const CurvePoint& low = curve.points[i];
+    const CurvePoint& high = curve.points[i + 1];
+    if (!(basis_w(low, basis) <= power_w && power_w <= basis_w(high, basis))) continue;
+    if (low.segment == high.segment) return i;
+    between_pieces = i;
+  }
+  if (!between_pieces) return base::Refusal{place, "it lies outside the measured span"};
+  const auto called = [&](std::size_t i) {
+    const std::string& name = curve.points[i].segment;
+    return name.empty() ? std::string{"unnamed"} : "\"" + name + "\"";
+  };
+  return base::Refusal{place, "it lies between two pieces of the curve, " + called(*between_pieces) +
+                                  " and " + called(*between_pieces + 1)};
+}
+
+/// The level next to `at`, down or up, where it is on the same piece and at another power.
+std::optional<std::size_t> next_to(const LossCurve& curve, std::size_t at, bool up) {
+  if (up ? at + 1 >= curve.points.size() : at == 0) return std::nullopt;
+  const std::size_t next = up ? at + 1 : at - 1;
+  const double apart = curve.points[next].output_power.value() - curve.points[at].output_power.value();
+  if (curve.points[next].segment != curve.points[at].segment || !((up ? apart : -apart) > 0))
+    return std::nullopt;
+  return next;
+}
+
+Estimate chord(const CurvePoint& low, const CurvePoint& high) {
+  return (high.loss - low.loss) / (high.output_power - low.output_power);
+}
+
+/// What bends a loss between two levels.
+struct Bend {
+  Estimate curvature;  ///< second divided difference, W/W^2
+  double half_width_w = 0;
+};
+
+/// Of the two levels and the next one, lower or higher; `apart_w` from the outer level to the far one of the
+/// two.
+struct Triple {
+  Estimate curvature;
+  double apart_w = 0;
+};
+
+std::optional<Triple> triple(const LossCurve& curve, std::size_t low, bool up) {
+  const auto next = next_to(curve, up ? low + 1 : low, up);
+  if (!next) return std::nullopt;
+  const auto& points = curve.points;
+  const CurvePoint& first = up ? points[low] : points[*next];
+  const CurvePoint& middle = up ? points[low + 1] : points[low];
+  const CurvePoint& last = up ? points[*next] : points[low + 1];
+  const Estimate apart = last.output_power - first.output_power;
+  return Triple{(chord(middle, last) - chord(first, middle)) / apart, apart.value()};
+}
+
+/// What the loss does between levels `low` and `low` + 1, `reach` = (P - P0)(P1 - P) into it.
+Bend bend_between(const LossCurve& curve, std::size_t low, double reach) {
+  const double h = curve.points[low + 1].output_power.value() - curve.points[low].output_power.value();
+  const auto below = triple(curve, low, false);
+  const auto above = triple(curve, low, true);
+  if (below && above) {
+    const Estimate mean = 0.5 * (below->curvature + above->curvature);
+    const double unlike = std::abs(below->curvature.value() - above->curvature.value());
+    const double step_w = unlike * h / (1 / below->apart_w + 1 / above->apart_w);
+    return {mean, step_w / 2 + std::abs(mean.value()) * reach / 2};
+  }
+  if (below || above) {
+    const Triple& only = below ? *below : *above;
+    const double curvature = std::abs(only.curvature.value());
+    return {only.curvature, curvature * h * only.apart_w / 2 + curvature * reach};
+  }
+  // Between none and the most that the family without negative terms can bend.
+  const double sum_w = curve.points[low].output_power.value() + curve.points[low + 1].output_power.value();
+  const double most = sum_w > 0 ? chord(curve.points[low], curve.points[low + 1]).value() / sum_w : 0;
+  return {Estimate{most / 2}, std::abs(most) * reach / 2};
+}
+
+/// Between levels `low` and `low` + 1, which lie at different powers of one piece.
+LossThere interpolated(const LossCurve& curve, std::size_t low, double power_w) {
+  const CurvePoint& first = curve.points[low];
+  const CurvePoint& second = curve.points[low + 1];
+  const Estimate slope = chord(first, second);
+  const double reach = (power_w - first.output_power.value()) * (second.output_power.value() - power_w);
+  const Bend bend = bend_between(curve, low, reach);
+  const auto source = estimate::make_type_b(
+      estimate::key::window(curve.run, first.label + " to " + second.label,
+                            "interpolation at " + base::print_significant(power_w, 9)),
+      "interpolation between " + first.label + " and " + second.label, estimate::Distribution::rectangular);
+  LossThere out;
+  out.output_power_w = power_w;
+  out.by_model = false;
+  out.slope = slope.value();
+  out.loss = first.loss + slope * (power_w - first.output_power) -
+             bend.curvature * ((power_w - first.output_power) * (second.output_power - power_w)) +
+             estimate::bounded(-bend.half_width_w, bend.half_width_w, source);
+  return out;
+}
+
+/// Output power between two levels at which output plus loss is that; both grow, so bisection finds it.
+template <class LossAt>
+double output_for_input(double low_w, double high_w, double input_w, LossAt loss_at) {
+  for (int i = 0; i < 200 && high_w - low_w > 1e-14 * high_w; ++i) {
+    const double middle = (low_w + high_w) / 2;
+    (middle + loss_at(middle) < input_w ? low_w : high_w) = middle;
+  }
+  return (low_w + high_w) / 2;
+}
+
+}  // namespace
+
+void split_by_range(std::span<CurvePoint> points) {
+  std::vector<std::set<std::string>> ranges;
+  for (const CurvePoint& point : points) {
+    std::set<std::string>& own = ranges.emplace_back();
+    for (const Estimate* of : {&point.input_power, &point.output_power}) {
+      for (const estimate::Term& term : of->terms()) {
+        const estimate::Owner& owner = term.source->owner;
+        if (!estimate::meter_part_of(*term.source).empty() && !owner.range.empty())
+          own.insert(owner.instrument + " on " + owner.range);
+      }
+    }
+  }
+  const auto everywhere = [&](const std::string& range) {
+    return std::all_of(ranges.begin(), ranges.end(), [&](const auto& own) { return own.count(range) > 0; });
+  };
+  for (std::size_t i = 0; i < points.size(); ++i) {
+    for (const std::string& range : ranges[i]) {
+      if (everywhere(range)) continue;
+      points[i].segment += (points[i].segment.empty() ? "" : ", ") + range;
+    }
+  }
+}
+
+std::vector<LossPiece> fit_loss_models(std::span<const CurvePoint> points, double floor_w) {
+  std::vector<LossPiece> out;
+  for (const CurvePoint& point : points) {
+    const auto known = std::any_of(out.begin(), out.end(),
+                                   [&](const LossPiece& piece) { return piece.segment == point.segment; });
+    if (known) continue;
+    std::vector<CurvePoint> own;
+    std::copy_if(points.begin(), points.end(), std::back_inserter(own),
+                 [&](const CurvePoint& one) { return one.segment == point.segment; });
+    LossPiece& piece = out.emplace_back();
+    piece.segment = point.segment;
+    piece.levels = own.size();
+    if (auto model = fit_loss_model(own, floor_w)) {
+      piece.model = *std::move(model);
+    } else {
+      piece.why = model.refusal().text();
+    }
+  }
+  return out;
+}
+
+const LossPiece* piece_of(const LossCurve& curve, const CurvePoint& point) {
+  for (const LossPiece& piece : curve.pieces) {
+    if (piece.segment == point.segment) return &piece;
+  }
+  return nullptr;
+}
+
+base::Outcome<const LossPiece*> piece_around(const LossCurve& curve, double power_w, Basis basis) {
+  if (curve.pieces.empty()) return base::Refusal{watts(power_w), "there is no loss model"};
+  const auto low = enclosing(curve, power_w, basis);
+  if (!low) return low.refusal();
+  const LossPiece* piece = piece_of(curve, curve.points[*low]);
+  if (piece == nullptr) return base::Refusal{watts(power_w), "there is no loss model"};
+  return piece;
+}
+
+Estimate slope_near(const LossCurve& curve, std::size_t at) {
+  const CurvePoint& point = curve.points[at];
+  const LossPiece* piece = piece_of(curve, point);
+  if (piece != nullptr && piece->usable() != nullptr)
+    return piece->usable()->slope_at(point.output_power.value());
+  const auto source =
+      estimate::make_type_b(estimate::key::window(curve.run, point.label, "slope of the loss"),
+                            "slope of the loss at " + point.label, estimate::Distribution::rectangular);
+  const auto below = next_to(curve, at, false);
+  const auto above = next_to(curve, at, true);
+  if (!below && !above)
+    return estimate::bounded(0, 2 * point.loss.value() / point.output_power.value(), source);
+  const Estimate slope = chord(curve.points[below.value_or(at)], curve.points[above.value_or(at)]);
+  // The curve bends between the levels. At an end the tangent of p0 + p1 P + p2 P^2 without negative terms is
+  // off the secant by no more than the secant itself; elsewhere both sides' secants bound it.
+  double bend = std::abs(slope.value());
+  if (below && above) {
+    bend =
+        std::abs(chord(point, curve.points[*above]).value() - chord(curve.points[*below], point).value()) / 2;
+  }
+  return slope + estimate::bounded(-bend, bend, source);
+}
+
+base::Outcome<LossThere> loss_there(const LossCurve& curve, double power_w, Basis basis) {
+  const auto piece = piece_around(curve, power_w, basis);
+  if (!piece) return piece.refusal();
+  const std::size_t low = *enclosing(curve, power_w, basis);
+  const double low_w = curve.points[low].output_power.value();
+  const double high_w = curve.points[low + 1].output_power.value();
+  if (!(low_w < high_w)) return base::Refusal{watts(power_w), "the levels around it are at one power"};
+  const LossModel* model = (*piece)->usable();
+  const auto there = [&](double output_w) {
+    if (model == nullptr) return interpolated(curve, low, output_w);
+    return LossThere{output_w, model->loss_at(output_w), model->slope_at(output_w).value(), true};
+  };
+  if (basis == Basis::output_power) return there(power_w);
+  // A model need not go through the levels: the output may lie a little beyond them.
+  const double beyond_w = high_w - low_w;
+  const double output_w =
+      model == nullptr
+          ? output_for_input(low_w, high_w, power_w, [&](double p) { return there(p).loss.value(); })
+          : output_for_input(std::max(0.0, low_w - beyond_w), high_w + beyond_w, power_w,
+                             [&](double p) { return there(p).loss.value(); });
+  return there(output_w);
+}
+
+}  // namespace loadstair::efficiency
