@@ -92,8 +92,16 @@ awaitable<Go> Sequencer::State::bring_up(const setup::Step& plan) {
   } else if (switches) {
     blank_guards();
   }
-  watch_lower_limits(!dead);
+  // Where it was dead, a prompt of this step may be what brings it alive: then not before the prompt is
+  // answered.
+  if (dead || !output_was_dead || plan.prompt.empty()) watch_lower_limits(!dead);
   co_return Go::on;
+}
+
+/// Set points and hands have done their part: the output is as the step wants it.
+void Sequencer::State::output_is_up(const setup::Step& plan) {
+  output_was_dead = output_is_dead(plan);
+  watch_lower_limits(!output_was_dead);
 }
 
 /// The set points of what is still off are there before its power is: a load that holds an earlier one would
@@ -113,9 +121,9 @@ awaitable<Go> Sequencer::State::switch_on_all(const std::vector<std::string>& wa
   std::copy_if(plan.set.begin(), plan.set.end(), std::back_inserter(points),
                [&names](const auto& point) { return has(names, point.control); });
   enter(StepPhase::start, "sets and reads back what is to hold before the power comes on");
-  if (const auto go = co_await apply_all(points, step_index == 0 ? -1 : step_index); go != Go::on) {
-    co_return go;
-  }
+  // What is set before the first step belongs to the start.
+  const std::int32_t of_step = step_index == 0 ? -1 : step_index;
+  if (const auto go = co_await apply_all(points, of_step); go != Go::on) co_return go;
   std::stable_sort(controls.begin(), controls.end(), [](const auto& a, const auto& b) {
     return switch_on_rank(a.role) < switch_on_rank(b.role);
   });

@@ -212,6 +212,7 @@ awaitable<Go> Sequencer::State::run_step(std::int32_t index) {
     }
   }
   if (go != Go::on) co_return go;
+  output_is_up(plan);
   do {
     go = co_await measure(plan);
   } while (go == Go::again);

@@ -177,6 +177,7 @@ Outcome<store::RunId> Sequencer::State::start(setup::Stair new_stair) {
   owed_rewire.clear();
   guards.clear();
   guards_armed = false;
+  output_was_dead = false;
   for (const auto& guard : stair.guards) {
     const auto channel = bench.find_channel(guard.channel);
     if (!channel) continue;  // match() refuses such a stair

@@ -89,6 +89,7 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   boost::asio::awaitable<Go> switch_off_all_but(const std::vector<std::string>& wanted);
   boost::asio::awaitable<Go> switch_off(const std::vector<std::string>& controls);
   boost::asio::awaitable<Go> rewire();
+  void output_is_up(const setup::Step& plan);
   void owe_rewire(const setup::Step& plan);
 
   // --- prompts.cpp
@@ -169,6 +170,7 @@ struct Sequencer::State : std::enable_shared_from_this<Sequencer::State> {
   // guards
   std::vector<Guarded> guards;
   bool guards_armed = false;
+  bool output_was_dead = false;  ///< in the last step that came to its soak
   std::vector<Trip> trips;
 
   // prompts

@@ -230,6 +230,25 @@ TEST_CASE("guards on a dead bench: no lower limit, everything else") {
     CHECK(bench.now().phase == RunPhase::done);
     CHECK(bench.now().trips.empty());
   }
+  SECTION("nor before the hand that switches the converter on") {
+    bench.run_to(StepPhase::average, 1);
+    REQUIRE(bench.sequencer->stop("another stair").ok());
+    bench.run_to_end();
+    stair.steps[2].prompt = "Switch the converter on.";
+    bench.start(stair);
+    bench.run_to(StepPhase::prompt, 2);
+    bench.run_for(20);
+    CHECK(bench.now().phase == RunPhase::running);
+    CHECK(bench.now().trips.empty());
+    bench.world.voltage.reset();
+    bench.run_for(0.3);
+    REQUIRE(bench.sequencer->answer(bench.now().prompt->id, "test").ok());
+    bench.run_to(StepPhase::average, 2);
+    CHECK(bench.now().guards[0].below == 195.0);
+    bench.world.voltage = 100.0;
+    bench.run_to_end();
+    CHECK_THAT(bench.now().reason, Catch::Contains("below 195 V"));
+  }
   SECTION("an upper limit at a zero") {
     bench.run_to(StepPhase::average, 0);
     bench.world.heat_c = 95;
