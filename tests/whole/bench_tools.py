@@ -120,7 +120,8 @@ class Bench:
             return self.call("runs", {"stair": text.read(), "file": stair})["run"]
 
     def attend(self):
-        """Answers whatever is asked, once; returns the state of the run."""
+        """Answers whatever is asked, once; returns the state of the run. The one hand prompt of short.stair.json is
+        about two lamps."""
         run = self.call("state")["run"]
         prompt = run["prompt"]
         if prompt and prompt["kind"] == "hand":

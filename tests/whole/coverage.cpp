@@ -44,11 +44,15 @@ double implied_half_width(const setup::Hookup& hookup, const rehearsal::Truth& t
 std::vector<CoveragePoint> cover(const setup::Hookup& hookup, const setup::Stair& stair, std::uint64_t first,
                                  std::uint64_t seeds) {
   std::vector<CoveragePoint> points;
+  std::vector<std::size_t> levels;
+  for (std::size_t i = 0; i < stair.steps.size(); ++i) {
+    if (stair.steps[i].kind == setup::StepKind::level) levels.push_back(i);
+  }
   for (std::uint64_t i = 0; i < seeds; ++i) {
     VirtualChoice choice;
     choice.seed = first + i;
     const VirtualRun run = run_virtually(hookup, stair, choice);
-    const std::size_t step = i % stair.steps.size();
+    const std::size_t step = levels.at(i % levels.size());
     const auto& result = run.result.steps.at(step);
     const auto& truth = run.truths.at(step);
     CoveragePoint point;

@@ -106,7 +106,10 @@ setup::Hookup bench() {
 /// Three steps of the sample stair, without their long waits.
 setup::Stair short_stair() {
   auto stair = sample_stair();
-  stair.steps = {stair.steps.at(2), stair.steps.at(4), stair.steps.at(5)};
+  std::erase_if(stair.steps, [](const setup::Step& step) {
+    return step.label != "20 %" && step.label != "50 %" && step.label != "75 %";
+  });
+  REQUIRE(stair.steps.size() == 3);
   for (auto& step : stair.steps) {
     step.thermal.reset();
     REQUIRE(step.electrical);

@@ -23,6 +23,7 @@ int main(int argc, char** argv) {
     const auto& step = run.result.steps[i];
     const nlohmann::json line = {
         {"label", step.label},
+        {"kind", step.kind},
         {"efficiency", step.efficiency.known ? nlohmann::json(step.efficiency.value) : nullptr},
         {"low", step.efficiency.low},
         {"high", step.efficiency.high},

@@ -24,6 +24,8 @@ def main():
                    subprocess.run([twin, str(seed)], check=True, capture_output=True, text=True).stdout.splitlines()]
         assert [step["label"] for step in shown["steps"]] == [step["label"] for step in virtual]
         for real, twin_step in zip(shown["steps"], virtual):
+            if real["kind"] not in ("level", "closure"):
+                continue
             # The error of each, result minus truth: the same meters with the same drawn errors made both.
             error = real["efficiency"]["value"] - truth[real["label"]]
             twin_error = twin_step["efficiency"] - twin_step["true_efficiency"]

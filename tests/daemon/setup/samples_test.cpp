@@ -49,26 +49,35 @@ TEST_CASE("the Marten's bench and stair load and fit") {
         std::vector<std::pair<std::string, double>>{{"voltage", 385}, {"current", 3}});
   REQUIRE(bench.rehearsal);
   CHECK(bench.rehearsal->converter.at("no_load_w") == 6.5);
-  CHECK(plan.steps.size() == 8);
-  CHECK(plan.steps[2].label == "20 %");
-  CHECK(plan.steps[2].load_w == 120.0);
-  CHECK(plan.steps[2].set[0].value == 120.0);
-  CHECK(plan.steps[2].thermal->by_prediction);
-  CHECK(plan.steps[7].label == "lamps 120 W");
+  REQUIRE(plan.steps.size() == 14);
+  CHECK(plan.steps[0].label == "zero before");
+  CHECK(plan.steps[1].label == "standby");
+  CHECK(plan.steps[2].label == "no load");
+  CHECK(plan.steps[5].label == "20 %");
+  CHECK(plan.steps[5].load_w == 120.0);
+  CHECK(plan.steps[5].set[0].value == 120.0);
+  CHECK(plan.steps[5].thermal->by_prediction);
+  CHECK(plan.steps[10].label == "lamps 120 W");
+  CHECK(plan.steps[12].kind == StepKind::closure);
+  CHECK(plan.steps[12].set[0].value == 300.0);
+  CHECK(plan.steps[13].label == "zero after");
+  CHECK(plan.limits.size() == 4);
   CHECK(plan.guards[2].action == GuardAction::hold);
 }
 
 TEST_CASE("the Stoat's stair goes over its levels at each input voltage") {
   const Stair plan = stair("stoat.stair.json");
   CHECK(match(plan, hookup("stoat.hookup.json")).ok());
-  REQUIRE(plan.steps.size() == 10);
-  CHECK(plan.steps[0].label == "10 % at 44 V");
-  CHECK(plan.steps[9].label == "100 % at 54 V");
-  REQUIRE(plan.steps[9].set.size() == 2);
-  CHECK(plan.steps[9].set[0].control == "source");
-  CHECK(plan.steps[9].set[0].value == 54.0);
+  REQUIRE(plan.steps.size() == 12);
+  CHECK(plan.steps[0].kind == StepKind::tie);
+  CHECK(plan.steps[1].label == "tie voltmeters, 12.5 V");
+  CHECK(plan.steps[2].label == "10 % at 44 V");
+  CHECK(plan.steps[11].label == "100 % at 54 V");
+  REQUIRE(plan.steps[11].set.size() == 2);
+  CHECK(plan.steps[11].set[0].control == "source");
+  CHECK(plan.steps[11].set[0].value == 54.0);
   // 240 W at 12 V.
-  CHECK(plan.steps[9].set[1].value == Approx(20.0));
+  CHECK(plan.steps[11].set[1].value == Approx(20.0));
 }
 
 TEST_CASE("the Stoat's undeclared output lead is not passed over in silence") {
