@@ -19,7 +19,7 @@ efficiency::ComparedRun compared(const RunResult& run) {
   out.unit = run.unit;
   out.points = run.points;
   out.around = run.around;
-  out.model = run.model_source ? &*run.model_source : nullptr;
+  out.pieces = run.pieces;
   for (const efficiency::Weighted& one : run.weighted_sources)
     out.weighted.push_back({one.title, one.efficiency});
   return out;

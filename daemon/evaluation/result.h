@@ -112,6 +112,7 @@ struct WeightedResult {
     double fraction = 0.0, weight = 0.0;
     std::string from;
     Quantity efficiency;
+    std::optional<Quantity> shift;  ///< nominal minus measured efficiency; nullopt: not moved
   };
   std::vector<Use> uses;
 };
@@ -186,7 +187,7 @@ struct RunResult {
   std::string method_version;                  ///< of this program's evaluation
   std::vector<efficiency::CurvePoint> points;  ///< the curve with its sources, for comparisons; not printed
   std::vector<efficiency::Weighted> weighted_sources;  ///< the same of the weighted figures
-  std::optional<efficiency::LossModel> model_source;   ///< over all points; nullopt: none could be fitted
+  std::vector<efficiency::LossPiece> pieces;           ///< of the curve, with their models
   std::vector<efficiency::Around> around;              ///< of each point
   std::vector<MeterIdentity> meters;                   ///< linked ones
   double rated_power_w = 0.0;                          ///< output; 0: not declared
