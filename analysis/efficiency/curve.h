@@ -21,7 +21,11 @@ struct CurvePoint {
   std::string segment{};
 };
 
-/// The steps that have an efficiency, by rising output power. Steps without one are left out.
+/// The steps that have an efficiency, by rising output power. Steps without one are left out, and those with
+/// a number that is not finite.
 [[nodiscard]] std::vector<CurvePoint> curve(std::span<const StepResult> steps);
+
+/// Output power, loss, input power and efficiency are finite numbers, and so are their uncertainties.
+[[nodiscard]] bool is_finite(const CurvePoint& point);
 
 }  // namespace loadstair::efficiency

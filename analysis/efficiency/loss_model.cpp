@@ -176,11 +176,15 @@ Quoted LossModel::peak_power() const {
 }
 
 base::Outcome<LossModel> fit_loss_model(std::span<const CurvePoint> points, double floor_w) {
+  for (const CurvePoint& point : points) {
+    if (!is_finite(point))
+      return base::Refusal{"loss model", "a number of " + point.label + " is not finite"};
+  }
   if (points.size() < 3) {
     return base::Refusal{"loss model", "needs at least three levels, got " +
                                            base::print_integer(static_cast<std::int64_t>(points.size()))};
   }
-  if (!(floor_w > 0))
+  if (!(floor_w > 0) || !std::isfinite(floor_w))
     return base::Refusal{"loss model", "the floor of the levels' own uncertainty must be above zero"};
   const auto design = solve(points, floor_w);
   if (!design)
@@ -199,6 +203,9 @@ base::Outcome<LossModel> fit_loss_model(std::span<const CurvePoint> points, doub
     const double residual = points[i].loss.value() - dot(design->row[i], design->coefficient);
     model.chi_squared += design->weight[i] * residual * residual;
   }
+  if (!is_finite(model.p0) || !is_finite(model.p1) || !is_finite(model.p2) ||
+      !std::isfinite(model.chi_squared))
+    return base::Refusal{"loss model", "the levels' numbers are too large for a fit"};
   test_fit(model, points.size());
   return model;
 }

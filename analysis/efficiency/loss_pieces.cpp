@@ -122,6 +122,13 @@ LossThere interpolated(const LossCurve& curve, std::size_t low, double power_w) 
   return out;
 }
 
+/// Powers of a size that no product of them is finite say nothing.
+base::Outcome<LossThere> if_finite(LossThere there) {
+  if (!is_finite(there.loss) || !std::isfinite(there.slope))
+    return base::Refusal{watts(there.output_power_w), "the loss there is not a finite number"};
+  return there;
+}
+
 /// Output power between two levels at which output plus loss is that; both grow, so bisection finds it.
 template <class LossAt>
 double output_for_input(double low_w, double high_w, double input_w, LossAt loss_at) {
@@ -204,7 +211,7 @@ Estimate slope_near(const LossCurve& curve, std::size_t at) {
                             "slope of the loss at " + point.label, estimate::Distribution::rectangular);
   const auto below = next_to(curve, at, false);
   const auto above = next_to(curve, at, true);
-  if (!below && !above)
+  if (!below && !above)  // a level without power has no such bound: not finite
     return estimate::bounded(0, 2 * point.loss.value() / point.output_power.value(), source);
   const Estimate slope = chord(curve.points[below.value_or(at)], curve.points[above.value_or(at)]);
   // The curve bends between the levels. At an end the tangent of p0 + p1 P + p2 P^2 without negative terms is
@@ -218,6 +225,9 @@ Estimate slope_near(const LossCurve& curve, std::size_t at) {
 }
 
 base::Outcome<LossThere> loss_there(const LossCurve& curve, double power_w, Basis basis) {
+  const bool finite = std::all_of(curve.points.begin(), curve.points.end(),
+                                  [](const CurvePoint& point) { return is_finite(point); });
+  if (!finite) return base::Refusal{"loss curve", "a number of a level is not finite"};
   const auto piece = piece_around(curve, power_w, basis);
   if (!piece) return piece.refusal();
   const std::size_t low = *enclosing(curve, power_w, basis);
@@ -229,7 +239,7 @@ base::Outcome<LossThere> loss_there(const LossCurve& curve, double power_w, Basi
     if (model == nullptr) return interpolated(curve, low, output_w);
     return LossThere{output_w, model->loss_at(output_w), model->slope_at(output_w).value(), true};
   };
-  if (basis == Basis::output_power) return there(power_w);
+  if (basis == Basis::output_power) return if_finite(there(power_w));
   // A model need not go through the levels: the output may lie a little beyond them.
   const double beyond_w = high_w - low_w;
   const double output_w =
@@ -237,7 +247,7 @@ base::Outcome<LossThere> loss_there(const LossCurve& curve, double power_w, Basi
           ? output_for_input(low_w, high_w, power_w, [&](double p) { return there(p).loss.value(); })
           : output_for_input(std::max(0.0, low_w - beyond_w), high_w + beyond_w, power_w,
                              [&](double p) { return there(p).loss.value(); });
-  return there(output_w);
+  return if_finite(there(output_w));
 }
 
 }  // namespace loadstair::efficiency

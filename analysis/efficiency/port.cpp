@@ -12,6 +12,9 @@ namespace loadstair::efficiency {
 
 namespace {
 
+/// No waveform's RMS lies below its rectified mean; a capture of a square wave may, by rounding.
+constexpr double kLeastFormFactor = 1 - 1e-3;
+
 bool has(const std::optional<Quoted>& channel) {
   return channel && channel->ok();
 }
@@ -81,6 +84,10 @@ void apply_shunt(const Resistance& resistance, std::string_view what, const Port
 /// A declaration that cannot be a resistance is set aside with a remark; zero ohm corrects nothing.
 const Resistance* usable(const std::optional<Resistance>& resistance, std::vector<std::string>& remarks) {
   if (!resistance || resistance->ohm == 0) return nullptr;
+  if (resistance->tolerance && !std::isfinite(*resistance->tolerance)) {
+    remarks.push_back(resistance->name + ": its tolerance is not a finite number; not corrected");
+    return nullptr;
+  }
   if (std::isfinite(resistance->ohm) && resistance->ohm > 0) return &*resistance;
   remarks.push_back(resistance->name + ": declared as " + base::print_number(resistance->ohm) +
                     " ohm, which is no resistance; not corrected");
@@ -118,6 +125,33 @@ void correct(const Port& port, Quantities q, PortPower& out) {
   if (q.current) out.current = *q.current;
 }
 
+/// A reading that is not a finite number counts as missing.
+void sanitise(std::optional<Quoted>& reading, const std::string& name) {
+  if (has(reading) && !is_finite(**reading))
+    reading = Quoted{base::Refusal{name, "a reading is not a finite number"}};
+}
+
+PortReading sane(PortReading reading, const std::string& name) {
+  sanitise(reading.voltage, name);
+  sanitise(reading.current, name);
+  sanitise(reading.power, name);
+  sanitise(reading.capture_power, name);
+  sanitise(reading.power_factor, name);
+  if (reading.product_less_power && !is_finite(*reading.product_less_power))
+    reading.product_less_power.reset();
+  if (reading.ripple_power && !is_finite(*reading.ripple_power)) {
+    // The product of the means is then not known to be the power.
+    reading.ripple_power.reset();
+    if (has(reading.current)) reading.current = Quoted{base::Refusal{name, "its ripple power is not finite"}};
+  }
+  return reading;
+}
+
+/// Numbers of a size that no product of them is finite.
+void refuse_overflow(Quoted& quoted, const std::string& name) {
+  if (quoted && !is_finite(*quoted)) quoted = base::Refusal{name, "not a finite number"};
+}
+
 struct Way {
   std::string method;
   Estimate power;
@@ -146,6 +180,7 @@ void cross_check(const std::vector<Way>& ways, const PortReading& reading, PortP
     check.used = ways[0].method;
     check.other = ways[i].method;
     check.difference = unshared ? *reading.product_less_power : ways[i].power - ways[0].power;
+    if (!is_finite(check.difference)) continue;
     check.allowed = estimate::coverage(check.difference).expanded;
     check.agrees = std::abs(check.difference.value()) <= check.allowed;
     check.text = check.used + " gives " + base::print_significant(ways[0].power.value(), 5) + " W, " +
@@ -194,6 +229,7 @@ void add_ac(PortPower& out) {
     return;
   }
   out.apparent_power = *out.voltage * *out.current;
+  out.power_factor = base::Refusal{out.port, "no active power"};
   if (out.active_power)
     out.power_factor = estimate::ratio(*out.active_power, *out.apparent_power, "power factor");
 }
@@ -217,7 +253,12 @@ Estimate resistance_estimate(const Resistance& resistance) {
                            estimate::make_source(std::move(source)));
 }
 
-PortPower port_power(const Port& port, const PortReading& reading) {
+bool is_finite(const Estimate& of) {
+  return std::isfinite(of.value()) && std::isfinite(of.variance());
+}
+
+PortPower port_power(const Port& port, const PortReading& given) {
+  const PortReading reading = sane(given, port.name);
   PortPower out;
   out.port = port.name;
   out.voltage = reading.voltage.value_or(base::Refusal{port.name, "no voltage channel"});
@@ -236,8 +277,19 @@ PortPower port_power(const Port& port, const PortReading& reading) {
     q.power = ways.front().power;
     correct(port, q, out);
   }
+  if (out.active_power && !is_finite(*out.active_power)) {
+    out.state = PowerState::missing;
+    out.state_text = "its power is not a finite number";
+    out.active_power = base::Refusal{port.name, out.state_text};
+    out.correction.reset();
+    out.correction_texts.clear();
+  }
+  refuse_overflow(out.voltage, port.name);
+  refuse_overflow(out.current, port.name);
   if (port.current == Current::ac) {
     add_ac(out);
+    refuse_overflow(out.apparent_power, port.name);
+    refuse_overflow(out.power_factor, port.name);
   } else {
     out.apparent_power = base::Refusal{port.name, "not asked of a DC port"};
     out.power_factor = out.apparent_power;
@@ -249,9 +301,11 @@ PortPower port_power(const Port& port, const PortReading& reading) {
   return out;
 }
 
-Estimate ripple_bound(const Port& port, double ripple_current_rms_a, double source_resistance_ohm,
-                      std::string_view run) {
-  const double most = std::abs(source_resistance_ohm) * ripple_current_rms_a * ripple_current_rms_a;
+Quoted ripple_bound(const Port& port, double ripple_current_rms_a, double source_resistance_ohm,
+                    std::string_view run) {
+  const double most = source_resistance_ohm * ripple_current_rms_a * ripple_current_rms_a;
+  if (!(source_resistance_ohm >= 0) || !(ripple_current_rms_a >= 0) || !std::isfinite(most))
+    return base::Refusal{port.name, "ripple current or source resistance is below zero or not finite"};
   estimate::Source source;
   source.key = estimate::key::window(run, "", port.name + ": ripple power");
   source.name = port.name + ": ripple power without a capture";
@@ -260,16 +314,23 @@ Estimate ripple_bound(const Port& port, double ripple_current_rms_a, double sour
   source.remedy = estimate::Remedy::capture;
   source.variance_left = 0;
   const bool into = port.role == Role::input || port.role == Role::auxiliary_input;
-  return estimate::bounded(-most, into ? 0 : most, estimate::make_source(std::move(source)));
+  Quoted out = estimate::bounded(-most, into ? 0 : most, estimate::make_source(std::move(source)));
+  refuse_overflow(out, port.name);
+  return out;
 }
 
-Estimate rms_from_average_responding(const Estimate& shown, const Estimate& form_factor) {
+Quoted rms_from_average_responding(const Estimate& shown, const Estimate& form_factor) {
+  if (!is_finite(shown) || !is_finite(form_factor) || !(form_factor.value() >= kLeastFormFactor))
+    return base::Refusal{"form factor", "below 1, or a number that is not finite"};
   const double of_a_sine = std::numbers::pi / (2 * std::numbers::sqrt2);
-  return shown * form_factor / of_a_sine;
+  Quoted out = shown * form_factor / of_a_sine;
+  refuse_overflow(out, "form factor");
+  return out;
 }
 
 LeadEffect lead_effect(double voltage_v, double current_a, double lead_ohm) {
   LeadEffect out;
+  if (!std::isfinite(current_a * current_a * lead_ohm) || !std::isfinite(voltage_v * current_a)) return out;
   out.power_w = current_a * current_a * lead_ohm;
   const double through = std::abs(voltage_v * current_a);
   if (through > 0) {

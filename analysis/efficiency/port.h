@@ -14,6 +14,9 @@ namespace loadstair::efficiency {
 using estimate::Estimate;
 using estimate::Quoted;
 
+/// Value and standard uncertainty are finite numbers.
+[[nodiscard]] bool is_finite(const Estimate& of);
+
 enum class Role { input, output, auxiliary_input, auxiliary_output };
 enum class Current { dc, ac };
 
@@ -108,21 +111,26 @@ struct PortPower {
 /// Power at the reference plane, corrected for burden and leads.
 /// DC: V I (or a wattmeter). AC: wattmeter, else capture, else V I PF; with none of them "apparent power
 /// only" and active_power refused. A port given two ways is cross-checked: a difference beyond its own 95 %
-/// interval is a remark. The burden of an AC meter is taken as resistive.
+/// interval is a remark. The burden of an AC meter is taken as resistive. A reading that is not a finite
+/// number counts as missing.
 [[nodiscard]] PortPower port_power(const Port& port, const PortReading& reading);
 
 /// Ripple power of a DC port without a capture, W. At an input, behind a source resistance R, a ripple
 /// current i lets the voltage dip while it flows, so mean(v i) lies between -R i^2 and zero: correct by half
 /// of it, rectangular (JCGM 100:2008 4.3.8). At an output the sign depends on the load (a resistor's is
 /// positive, a constant-power load's negative, a capacitor's nothing): between -R i^2 and R i^2, nothing is
-/// corrected. ripple_current_rms_a, source_resistance_ohm   zero or more, as declared run   the source of
-/// error is common to the port's steps in this run
-[[nodiscard]] Estimate ripple_bound(const Port& port, double ripple_current_rms_a,
-                                    double source_resistance_ohm, std::string_view run);
+/// corrected.
+/// ripple_current_rms_a, source_resistance_ohm   zero or more, as declared
+/// run     the source of error is common to the port's steps in this run
+/// Errors: refused where one of both is below zero or not finite.
+[[nodiscard]] Quoted ripple_bound(const Port& port, double ripple_current_rms_a, double source_resistance_ohm,
+                                  std::string_view run);
 
 /// RMS from an average-responding meter, which shows mean-rectified times 1.1107 (a sine's form factor pi /
-/// (2 sqrt 2)). form_factor  RMS / mean-rectified of this waveform, from a capture
-[[nodiscard]] Estimate rms_from_average_responding(const Estimate& shown, const Estimate& form_factor);
+/// (2 sqrt 2)).
+/// form_factor  RMS / mean-rectified of this waveform, from a capture; at least 1, as for every waveform
+/// Errors:      refused for less, and for numbers that are not finite.
+[[nodiscard]] Quoted rms_from_average_responding(const Estimate& shown, const Estimate& form_factor);
 
 /// By how much an undeclared lead resistance would move a port's power.
 struct LeadEffect {
@@ -134,7 +142,8 @@ struct LeadEffect {
 inline constexpr double kLeadOhm = 0.010;
 inline constexpr double kLeadMatters = 0.001;
 
-/// voltage_v, current_a  magnitudes, RMS on AC. Zero voltage with current: relative is 1, it matters.
+/// voltage_v, current_a  magnitudes, RMS on AC. Zero voltage with current: relative is 1, it matters. No
+/// effect where a number is not finite: then there is nothing to move.
 [[nodiscard]] LeadEffect lead_effect(double voltage_v, double current_a, double lead_ohm = kLeadOhm);
 
 /// What `check` says of a port whose sensing is undeclared and whose leads would matter; nullopt where all is

@@ -189,6 +189,9 @@ StepResult step_result(const StepInput& input) {
                                                       base::print_significant(in->value(), 4) + " W"};
     }
   }
+  for (Quoted* total : {&out.input_power, &out.output_power, &out.loss, &out.efficiency}) {
+    if (*total && !is_finite(**total)) *total = base::Refusal{input.label, "not a finite number"};
+  }
   add_remarks(input, out);
   return out;
 }

@@ -15,13 +15,14 @@ struct WaveShape {
 };
 
 /// RMS current at which the threshold over the sense resistor is reached, A.
-/// threshold_v, resistor_ohm  the resistor must be above zero: refused otherwise
+/// threshold_v, resistor_ohm  the resistor must be above zero: refused otherwise, as numbers that are not
+/// finite
 [[nodiscard]] estimate::Quoted trip_current(const estimate::Estimate& threshold_v,
                                             const estimate::Estimate& resistor_ohm, Sense sense,
                                             const WaveShape& shape = {});
 
-/// Least DC bus of a bridge without boost: the peak of its sinusoidal output, V. voltage_rms_v of zero or
-/// more.
-[[nodiscard]] double least_dc_bus_v(double voltage_rms_v);
+/// Least DC bus of a bridge without boost: the peak of its sinusoidal output, V.
+/// voltage_rms_v  zero or more, finite: refused otherwise
+[[nodiscard]] base::Outcome<double> least_dc_bus_v(double voltage_rms_v);
 
 }  // namespace loadstair::efficiency

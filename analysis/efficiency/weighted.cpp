@@ -50,11 +50,14 @@ base::Outcome<WeightedUse> from_curve(Scheme scheme, const WeightedLevel& level,
   const bool european = scheme == Scheme::european;
   const auto there = loss_there(curve, nominal_w, european ? Basis::input_power : Basis::output_power);
   if (!there) {
-    return base::Refusal{
-        place, "no measured level within " + percent(within) + " of rated, and " + there.refusal().reason};
+    return base::Refusal{place, "no measured level within " +
+                                    base::print_number(std::round(1e4 * within) / 1e2) + " % of rated, and " +
+                                    there.refusal().reason};
   }
   WeightedUse use{level, there->by_model ? "loss model" : "between its neighbours", {}, {}, false};
   const double output_w = there->output_power_w;
+  if (!(output_w + there->loss.value() > 0) || !(1 + there->slope > 0))
+    return base::Refusal{place, "the curve has no input power there"};
   if (!european) {
     use.efficiency = output_w / (output_w + there->loss);
     return use;
@@ -72,16 +75,22 @@ base::Outcome<WeightedUse> use_of(Scheme scheme, const WeightedLevel& level, dou
   if (curve.points.empty()) return base::Refusal{place, "no level was measured"};
   const std::size_t at = nearest(scheme, curve.points, nominal_w);
   const CurvePoint& point = curve.points[at];
+  if (!is_finite(point)) return base::Refusal{place, "a number of " + point.label + " is not finite"};
   const double off = std::abs(basis_w(scheme, point) - nominal_w) / rated_w;
   if (!(off <= std::max(within, kNominalEqual)))
     return from_curve(scheme, level, nominal_w, curve, place, within);
   WeightedUse use{level, point.label, point.efficiency, Estimate{}, false};
   if (off <= kNominalEqual) return use;
-  if (!(point.output_power.value() > 0)) {
-    return base::Refusal{place, "the level measured there has no output power"};
+  if (!(point.output_power.value() > 0) || !(point.input_power.value() > 0) ||
+      !(point.output_power.value() + point.loss.value() > 0)) {
+    return base::Refusal{place, "the level measured there has no output or no input power"};
   }
+  const Estimate slope = slope_near(curve, at);
+  if (!is_finite(slope) || !(1 + slope.value() > 0))
+    return base::Refusal{place, "the loss has no slope there to move the level by"};
   use.moved = true;
-  use.shift = shift_of(scheme, nominal_w, point, slope_near(curve, at));
+  use.shift = shift_of(scheme, nominal_w, point, slope);
+  if (!is_finite(use.shift)) return base::Refusal{place, "the level cannot be moved there"};
   use.efficiency = point.efficiency + use.shift;
   return use;
 }
@@ -148,6 +157,10 @@ Weighted cec_over_voltages(std::span<const Weighted> by_voltage) {
       return out;
     }
     sum = sum + *one.efficiency;
+  }
+  if (!is_finite(sum)) {
+    out.efficiency = base::Refusal{out.title, "a figure is not finite"};
+    return out;
   }
   out.efficiency = sum / 3.0;
   return out;

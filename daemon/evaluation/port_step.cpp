@@ -125,8 +125,9 @@ std::optional<Estimate> ripple_of(const setup::Port& port, const StepValues& val
   if (capture != nullptr && capture->quote.power.ripple_w) {
     ripple = *capture->quote.power.ripple_w;
   } else if (port.ripple_current_rms_a && port.source_resistance_ohm) {
-    ripple = efficiency::ripple_bound(port_of(port, values), *port.ripple_current_rms_a,
-                                      *port.source_resistance_ohm, values.context.run);
+    const Quoted bound = efficiency::ripple_bound(port_of(port, values), *port.ripple_current_rms_a,
+                                                  *port.source_resistance_ohm, values.context.run);
+    if (bound) ripple = *bound;
   }
   const ChannelValue* voltage = values.find(port.voltage);
   const ChannelValue* current = values.find(port.current);

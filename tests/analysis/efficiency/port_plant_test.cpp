@@ -92,7 +92,8 @@ TEST_CASE("without a capture the inverter's input power lies inside the bound, r
     plant.ripple = ripple;
     PortReading reading = ideal(plant.mean_v(), plant.mean_a);
     // Declared as 30 %, whatever it is: the power lies between none and all of the bound below V I.
-    reading.ripple_power = efficiency::ripple_bound(input_port(), 0.30 * plant.mean_a, plant.source_ohm, "1");
+    reading.ripple_power =
+        *efficiency::ripple_bound(input_port(), 0.30 * plant.mean_a, plant.source_ohm, "1");
     const auto found = efficiency::port_power(input_port(), reading);
     REQUIRE(found.active_power);
     const double bound = plant.source_ohm * 0.09 * 1.6 * 1.6;

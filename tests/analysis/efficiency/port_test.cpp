@@ -249,7 +249,7 @@ TEST_CASE("ripple behind a source resistance takes power, between none and all o
   // v = -R i for a ripple of i: mean(v i) = -R i_rms^2, closed form; smoothing can only make it less.
   Port port;
   port.name = "input";
-  const auto ripple = efficiency::ripple_bound(port, 1.5, 0.4, "1");
+  const Estimate ripple = *efficiency::ripple_bound(port, 1.5, 0.4, "1");
   CHECK(ripple.value() == Approx(-0.45).epsilon(1e-14));
   CHECK(ripple.standard_uncertainty() == Approx(0.45 / std::sqrt(3)).epsilon(1e-12));
   CHECK(ripple.terms()[0].source->remedy == estimate::Remedy::capture);
@@ -261,7 +261,7 @@ TEST_CASE("ripple at an output has either sign, as the load is: nothing is corre
   port.name = "output";
   for (const auto role : {efficiency::Role::output, efficiency::Role::auxiliary_output}) {
     port.role = role;
-    const auto ripple = efficiency::ripple_bound(port, 1.5, 0.4, "1");
+    const Estimate ripple = *efficiency::ripple_bound(port, 1.5, 0.4, "1");
     CHECK(ripple.value() == 0.0);
     CHECK(ripple.standard_uncertainty() == Approx(0.9 / std::sqrt(3)).epsilon(1e-12));
   }
@@ -269,8 +269,8 @@ TEST_CASE("ripple at an output has either sign, as the load is: nothing is corre
 
 TEST_CASE("an average-responding meter is put right by the form factor") {
   // A square wave of 10 V: the meter shows 10 * 1.1107, its form factor is 1; a sine stays as it is.
-  CHECK(efficiency::rms_from_average_responding(Estimate{11.107207345395915}, Estimate{1}).value() ==
+  CHECK(efficiency::rms_from_average_responding(Estimate{11.107207345395915}, Estimate{1})->value() ==
         Approx(10).epsilon(1e-14));
-  CHECK(efficiency::rms_from_average_responding(Estimate{10}, Estimate{M_PI / std::sqrt(8)}).value() ==
+  CHECK(efficiency::rms_from_average_responding(Estimate{10}, Estimate{M_PI / std::sqrt(8)})->value() ==
         Approx(10).epsilon(1e-14));
 }
