@@ -33,9 +33,9 @@ AtLoad with_surroundings(const AtLoad& other, double load_w, const Around& refer
                          const std::string& run, const std::string& label) {
   AtLoad out = other;
   const auto add = [&](const Estimate& of_loss) {
-    const double input_w = load_w + other.loss.value();
+    const Estimate before = load_w / (load_w + out.loss);
     out.loss = out.loss + of_loss;
-    out.efficiency = out.efficiency - (load_w / (input_w * input_w)) * of_loss;
+    out.efficiency = out.efficiency + (load_w / (load_w + out.loss) - before);
   };
   const auto move = [&](const Change& change, const std::optional<Estimate>& own,
                         const std::optional<Estimate>& others) {

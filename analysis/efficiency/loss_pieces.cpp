@@ -55,10 +55,10 @@ Estimate chord(const CurvePoint& low, const CurvePoint& high) {
   return (high.loss - low.loss) / (high.output_power - low.output_power);
 }
 
-/// What bends a loss between two levels.
+/// What a loss may do between two levels besides following the line between them.
 struct Bend {
-  Estimate curvature;  ///< second divided difference, W/W^2
-  double half_width_w = 0;
+  Estimate curvature;  ///< second divided difference that is taken off, W/W^2
+  double lowest_w = 0, highest_w = 0;
 };
 
 /// Of the two levels and the next one, lower or higher; `apart_w` from the outer level to the far one of the
@@ -79,26 +79,36 @@ std::optional<Triple> triple(const LossCurve& curve, std::size_t low, bool up) {
   return Triple{(chord(middle, last) - chord(first, middle)) / apart, apart.value()};
 }
 
-/// What the loss does between levels `low` and `low` + 1, `reach` = (P - P0)(P1 - P) into it.
-Bend bend_between(const LossCurve& curve, std::size_t low, double reach) {
-  const double h = curve.points[low + 1].output_power.value() - curve.points[low].output_power.value();
+/// Somewhere between two levels the loss jumps by step_w; seen from the line between them at `share` of the
+/// way, it is still below the jump or already above it.
+Bend stepping(const Estimate& curvature, double step_w, double share, double more_w) {
+  const auto [lowest, highest] = std::minmax({-share * step_w, (1 - share) * step_w});
+  return {curvature, lowest - more_w, highest + more_w};
+}
+
+/// What the loss may do at power_w between levels `low` and `low` + 1.
+Bend bend_between(const LossCurve& curve, std::size_t low, double power_w) {
+  const double from_w = curve.points[low].output_power.value();
+  const double to_w = curve.points[low + 1].output_power.value();
+  const double h = to_w - from_w;
+  const double share = (power_w - from_w) / h;
+  const double reach = (power_w - from_w) * (to_w - power_w);
   const auto below = triple(curve, low, false);
   const auto above = triple(curve, low, true);
   if (below && above) {
     const Estimate mean = 0.5 * (below->curvature + above->curvature);
-    const double unlike = std::abs(below->curvature.value() - above->curvature.value());
+    const double unlike = below->curvature.value() - above->curvature.value();
     const double step_w = unlike * h / (1 / below->apart_w + 1 / above->apart_w);
-    return {mean, step_w / 2 + std::abs(mean.value()) * reach / 2};
+    const double bent = (std::abs(below->curvature.value()) + std::abs(above->curvature.value())) / 2;
+    return stepping(mean, step_w, share, bent * reach);
   }
-  if (below || above) {
-    const Triple& only = below ? *below : *above;
-    const double curvature = std::abs(only.curvature.value());
-    return {only.curvature, curvature * h * only.apart_w / 2 + curvature * reach};
-  }
+  // A step that explains the whole of d; less than it is what a curvature of d does, so it is in there.
+  if (below) return stepping(Estimate{0}, below->curvature.value() * h * below->apart_w, share, 0);
+  if (above) return stepping(Estimate{0}, -above->curvature.value() * h * above->apart_w, share, 0);
   // Between none and the most that the family without negative terms can bend.
-  const double sum_w = curve.points[low].output_power.value() + curve.points[low + 1].output_power.value();
-  const double most = sum_w > 0 ? chord(curve.points[low], curve.points[low + 1]).value() / sum_w : 0;
-  return {Estimate{most / 2}, std::abs(most) * reach / 2};
+  const double sum_w = from_w + to_w;
+  const double most = sum_w > 0 ? chord(curve.points[low], curve.points[low + 1]).value() / sum_w * reach : 0;
+  return {Estimate{0}, std::min(-most, 0.0), std::max(-most, 0.0)};
 }
 
 /// Between levels `low` and `low` + 1, which lie at different powers of one piece.
@@ -106,8 +116,7 @@ LossThere interpolated(const LossCurve& curve, std::size_t low, double power_w) 
   const CurvePoint& first = curve.points[low];
   const CurvePoint& second = curve.points[low + 1];
   const Estimate slope = chord(first, second);
-  const double reach = (power_w - first.output_power.value()) * (second.output_power.value() - power_w);
-  const Bend bend = bend_between(curve, low, reach);
+  const Bend bend = bend_between(curve, low, power_w);
   const auto source = estimate::make_type_b(
       estimate::key::window(curve.run, first.label + " to " + second.label,
                             "interpolation at " + base::print_significant(power_w, 9)),
@@ -118,7 +127,7 @@ LossThere interpolated(const LossCurve& curve, std::size_t low, double power_w) 
   out.slope = slope.value();
   out.loss = first.loss + slope * (power_w - first.output_power) -
              bend.curvature * ((power_w - first.output_power) * (second.output_power - power_w)) +
-             estimate::bounded(-bend.half_width_w, bend.half_width_w, source);
+             estimate::bounded(bend.lowest_w, bend.highest_w, source);
   return out;
 }
 
@@ -206,22 +215,25 @@ Estimate slope_near(const LossCurve& curve, std::size_t at) {
   const LossPiece* piece = piece_of(curve, point);
   if (piece != nullptr && piece->usable() != nullptr)
     return piece->usable()->slope_at(point.output_power.value());
+  // One source for all levels: a jump between two of them turns the chords at both the same way.
   const auto source =
-      estimate::make_type_b(estimate::key::window(curve.run, point.label, "slope of the loss"),
-                            "slope of the loss at " + point.label, estimate::Distribution::rectangular);
+      estimate::make_type_b(estimate::key::window(curve.run, "", "slope of the loss"),
+                            "slope of the loss between levels", estimate::Distribution::rectangular);
   const auto below = next_to(curve, at, false);
   const auto above = next_to(curve, at, true);
   if (!below && !above)  // a level without power has no such bound: not finite
     return estimate::bounded(0, 2 * point.loss.value() / point.output_power.value(), source);
-  const Estimate slope = chord(curve.points[below.value_or(at)], curve.points[above.value_or(at)]);
-  // The curve bends between the levels. At an end the tangent of p0 + p1 P + p2 P^2 without negative terms is
-  // off the secant by no more than the secant itself; elsewhere both sides' secants bound it.
-  double bend = std::abs(slope.value());
   if (below && above) {
-    bend =
-        std::abs(chord(point, curve.points[*above]).value() - chord(curve.points[*below], point).value()) / 2;
+    // The tangent of a curve that bends one way, or jumps on one side, lies between both chords.
+    const Estimate first = chord(curve.points[*below], point);
+    const Estimate second = chord(point, curve.points[*above]);
+    const double half = std::abs(second.value() - first.value()) / 2;
+    return 0.5 * (first + second) + estimate::bounded(-half, half, source);
   }
-  return slope + estimate::bounded(-bend, bend, source);
+  // At an end the tangent of p0 + p1 P + p2 P^2 without negative terms is off the chord by no more than the
+  // chord's own slope.
+  const Estimate slope = chord(curve.points[below.value_or(at)], curve.points[above.value_or(at)]);
+  return slope + estimate::bounded(-std::abs(slope.value()), std::abs(slope.value()), source);
 }
 
 base::Outcome<LossThere> loss_there(const LossCurve& curve, double power_w, Basis basis) {

@@ -50,10 +50,10 @@ enum class Basis { output_power, input_power };
 [[nodiscard]] base::Outcome<const LossPiece*> piece_around(const LossCurve& curve, double power_w,
                                                            Basis basis = Basis::output_power);
 
-/// d loss / d P_out at a level, with what is not known of it: of the piece's model; else between its
-/// neighbours on the same piece, with what the curve may bend between them; else, alone on its piece,
-/// anywhere from none to twice the loss over the power, which holds for every p0 + p1 P + p2 P^2 without
-/// negative terms. at   index of the level, within the points
+/// d loss / d P_out at a level, with what is not known of it: of the piece's model; else anywhere between
+/// the lines to its neighbours on the same piece (one neighbour: from none to twice that line's slope); else,
+/// alone on its piece, anywhere from none to twice the loss over the power, which holds for every p0 + p1 P +
+/// p2 P^2 without negative terms. at   index of the level, within the points
 [[nodiscard]] Estimate slope_near(const LossCurve& curve, std::size_t at);
 
 /// A loss that was not measured.
@@ -67,15 +67,16 @@ struct LossThere {
 /// The loss at a power inside the measured span: of the model of the piece it lies on; where that has none,
 /// or one with significant lack of fit, between the two neighbouring levels.
 ///
-/// Local interpolation of levels P0 < P < P1, h apart: the line between them, less d (P - P0)(P1 - P), where
-/// d is the second divided difference, mean of those with the next level on either side of the same piece.
-/// Rectangular half-width: half of that correction, and half of the step that a jump of the loss between P0
-/// and P1 (a fan that starts) would need to explain how unlike both d are; with a level on one side only, the
-/// whole correction and half of the step that would explain d itself. With no other level on the piece: below
-/// the line by at most (slope/(P0 + P1)) (P - P0)(P1 - P), the most that p0 + p1 P + p2 P^2 without negative
-/// terms can bend.
-/// Errors:  as piece_around().
-/// Source:  Newton's divided differences; the half-widths common practice, no source.
+/// Local interpolation between levels P0 < P < P1, h apart, with t = (P - P0)/h: the line between them, less
+/// d (P - P0)(P1 - P), where d is the second divided difference, mean of those with the next level on either
+/// side of the same piece. The loss may have jumped in between (a fan that starts), by as much as explains
+/// how unlike both d are: J = (d_below - d_above) h / (1/a_below + 1/a_above), a from outer to far level. So
+/// it lies between -t J and (1 - t) J from there, and beyond that by what the mean of both |d| bends,
+/// rectangular. With a level on one side only the line is not corrected and J is what explains d alone. With
+/// no other level on the piece: below the line by at most (slope/(P0 + P1)) (P - P0)(P1 - P), the most that
+/// p0 + p1 P
+/// + p2 P^2 without negative terms can bend. Errors:  as piece_around(). Source:  Newton's divided
+/// differences; the bounds common practice, no source.
 [[nodiscard]] base::Outcome<LossThere> loss_there(const LossCurve& curve, double power_w,
                                                   Basis basis = Basis::output_power);
 

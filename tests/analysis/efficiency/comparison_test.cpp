@@ -272,6 +272,29 @@ TEST_CASE("another input voltage and another ambient widen the difference of los
   CHECK(level.loss->variance() - alone == Approx(added).epsilon(1e-6));
 }
 
+TEST_CASE("where a slope of the loss is given, the other run is moved along it") {
+  // The other board loses 0.3 W more because its input lies 0.5 V higher, and 0.25 W because it is 5 K
+  // warmer.
+  ComparisonInput input = one_level(Bench{}, -0.55);
+  const auto alone = only_level(input);
+  CHECK(alone.loss->value() == Approx(0.55));
+  input.reference.around = {{48, 20}};
+  input.other.around = {{48.5, 25}};
+  const auto slope = [](const char* key, double value, double u) {
+    return Estimate{value, estimate::make_type_b(key, key, estimate::Distribution::normal), u};
+  };
+  input.other.around[0].loss_per_volt = slope("per volt", 0.6, 0.1);
+  input.reference.around[0].loss_per_kelvin = slope("per kelvin", 0.05, 0.01);
+  const auto level = only_level(input);
+  CHECK(std::abs(level.loss->value()) < 1e-9);
+  CHECK(std::abs(level.efficiency->value()) < 1e-9);
+  const double added = std::pow(0.5 * 0.1, 2) + std::pow(5 * 0.01, 2);
+  CHECK(level.loss->variance() - alone.loss->variance() == Approx(added).epsilon(1e-6));
+  // The other run's own slope comes first.
+  input.reference.around[0].loss_per_volt = slope("of the reference", 6, 1);
+  CHECK(std::abs(only_level(input).loss->value()) < 1e-9);
+}
+
 TEST_CASE("Holm's method is R's") {
   tests::RandomSource random{tests::seed_of_tests()};
   for (const std::size_t many : {1U, 2U, 6U, 13U}) {

@@ -181,11 +181,22 @@ TEST_CASE("a port given two ways is cross-checked against the interval of the di
   PortReading reading;
   reading.power = own("W", 400, 0.5);
   reading.capture_power = own("capture", 402, 1);
-  CHECK(efficiency::port_power(port, reading).remarks.empty());
+  const auto near = efficiency::port_power(port, reading);
+  CHECK(near.remarks.empty());
+  REQUIRE(near.cross_checks.size() == 1);
+  CHECK(near.cross_checks[0].agrees);
+  CHECK(near.cross_checks[0].text.find("they agree within the 2.2 W") != std::string::npos);
+  // Root of 0.5^2 + 1^2, by the normal 95 % factor of JCGM 100:2008 table G.2.
+  CHECK(near.cross_checks[0].allowed == Approx(1.959964 * std::sqrt(1.25)).epsilon(1e-6));
   reading.capture_power = own("capture", 404, 1);
   const auto found = efficiency::port_power(port, reading);
   REQUIRE(found.remarks.size() == 1);
   CHECK(found.remarks[0].find("wattmeter gives 400.00 W, capture 404.00 W") == 0);
+  REQUIRE(found.cross_checks.size() == 1);
+  CHECK_FALSE(found.cross_checks[0].agrees);
+  CHECK(found.cross_checks[0].used == "wattmeter");
+  CHECK(found.cross_checks[0].other == "capture");
+  CHECK(found.cross_checks[0].difference.value() == Approx(4));
 }
 
 TEST_CASE("undeclared leads are spoken of where they matter") {
