@@ -6,8 +6,11 @@
 namespace loadstair::whole {
 namespace {
 
-/// Relative standard uncertainty of a channel at `value` (after conversion), from its declared figures.
-double relative_uncertainty(const setup::Channel& channel, double value) {
+/// Relative standard uncertainty of a channel at `value` (after conversion), from its declared figures. A
+/// zero check takes the place of the specified offset; what is left of it is half a digit.
+double relative_uncertainty(const setup::Channel& channel, double value, const setup::Stair& stair) {
+  const auto& zeros = stair.zero_channels;
+  const bool zeroed = std::find(zeros.begin(), zeros.end(), channel.name) != zeros.end();
   double raw = value / channel.conversion.scale;
   double variance = 0.0;
   if (channel.conversion.shunt) {
@@ -17,7 +20,8 @@ double relative_uncertainty(const setup::Channel& channel, double value) {
   for (const auto& range : channel.ranges) {
     if (range.upto < raw) continue;
     const double gain = range.reading_percent / 100.0;
-    const double offset = (range.range_percent / 100.0 * range.upto + range.digits * range.resolution) / raw;
+    const double specified = range.range_percent / 100.0 * range.upto + range.digits * range.resolution;
+    const double offset = (zeroed ? range.resolution / 2.0 : specified) / raw;
     variance += (gain * gain + offset * offset) / 3.0;
     break;
   }
@@ -26,17 +30,19 @@ double relative_uncertainty(const setup::Channel& channel, double value) {
 
 }  // namespace
 
-double implied_half_width(const setup::Hookup& hookup, const rehearsal::Truth& truth) {
+double implied_half_width(const setup::Hookup& hookup, const setup::Stair& stair,
+                          const rehearsal::Truth& truth) {
   double variance = 0.0;
   for (const auto& port : hookup.ports) {
     if (port.direction == setup::Direction::output) {
-      variance += std::pow(relative_uncertainty(*hookup.find_channel(port.power), truth.output_power_w), 2);
+      variance +=
+          std::pow(relative_uncertainty(*hookup.find_channel(port.power), truth.output_power_w, stair), 2);
       continue;
     }
     const double volts = hookup.rehearsal->source.at("voltage_v");
-    variance += std::pow(relative_uncertainty(*hookup.find_channel(port.voltage), volts), 2);
-    variance +=
-        std::pow(relative_uncertainty(*hookup.find_channel(port.current), truth.input_power_w / volts), 2);
+    variance += std::pow(relative_uncertainty(*hookup.find_channel(port.voltage), volts, stair), 2);
+    variance += std::pow(
+        relative_uncertainty(*hookup.find_channel(port.current), truth.input_power_w / volts, stair), 2);
   }
   return 1.96 * truth.efficiency * std::sqrt(variance);
 }
@@ -51,6 +57,7 @@ std::vector<CoveragePoint> cover(const setup::Hookup& hookup, const setup::Stair
   for (std::uint64_t i = 0; i < seeds; ++i) {
     VirtualChoice choice;
     choice.seed = first + i;
+    choice.validate = evaluation::Validate::no;
     const VirtualRun run = run_virtually(hookup, stair, choice);
     const std::size_t step = levels.at(i % levels.size());
     const auto& result = run.result.steps.at(step);
@@ -63,7 +70,7 @@ std::vector<CoveragePoint> cover(const setup::Hookup& hookup, const setup::Stair
     point.value = result.efficiency.value;
     point.low = result.efficiency.low;
     point.high = result.efficiency.high;
-    point.implied_half_width = implied_half_width(hookup, truth.truth);
+    point.implied_half_width = implied_half_width(hookup, stair, truth.truth);
     points.push_back(point);
   }
   return points;

@@ -25,7 +25,8 @@ struct CoveragePoint {
 /// the root of the sum of squares of rectangular standard uncertainties (JCGM 100:2008 4.3.7), computed here
 /// from the hook-up file's figures and nothing of analysis. For one dc input (volts times amperes) and one
 /// output wattmeter.
-[[nodiscard]] double implied_half_width(const setup::Hookup& hookup, const rehearsal::Truth& truth);
+[[nodiscard]] double implied_half_width(const setup::Hookup& hookup, const setup::Stair& stair,
+                                        const rehearsal::Truth& truth);
 
 /// Runs `seeds` benches from `first` on.
 [[nodiscard]] std::vector<CoveragePoint> cover(const setup::Hookup& hookup, const setup::Stair& stair,

@@ -84,11 +84,11 @@ struct Temporary {
 };
 
 void collect(VirtualRun& result, const store::Record& record, store::RunId run, const setup::Hookup& hookup,
-             const setup::Stair& stair, rehearsal::RehearsedBench& rehearsed) {
+             const setup::Stair& stair, rehearsal::RehearsedBench& rehearsed, evaluation::Validate validate) {
   const auto reader = must(record.reader());
   result.stored = must(reader.load_run(run));
   result.replies = must(reader.load_replies(run));
-  result.result = evaluation::evaluate(result.stored, hookup, stair);
+  result.result = evaluation::evaluate(result.stored, hookup, stair, validate);
   for (const auto& step : result.stored.steps) {
     StepTruth truth{step.label, {}, false};
     if (step.average_begin_ns && step.average_end_ns) {
@@ -176,7 +176,7 @@ VirtualRun run_virtually(const setup::Hookup& hookup, setup::Stair stair, const 
   clock->run(static_cast<std::int64_t>(choice.limit_s * 1e9));
   if (tasks.size() != 0) throw std::runtime_error{"the virtual run did not end within its limit"};
   must(writer->flush());
-  collect(result, record, run, used, stair, rehearsed);
+  collect(result, record, run, used, stair, rehearsed, choice.validate);
   result.log = rehearsed.log();
   must(writer->close());
   return result;

@@ -28,6 +28,8 @@ struct VirtualChoice {
   std::function<void(sequencer::Sequencer&, const sequencer::Snapshot&)> each_look;
   /// Changes the simulated bench beyond what the hook-up file says.
   std::function<void(rehearsal::BenchDescription&)> adjust;
+  /// Whether efficiencies are held against Monte Carlo: most of the cost of a run in virtual time.
+  evaluation::Validate validate = evaluation::Validate::yes;
   bool resume_holds = false;  ///< a person resumes every hold after 5 s
 };
 
