@@ -18,10 +18,6 @@ namespace {
 constexpr double kRisk = 1 - estimate::kLevel;
 constexpr std::size_t kNone = static_cast<std::size_t>(-1);
 
-bool finite(const Estimate& of) {
-  return std::isfinite(of.value()) && std::isfinite(of.variance());
-}
-
 std::string watts(double value) {
   return base::print_significant(value, 4) + " W";
 }
@@ -225,11 +221,8 @@ class Comparing {
     const double ours_w = input_.reference.points[i].output_power.value();
     const double theirs_w = input_.other.points[j].output_power.value();
     if (!(ours_w > 0) || !(theirs_w > 0)) return "a level without output power has no efficiency";
-    for (const CurvePoint* point : {&input_.reference.points[i], &input_.other.points[j]}) {
-      for (const Estimate* of : {&point->output_power, &point->loss, &point->efficiency}) {
-        if (!finite(*of)) return "a figure is not finite";
-      }
-    }
+    if (!is_finite(input_.reference.points[i]) || !is_finite(input_.other.points[j]))
+      return "a figure is not finite";
     const double apart = apart_w(i, j) / input_.rated_w;
     if (!(apart <= kCommonLoadWithin)) {
       return "the loads lie " + percent(apart) + " of rated power apart (" + watts(theirs_w) + " against " +
@@ -237,6 +230,8 @@ class Comparing {
     }
     const auto ours_v = around(input_.reference, i).input_voltage_v;
     const auto theirs_v = around(input_.other, j).input_voltage_v;
+    if ((ours_v && !std::isfinite(*ours_v)) || (theirs_v && !std::isfinite(*theirs_v)))
+      return "an input voltage is not a finite number";
     if (ours_v && theirs_v && !(std::abs(*theirs_v - *ours_v) <= kCommonVoltageWithin * std::abs(*ours_v))) {
       return "the input voltages lie too far apart (" + base::print_significant(*theirs_v, 4) +
              " V against " + base::print_significant(*ours_v, 4) + " V); up to 2 % is allowed for";
@@ -249,6 +244,8 @@ class Comparing {
     const std::string& label = input_.reference.points[i].label;
     if (const std::string why = obstacle(i, j); !why.empty()) return refused(label, why);
     const auto [a, b] = at_common_load(i, j);
+    if (!is_finite(a.efficiency) || !is_finite(b.efficiency) || !is_finite(a.loss) || !is_finite(b.loss))
+      return refused(label, "the levels cannot be moved to a common load");
     Difference out;
     out.label = label;
     out.load_w = common_w(i, j);
@@ -293,7 +290,7 @@ class Comparing {
     for (const ComparedFigure& a : input_.reference.weighted) {
       for (const ComparedFigure& b : input_.other.weighted) {
         if (a.title != b.title || !a.efficiency || !b.efficiency) continue;
-        if (!finite(*a.efficiency) || !finite(*b.efficiency)) continue;
+        if (!is_finite(*a.efficiency) || !is_finite(*b.efficiency)) continue;
         Difference one;
         one.label = a.title;
         one.efficiency = set_apart(*b.efficiency, input_.not_common, input_.other.run) - *a.efficiency;

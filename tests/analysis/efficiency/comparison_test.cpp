@@ -4,6 +4,7 @@
 #include <catch2/catch.hpp>
 #include <cmath>
 #include <iostream>
+#include <limits>
 #include <vector>
 
 #include "analysis/estimate/coverage.h"
@@ -293,6 +294,57 @@ TEST_CASE("where a slope of the loss is given, the other run is moved along it")
   // The other run's own slope comes first.
   input.reference.around[0].loss_per_volt = slope("of the reference", 6, 1);
   CHECK(std::abs(only_level(input).loss->value()) < 1e-9);
+}
+
+TEST_CASE("comparisons of any numbers are finite or refused") {
+  const double inf = std::numeric_limits<double>::infinity();
+  const double nan = std::numeric_limits<double>::quiet_NaN();
+  Bench bench;
+  for (const double strange : {nan, inf, -inf, 1e300, -1e300, 0.0, -5.0, 1e-300}) {
+    for (int which = 0; which < 9; ++which) {
+      std::vector<CurvePoint> theirs{bench.level("2", 60, 6), bench.level("2", 120, 12),
+                                     bench.level("2", 180, 20)};
+      ComparisonInput input{
+          run_of("1", "C-003",
+                 {bench.level("1", 60, 6), bench.level("1", 121, 12), bench.level("1", 180, 20)}),
+          run_of("2", "D-001", theirs),
+          kRated,
+          {},
+          false};
+      input.reference.around = {{48, 23}, {48, 23}, {48, 23}};
+      input.other.around = {{48.1, 24}, {48.1, 24}, {48.1, 24}};
+      CurvePoint& point = input.other.points[static_cast<std::size_t>(which) % 3];
+      auto& around = input.other.around[1];
+      if (which == 0) point.output_power = point.output_power.with_value(strange);
+      if (which == 1) point.loss = point.loss.with_value(strange);
+      if (which == 2) point.efficiency = point.efficiency.with_value(strange);
+      if (which == 3) around.input_voltage_v = strange;
+      if (which == 4) around.ambient_c = strange;
+      if (which == 5) around.loss_per_volt = Estimate{strange};
+      if (which == 6) around.loss_per_kelvin = Estimate{strange};
+      if (which == 7) input.rated_w = strange;
+      if (which == 8) input.other.weighted = {{"European efficiency", Estimate{strange}}};
+      input.reference.weighted = {{"European efficiency", Estimate{0.95}}};
+      const auto compared = efficiency::compare(input);
+      if (!compared) continue;
+      INFO(strange << " in place " << which);
+      std::vector<efficiency::Difference> all = compared->levels;
+      all.insert(all.end(), compared->weighted.begin(), compared->weighted.end());
+      for (const auto& level : all) {
+        CHECK(level.text.find("nan") == std::string::npos);
+        CHECK(level.text.find("inf") == std::string::npos);
+        CHECK(std::isfinite(level.narrowing));
+        CHECK(std::isfinite(level.adjusted_p));
+        if (!level.efficiency) {
+          CHECK_FALSE(level.efficiency.refusal().reason.empty());
+          continue;
+        }
+        CHECK(std::isfinite(level.efficiency->value()));
+        CHECK(std::isfinite(half_width(level)));
+        if (level.loss) CHECK(std::isfinite(level.loss->value()));
+      }
+    }
+  }
 }
 
 TEST_CASE("Holm's method is R's") {
