@@ -237,6 +237,15 @@ void remark_bursts(const StepValues& values, double rated_w, StepResult& result)
   }
 }
 
+/// The last step under load goes by rate, as the sequencer had it; checks of the bench may follow it.
+bool nothing_loaded_after(const setup::Stair& stair, const setup::Step& plan) {
+  const auto loaded = [](const setup::Step& step) {
+    return step.kind == setup::StepKind::level || step.kind == setup::StepKind::closure;
+  };
+  const auto last = std::find_if(stair.steps.rbegin(), stair.steps.rend(), loaded);
+  return last != stair.steps.rend() && &*last == &plan;
+}
+
 }  // namespace
 
 const setup::Step* plan_of(const setup::Stair& stair, const store::StoredStep& step) {
@@ -307,7 +316,7 @@ StepOutcome step_outcome(const store::StoredRun& run, const setup::Hookup& hooku
   if (no_efficiency.empty()) remark_bursts(values, stair.ratings.output_power_w, result);
   const double begun_s =
       since_start(run, step.soak_begin_ns.value_or(step.begun_ns.value_or(*step.average_begin_ns)));
-  const bool last = out.plan != nullptr && out.plan == &stair.steps.back();
+  const bool last = out.plan != nullptr && nothing_loaded_after(stair, *out.plan);
   const StepThermal thermal{out.plan, begun_s, last, out.powers.loss, stair.ratings.highest_ambient_c};
   const auto ends = temperatures_of(hookup, tracks, values.channels, values.context, thermal);
   for (const EndTemperature& end : ends) result.temperatures.push_back(end.result);
