@@ -10,7 +10,6 @@
 #include "analysis/efficiency/curve.h"
 #include "daemon/evaluation/bench_checks.h"
 #include "daemon/evaluation/decisions.h"
-#include "daemon/evaluation/loss_slopes.h"
 #include "daemon/evaluation/model_result.h"
 #include "daemon/evaluation/quantity.h"
 #include "daemon/evaluation/run_figures.h"
@@ -70,7 +69,11 @@ void add_circumstances(const setup::Hookup& hookup, const setup::Stair& stair, c
         static_cast<std::size_t>(std::find(names.begin(), names.end(), point.label) - names.begin());
     if (step >= names.size()) continue;
     if (windows[step]) around.ambient_c = windows[step]->ambient_c;
-    around.input_voltage_v = input_voltage_of(result.steps[step]);
+    for (const PortResult& port : result.steps[step].ports) {
+      if (around.input_voltage_v || port.direction != "input" || !port.counted || !port.voltage.known)
+        continue;
+      around.input_voltage_v = std::abs(port.voltage.value);
+    }
   }
   for (const setup::Instrument& meter : hookup.instruments)
     result.meters.push_back({meter.name, meter.profile_name, meter.serial_number, meter.calibrated});
@@ -139,7 +142,6 @@ RunResult evaluate(const store::StoredRun& run, const setup::Hookup& hookup, con
   }
   add_circumstances(hookup, stair, windows, names, result);
   add_models(result, validating == Validate::yes ? kPeakDraws : kFewDraws);
-  add_loss_slopes(outcomes, run_name_of(windows), result);
   add_weighted(hookup, stair, outcomes, run_name_of(windows), result);
   run_figures(result, outcomes, run, hookup, stair);
   decide_limits(result, outcomes, stair);
