@@ -119,6 +119,13 @@ const Quantity* of_run(const RunResult& result, std::string_view name) {
   return nullptr;
 }
 
+std::string no_table_of(const std::string& id) {
+  std::string text = "there is no limit table \"" + id + "\"; known are";
+  for (const limits::Table& table : limits::tables())
+    text += (text.ends_with("are") ? " " : ", ") + std::string{table.id};
+  return text;
+}
+
 class Decider {
  public:
   Decider(RunResult& result, const std::vector<StepOutcome>& outcomes, const setup::Stair& stair)
@@ -197,7 +204,7 @@ class Decider {
     decision.quantity = limit.table;
     const limits::Table* found = limits::find_table(limit.table);
     if (found == nullptr) {
-      leave_open(decision, "there is no limit table \"" + limit.table + "\"");
+      leave_open(decision, no_table_of(limit.table));
       result_.decisions.push_back(std::move(decision));
       return;
     }
@@ -299,8 +306,20 @@ class Decider {
                   " of " + base::print_significant(allowed->limit, 3) + " " + std::string{allowed->unit};
       }
     }
-    if (worst < 0.0) return;
+    const bool has_lines = std::any_of(table.rows.begin(), table.rows.end(), [](const limits::Row& row) {
+      return row.quantity == limits::Quantity::harmonic;
+    });
+    if (!has_lines) return;
     decision.quantity += ": harmonics";
+    if (worst < 0.0) {
+      const std::string why =
+          "no line was compared: the record has none, or the limits' unit needs what this bench does not "
+          "declare";
+      decision.value = missing("1", why);
+      leave_open(decision, why);
+      result_.decisions.push_back(std::move(decision));
+      return;
+    }
     decision.value = missing("1", "the uncertainty of single harmonics is not known");
     leave_open(decision, "the uncertainty of single harmonics is not known; " +
                              (beyond == 0 ? std::string{"all lie below their limits"}
