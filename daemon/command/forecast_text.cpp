@@ -38,17 +38,22 @@ Row row_of(const json& step) {
           figure_text(step["efficiency"], 100.0), figure_text(step["loss"], 1.0), largest};
 }
 
+/// Of an interval by Monte Carlo, whose two sides may differ, half of its length.
+double half_width_of(const json& estimate) {
+  return (estimate["high"].get<double>() - estimate["low"].get<double>()) / 2.0;
+}
+
 /// Steps in which the same thing helps most, under one head.
 std::string actions_text(const json& steps) {
   std::vector<std::pair<std::string, std::string>> actions;
   for (const auto& step : steps) {
     const auto& best = step["helps_most"];
-    if (!best.is_object() || !step["efficiency"].contains("expanded")) continue;
+    if (!best.is_object() || !step["efficiency"]["value"].is_number()) continue;
     const std::string head = best["source"].get<std::string>() + ": " + best["action"].get<std::string>();
-    const std::string line =
-        step["label"].get<std::string>() + ": \u00b1" +
-        base::print_significant(step["efficiency"]["expanded"].get<double>() * 100.0, 2) + " to \u00b1" +
-        base::print_significant(best["expanded_if_done"].get<double>() * 100.0, 2);
+    const std::string line = step["label"].get<std::string>() + ": \u00b1" +
+                             base::print_significant(half_width_of(step["efficiency"]) * 100.0, 2) +
+                             " to \u00b1" +
+                             base::print_significant(best["expanded_if_done"].get<double>() * 100.0, 2);
     auto place = actions.begin();
     while (place != actions.end() && place->first != head) ++place;
     if (place == actions.end()) {
