@@ -32,9 +32,9 @@ std::string text_of(const HoldOut& out, bool changed_since) {
   std::string text =
       "after " + duration_text(out.after_s) + " a prediction of " +
       base::print_fixed(out.predicted.value, 2) + " (" + base::print_fixed(out.predicted.low, 2) + " to " +
-      base::print_fixed(out.predicted.high, 2) + ") would have been accepted; " +
+      base::print_fixed(out.predicted.high, 2) + ") degC would have been accepted; " +
       duration_text(out.earlier_s) + " later the end is " + base::print_fixed(out.measured.value, 2) +
-      ": off by " + base::print_fixed(out.error, 2) + ", " +
+      " degC: off by " + base::print_fixed(out.error, 2) + " K, " +
       (out.held ? "within its interval" : "outside its interval");
   if (changed_since) text += "; something changed in between";
   return text;

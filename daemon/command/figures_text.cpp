@@ -117,7 +117,8 @@ std::string thermal_section(const json& result) {
   for (const auto& step : result["steps"]) {
     for (const auto& temperature : step["temperatures"]) {
       if (temperature.contains("hold_out"))
-        hold_out += "  " + temperature["hold_out"]["text"].get<std::string>() + "\n";
+        hold_out += "  " + step["label"].get<std::string>() + ", " + temperature["place"].get<std::string>() +
+                    ": " + temperature["hold_out"]["text"].get<std::string>() + "\n";
       const auto of = [&](const char* key) {
         const auto found = temperature.find(key);
         return found == temperature.end() ? std::string{"-"} : estimate_text(*found);
@@ -143,8 +144,9 @@ std::string checks_section(const json& result) {
 std::string decisions_section(const json& result) {
   std::string lines;
   for (const auto& decision : result.value("decisions", json::array())) {
-    lines +=
-        "  " + decision["decision"].get<std::string>() + ": " + decision["text"].get<std::string>() + "\n";
+    const std::string word = decision["decision"];
+    const std::string text = decision["text"];
+    lines += "  " + (text.find(word) == std::string::npos ? word + ": " : std::string{}) + text + "\n";
   }
   const std::string rule = result.value("decision_rule", std::string{});
   return section("Decisions" + (rule.empty() ? "" : " (" + rule + ")"), lines);
